@@ -1,0 +1,178 @@
+"""Who may see and do what.
+
+Every url names its permission: `path("tags/<int:pk>/", needs("read")(tag), name="tag")`. A view without one is
+refused by `PermissionMiddleware`. A person has roles per plant; an object of a plant he has no role in does not
+exist for him (404), one he may read but not change is refused (403).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Any, Final, TypeVar
+
+from django.contrib.auth.views import redirect_to_login
+from django.core.exceptions import PermissionDenied
+from django.db import models
+from django.http import Http404, HttpRequest, HttpResponse
+from django.shortcuts import get_object_or_404
+
+from register.models import Area, Flag, Membership, Plant, Role, Tag, Transmitter, User
+
+READ: Final = "read"
+PERMISSIONS: Final[dict[str, frozenset[str]]] = {
+    "read": frozenset(Role.values),
+    "edit register": frozenset({Role.ENGINEER, Role.ADMINISTRATOR}),
+    "edit catalogue": frozenset({Role.ENGINEER, Role.ADMINISTRATOR}),
+    "fit": frozenset({Role.ENGINEER, Role.TECHNICIAN, Role.PLANNER}),
+    "re-range": frozenset({Role.ENGINEER}),
+    "accept flag": frozenset({Role.ENGINEER}),
+    "set requirement": frozenset({Role.ENGINEER}),
+    "test": frozenset({Role.TECHNICIAN, Role.ENGINEER}),
+    "review": frozenset({Role.REVIEWER, Role.ENGINEER}),
+    "allow exception": frozenset({Role.ENGINEER, Role.REVIEWER}),
+    "plan": frozenset({Role.PLANNER}),
+    "approve deferral": frozenset({Role.ENGINEER}),
+    "edit standards": frozenset({Role.ENGINEER, Role.PLANNER, Role.ADMINISTRATOR}),
+    "edit guidance": frozenset({Role.ENGINEER, Role.ADMINISTRATOR}),
+    "import": frozenset({Role.ENGINEER, Role.ADMINISTRATOR}),
+    "manage plant": frozenset({Role.ADMINISTRATOR}),
+    "manage people": frozenset({Role.ADMINISTRATOR}),
+}
+#: Besides roles: "public" (anyone, signed in or not) and "signed in" (any active person).
+OPEN: Final = frozenset({"public", "signed in"})
+
+View = Callable[..., HttpResponse]
+V = TypeVar("V", bound=View)
+M = TypeVar("M", bound=models.Model)
+
+
+def needs(permission: str) -> Callable[[V], V]:
+    """Give a view its permission; used in the urls, never in the views."""
+    if permission not in PERMISSIONS and permission not in OPEN:
+        raise ValueError(f"no such permission: {permission}")
+
+    def mark(view: V) -> V:
+        def guarded(request: HttpRequest, *args: Any, **kwargs: Any) -> HttpResponse:
+            return view(request, *args, **kwargs)
+
+        guarded.__name__ = getattr(view, "__name__", "view")
+        guarded.__doc__ = view.__doc__
+        guarded.__module__ = view.__module__
+        guarded.__dict__.update(getattr(view, "__dict__", {}))
+        guarded.permission = permission  # type: ignore[attr-defined]
+        return guarded  # type: ignore[return-value]
+
+    return mark
+
+
+class PermissionMiddleware:
+    """Refuses views without a stated permission, and people without it in any plant."""
+
+    def __init__(self, get_response: Callable[[HttpRequest], HttpResponse]) -> None:
+        self.get_response = get_response
+
+    def __call__(self, request: HttpRequest) -> HttpResponse:
+        return self.get_response(request)
+
+    def process_view(
+        self, request: HttpRequest, view: View, args: tuple[Any, ...], kwargs: dict[str, Any]
+    ) -> HttpResponse | None:
+        permission = getattr(view, "permission", None)
+        if permission is None:
+            raise PermissionDenied("This page has no stated permission.")
+        if permission == "public":
+            return None
+        if not request.user.is_authenticated:
+            return redirect_to_login(request.get_full_path())
+        if permission == "signed in" or may_anywhere(request.user, permission):
+            return None
+        raise PermissionDenied(f"None of your roles lets you {permission}.")
+
+
+def roles(user: User) -> dict[int, set[str]]:
+    """Roles of a person by plant id; read once per request object."""
+    cached: dict[int, set[str]] | None = getattr(user, "_roles_by_plant", None)
+    if cached is None:
+        cached = {}
+        for plant_id, role in Membership.objects.filter(user=user).values_list("plant_id", "role"):
+            cached.setdefault(plant_id, set()).add(role)
+        user._roles_by_plant = cached  # type: ignore[attr-defined]
+    return cached
+
+
+def may(user: User, permission: str, plant_id: int) -> bool:
+    """Whether a person has a permission in a plant."""
+    return bool(PERMISSIONS[permission] & roles(user).get(plant_id, set()))
+
+
+def may_anywhere(user: User, permission: str) -> bool:
+    """Whether a person has a permission in at least one plant."""
+    return any(PERMISSIONS[permission] & held for held in roles(user).values())
+
+
+def plants(user: User, permission: str = READ) -> models.QuerySet[Plant]:
+    """Plants in which a person has a permission."""
+    ids = [plant_id for plant_id, held in roles(user).items() if PERMISSIONS[permission] & held]
+    return Plant.objects.filter(pk__in=ids)
+
+
+def in_plant(request: HttpRequest, plant_id: int, permission: str) -> None:
+    """Let pass, or answer 404 where nothing may be seen and 403 where it may be read only."""
+    user = _person(request)
+    if not may(user, READ, plant_id):
+        raise Http404
+    if not may(user, permission, plant_id):
+        raise PermissionDenied(f"Your roles in this plant do not let you {permission}.")
+
+
+def get(request: HttpRequest, queryset: models.QuerySet[M], permission: str, **lookup: Any) -> M:
+    """The object, if its plant (`plant_id` on it) lets the person; else 404 or 403."""
+    thing = get_object_or_404(queryset, **lookup)
+    in_plant(request, thing.plant_id, permission)  # type: ignore[attr-defined]
+    return thing
+
+
+def get_tag(request: HttpRequest, pk: int, permission: str = READ) -> Tag:
+    return get(request, Tag.objects.select_related("plant", "area"), permission, pk=pk)
+
+
+def get_transmitter(request: HttpRequest, pk: int, permission: str = READ) -> Transmitter:
+    return get(
+        request, Transmitter.objects.select_related("plant", "maker", "type", "head"), permission, pk=pk
+    )
+
+
+def get_area(request: HttpRequest, pk: int, permission: str = READ) -> Area:
+    return get(request, Area.objects.select_related("plant"), permission, pk=pk)
+
+
+def get_flag(request: HttpRequest, pk: int, permission: str = READ) -> Flag:
+    flag = get_object_or_404(Flag.objects.select_related("tag", "tag__plant"), pk=pk)
+    in_plant(request, flag.tag.plant_id, permission)
+    return flag
+
+
+def get_plant(request: HttpRequest, code: str, permission: str = READ) -> Plant:
+    plant = get_object_or_404(Plant, code=code)
+    in_plant(request, plant.pk, permission)
+    return plant
+
+
+def chosen_plant(request: HttpRequest) -> Plant:
+    """The plant a list shows: `?plant=CODE`, else the one last chosen, else the first by name; 404 without any."""
+    available = list(plants(_person(request)))
+    if not available:
+        raise Http404("You have no role in any plant yet: ask an administrator.")
+    wanted = request.GET.get("plant") or request.COOKIES.get("plant", "")
+    for plant in available:
+        if plant.code == wanted:
+            return plant
+    if request.GET.get("plant"):
+        raise Http404
+    return available[0]
+
+
+def _person(request: HttpRequest) -> User:
+    if not isinstance(request.user, User):
+        raise PermissionDenied("Sign in first.")
+    return request.user

@@ -1,0 +1,12 @@
+from django.apps import AppConfig
+from django.db.models.signals import post_migrate
+
+
+class RegisterConfig(AppConfig):
+    name = "register"
+    verbose_name = "Register"
+
+    def ready(self) -> None:
+        from register import checks, guards  # noqa: F401 - checks register themselves
+
+        post_migrate.connect(guards.install_after_migrate, dispatch_uid="register.guards")

@@ -1,0 +1,113 @@
+"""The trail every act leaves: an act has an id, a person, a place, a time and a reason."""
+
+from __future__ import annotations
+
+import datetime
+import uuid
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+from django.db import models
+from django.http import HttpRequest
+from django.utils import timezone
+
+from register.models import AuditEntry, Plant, User
+
+
+@dataclass(frozen=True, slots=True)
+class Actor:
+    """Who acts, and from where; no person means the program itself (a start, a timer)."""
+
+    person: User | None
+    remote_address: str = ""
+
+    @classmethod
+    def of(cls, request: HttpRequest) -> Actor:
+        person = request.user if isinstance(request.user, User) else None
+        return cls(person=person, remote_address=request.META.get("REMOTE_ADDR", ""))
+
+
+@dataclass(slots=True)
+class Act:
+    """Collects audit entries and writes them in one insert with `write`."""
+
+    by: Actor
+    reason: str = ""
+    id: uuid.UUID = field(default_factory=uuid.uuid4)
+    at: datetime.datetime = field(default_factory=timezone.now)
+    _entries: list[AuditEntry] = field(default_factory=list)
+
+    def created(self, thing: models.Model, *, plant: Plant | int | None) -> None:
+        """Note a new thing: one entry."""
+        self._note(thing, plant, kind=AuditEntry.Kind.CREATED)
+
+    def changed(
+        self, thing: models.Model, *, plant: Plant | int | None, before: Mapping[str, Any], after: Mapping[str, Any]
+    ) -> int:
+        """Note every field whose value differs, one entry each; returns how many there were."""
+        count = 0
+        for name, new in after.items():
+            old = before.get(name)
+            if old != new:
+                self._note(thing, plant, kind=AuditEntry.Kind.CHANGED, name=name, before=old, after=new)
+                count += 1
+        return count
+
+    def noted(
+        self, kind: AuditEntry.Kind, thing: models.Model, *, plant: Plant | int | None = None, remark: str = ""
+    ) -> None:
+        """Note something that is neither a creation nor a change: a sign-in, an export."""
+        self._note(thing, plant, kind=kind, after=remark)
+
+    def write(self) -> None:
+        """Insert what was collected; call inside the transaction of the act."""
+        AuditEntry.objects.bulk_create(self._entries, batch_size=1000)
+        self._entries.clear()
+
+    def _note(
+        self,
+        thing: models.Model,
+        plant: Plant | int | None,
+        *,
+        kind: AuditEntry.Kind,
+        name: str = "",
+        before: Any = None,
+        after: Any = None,
+    ) -> None:
+        self._entries.append(
+            AuditEntry(
+                act=self.id,
+                at=self.at,
+                kind=kind,
+                person=self.by.person,
+                person_name=str(self.by.person)[:120] if self.by.person else "",
+                remote_address=self.by.remote_address,
+                plant_id=plant.pk if isinstance(plant, Plant) else plant,
+                thing_type=thing._meta.label_lower,
+                thing_id=str(thing.pk),
+                thing_label=str(thing)[:200],
+                field=name,
+                before=as_text(before),
+                after=as_text(after),
+                reason=self.reason[:300],
+            )
+        )
+
+
+def snapshot(thing: models.Model, names: Iterable[str]) -> dict[str, Any]:
+    """Values of the named fields, for `Act.changed`; foreign keys are shown by what they name."""
+    return {name: _shown(getattr(thing, name)) for name in names}
+
+
+def as_text(value: Any) -> str:
+    """How a value is written in the trail."""
+    if value is None:
+        return ""
+    if isinstance(value, bool):
+        return "yes" if value else "no"
+    return str(_shown(value))
+
+
+def _shown(value: Any) -> Any:
+    return str(value) if isinstance(value, models.Model) else value
