@@ -1,0 +1,42 @@
+"""Acts on the site's own cautions and return-to-service checklist. Sheets keep the words they were opened with."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from django.db import transaction
+from django.utils import timezone
+
+from calibration.models import GuidanceLine
+from register.auditing import Act, Actor, snapshot
+from register.models import Plant
+
+FIELDS = ("part", "order", "key", "text", "applies", "answer", "required", "withdrawn_at")
+
+
+@transaction.atomic
+def add_line(*, by: Actor, plant: Plant, reason: str, **values: Any) -> GuidanceLine:
+    """Add a caution or checklist line; `values` are the model's columns but plant."""
+    line = GuidanceLine.objects.create(plant=plant, **values)
+    act = Act(by=by, reason=reason)
+    act.created(line, plant=plant)
+    act.write()
+    return line
+
+
+@transaction.atomic
+def edit_line(*, by: Actor, line: GuidanceLine, reason: str, **values: Any) -> GuidanceLine:
+    held = GuidanceLine.objects.select_for_update().get(pk=line.pk)
+    before = snapshot(held, FIELDS)
+    for name, value in values.items():
+        setattr(held, name, value)
+    held.save()
+    act = Act(by=by, reason=reason)
+    act.changed(held, plant=held.plant_id, before=before, after=snapshot(held, FIELDS))
+    act.write()
+    return held
+
+
+def withdraw_line(*, by: Actor, line: GuidanceLine, reason: str) -> GuidanceLine:
+    """Take a line off new sheets; sheets already open keep it."""
+    return edit_line(by=by, line=line, reason=reason, withdrawn_at=timezone.now())
