@@ -45,11 +45,11 @@ class UnitError(ValueError):
     """A unit cannot be used; the message is fit for the person who typed it."""
 
 
-class UnknownUnit(UnitError):
+class UnknownUnitError(UnitError):
     """The text names no unit of the table."""
 
 
-class AmbiguousUnit(UnitError):
+class AmbiguousUnitError(UnitError):
     """The text fits several units; `choices` holds their keys."""
 
     def __init__(self, message: str, choices: tuple[str, ...]) -> None:
@@ -57,7 +57,7 @@ class AmbiguousUnit(UnitError):
         self.choices = choices
 
 
-class KindMismatch(UnitError):
+class KindMismatchError(UnitError):
     """The unit is known but measures another kind of quantity."""
 
 
@@ -197,23 +197,23 @@ def resolve_unit(text: str, kind: str | None = None) -> str:
 
     Raises
     ------
-    AmbiguousUnit
+    AmbiguousUnitError
         The spelling fits several units (a water column without its temperature).
-    KindMismatch
+    KindMismatchError
         The unit measures something else.
     UnitError
         The unit carries a pressure reference ("psig"), which is kept apart.
-    UnknownUnit
+    UnknownUnitError
         No unit is spelt so.
     """
-    key, reference = resolve_pressure_unit(text)
+    key, reference = _resolve(text, kind)
     if reference is not None:
         raise UnitError(
             f"“{text.strip()}” is {label(key)} with a reference: give the unit as {label(key)} "
             f"and say “{reference}” in its own place."
         )
     if kind is not None and UNITS[key].kind != kind:
-        raise KindMismatch(f"“{text.strip()}” is a unit of {UNITS[key].kind}; a unit of {kind} is wanted here.")
+        raise KindMismatchError(f"“{text.strip()}” is a unit of {UNITS[key].kind}; a unit of {kind} is wanted here.")
     return key
 
 
@@ -227,14 +227,18 @@ def resolve_pressure_unit(text: str) -> tuple[str, str | None]:
 
     Raises
     ------
-    AmbiguousUnit, UnknownUnit
+    AmbiguousUnitError, UnknownUnitError
         As `resolve_unit`.
     """
+    return _resolve(text, PRESSURE)
+
+
+def _resolve(text: str, kind: str | None) -> tuple[str, str | None]:
     if text in UNITS:
         return text, None
     plain = _plain(text)
     if not plain:
-        raise UnknownUnit("No unit is given.")
+        raise UnknownUnitError("No unit is given.")
     found = _lookup(text, plain)
     if found is not None:
         return found, None
@@ -243,7 +247,7 @@ def resolve_pressure_unit(text: str) -> tuple[str, str | None]:
         found = _lookup(text, split["unit"])
         if found is not None and UNITS[found].kind == PRESSURE:
             return found, _REFERENCES[split["word"][0].casefold()]
-    raise UnknownUnit(f"“{text.strip()}” is not a unit known here. Known are: {_known()}.")
+    raise UnknownUnitError(f"“{text.strip()}” is not a unit known here. Known are: {_known(kind)}.")
 
 
 @overload
@@ -275,7 +279,7 @@ def convert(value: Any, unit: str, to_unit: str) -> Any:
 
     Raises
     ------
-    KindMismatch
+    KindMismatchError
         The units measure different kinds of quantity.
     """
     _same_kind(unit, to_unit)
@@ -339,7 +343,8 @@ def _factors() -> Mapping[str, tuple[float, float]]:
             table[unit.key] = (float(registry.Quantity(1.0, step).to(si).magnitude), shift)
         else:
             one = registry.Quantity(1.0, registry.dimensionless) * registry.parse_expression(unit.definition)
-            table[unit.key] = (float(one.to(si).magnitude), 0.0)
+            # Fifteen digits: a chain of products leaves 0.30479999999999996 for a foot of 0.3048 m.
+            table[unit.key] = (float(f"{one.to(si).magnitude:.15g}"), 0.0)
     return MappingProxyType(table)
 
 
@@ -347,12 +352,14 @@ def _unit(key: str) -> Unit:
     try:
         return UNITS[key]
     except KeyError:
-        raise UnknownUnit(f"“{key}” is not a unit known here. Known are: {_known()}.") from None
+        raise UnknownUnitError(f"“{key}” is not a unit known here. Known are: {_known()}.") from None
 
 
 def _same_kind(unit: str, to_unit: str) -> None:
     if _unit(unit).kind != _unit(to_unit).kind:
-        raise KindMismatch(f"{label(unit)} ({kind_of(unit)}) cannot be given in {label(to_unit)} ({kind_of(to_unit)}).")
+        raise KindMismatchError(
+            f"{label(unit)} ({kind_of(unit)}) cannot be given in {label(to_unit)} ({kind_of(to_unit)})."
+        )
 
 
 def _plain(text: str) -> str:
@@ -364,8 +371,9 @@ def _plain(text: str) -> str:
 
 def _lookup(text: str, plain: str) -> str | None:
     if plain.startswith("mP") or plain == "mpa":
-        raise AmbiguousUnit(
-            f"“{text.strip()}” reads as millipascal or as megapascal: write MPa, kPa or Pa.", ("MPa", "kPa", "Pa")
+        raise AmbiguousUnitError(
+            f"“{text.strip()}” reads as millipascal or as megapascal: write MPa, kPa or Pa.",
+            ("MPa", "kPa", "Pa"),
         )
     folded = plain.casefold()
     spelt = _UNIT_OF_SPELLING.get(folded) or _UNIT_OF_SPELLING.get(folded.replace("deg.", "deg").replace("°", "deg"))
@@ -379,7 +387,7 @@ def _water(text: str, column: str, basis: str) -> str | None:
     keys = tuple(f"{column}_{name}" for name in WATER_BASES)
     named = ", ".join(UNITS[key].label for key in keys)
     if not basis:
-        raise AmbiguousUnit(
+        raise AmbiguousUnitError(
             f"“{text.strip()}” does not say at which water temperature: write one of {named}. "
             "Digital transmitters mostly mean 68 °F (20 °C).",
             keys,
@@ -388,15 +396,15 @@ def _water(text: str, column: str, basis: str) -> str | None:
         return f"{column}_conv"
     temperature = _BASIS.fullmatch(basis)
     if temperature is None:
-        if _REFERENCE_SUFFIX.fullmatch(f"x{basis}"):
-            return _water(text, column, "")
         return None
     number, scale = temperature["number"], temperature["scale"]
     found = {name for (t, s), name in _BASIS_OF_TEMPERATURE.items() if t == number and scale in ("", s)}
     if len(found) != 1:
-        raise UnknownUnit(f"“{text.strip()}”: no water column at that temperature is known here. Known are {named}.")
+        raise UnknownUnitError(
+            f"“{text.strip()}”: no water column at that temperature is known here. Known are {named}."
+        )
     return f"{column}_{found.pop()}"
 
 
-def _known() -> str:
-    return ", ".join(unit.label for unit in UNITS.values() if unit.key != "fraction")
+def _known(kind: str | None = None) -> str:
+    return ", ".join(unit.label for unit in UNITS.values() if kind is None or unit.kind == kind)
