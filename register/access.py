@@ -158,18 +158,30 @@ def get_plant(request: HttpRequest, code: str, permission: str = READ) -> Plant:
     return plant
 
 
-def chosen_plant(request: HttpRequest) -> Plant:
-    """The plant a list shows: `?plant=CODE`, else the one last chosen, else the first by name; 404 without any."""
-    available = list(plants(_person(request)))
-    if not available:
-        raise Http404("You have no role in any plant yet: ask an administrator.")
+def readable_plants(user: User) -> list[Plant]:
+    """Plants in which a person has any role, by name; read once per request."""
+    cached: list[Plant] | None = getattr(user, "_readable_plants", None)
+    if cached is None:
+        cached = list(plants(user))
+        user._readable_plants = cached  # type: ignore[attr-defined]
+    return cached
+
+
+def shown_plant(request: HttpRequest) -> Plant | None:
+    """The plant named by `?plant=CODE`, else the one last chosen, else the first by name; None without any role."""
+    available = readable_plants(_person(request))
     wanted = request.GET.get("plant") or request.COOKIES.get("plant", "")
-    for plant in available:
-        if plant.code == wanted:
-            return plant
-    if request.GET.get("plant"):
+    return next((plant for plant in available if plant.code == wanted), available[0] if available else None)
+
+
+def chosen_plant(request: HttpRequest) -> Plant:
+    """The plant a list shows, as `shown_plant`; 404 without any, or where the address names another's plant."""
+    plant = shown_plant(request)
+    if plant is None:
+        raise Http404("You have no role in any plant yet: ask an administrator.")
+    if request.GET.get("plant") not in (None, "", plant.code):
         raise Http404
-    return available[0]
+    return plant
 
 
 def _person(request: HttpRequest) -> User:

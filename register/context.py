@@ -1,11 +1,118 @@
-"""What every page shows around its content."""
+"""What every page shows around its content.
+
+The entries are functions, so that a fragment that shows none of them costs no query; a full page costs the
+same number of queries whatever it shows.
+"""
 
 from __future__ import annotations
 
-from typing import Any
+import datetime
+from collections.abc import Callable
+from dataclasses import dataclass
+from functools import cache
+from typing import Any, Final, TypeVar
+from urllib.parse import urlencode
 
 from django.http import HttpRequest
+from django.urls import NoReverseMatch, reverse
+
+from register import access
+from register.models import Plant, User
+
+T = TypeVar("T")
+THEMES: Final = frozenset({"light", "dark", "outdoor"})
+
+
+@dataclass(frozen=True, slots=True)
+class Link:
+    """A link in the masthead."""
+
+    label: str
+    url: str
+    current: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class Section:
+    """A part of the site: its list page, who sees it, and how the names of its other pages begin."""
+
+    label: str
+    url_name: str
+    permission: str
+    beginnings: tuple[str, ...] = ()
+
+    def holds(self, url_name: str) -> bool:
+        return url_name == self.url_name or any(
+            url_name == start or url_name.startswith(f"{start}-") for start in self.beginnings
+        )
+
+
+SECTIONS: Final = (
+    Section("Register", "register", "read", ("tag", "range", "flag")),
+    Section("Due", "due-list", "read", ("requirement", "deferral")),
+    Section("Sheets", "sheets", "read", ("sheet",)),
+    Section("Tests", "tests", "read", ("test",)),
+    Section("Transmitters", "transmitters", "read", ("transmitter", "intervention")),
+    Section("Types and heads", "types", "read", ("type", "head", "maker")),
+    Section("Standards", "standards", "read", ("standard", "certificate")),
+    Section("Point lists", "point-lists", "read", ("point-list",)),
+    Section("Guidance", "guidance", "read", ("guidance",)),
+    Section("Plants", "plants", "read", ("plant", "area")),
+    Section("People", "people", "manage people", ("person",)),
+    Section("Audit trail", "audit", "read", ("audit",)),
+)
 
 
 def page(request: HttpRequest) -> dict[str, Any]:
-    return {}
+    """Names that `base.html` uses; for people who are not signed in only the theme."""
+    theme = request.COOKIES.get("theme", "")
+    common: dict[str, Any] = {"theme": theme if theme in THEMES else ""}
+    person = getattr(request, "user", None)
+    if not isinstance(person, User):
+        return common
+    return common | {
+        "nav": _once(lambda: _sections(request, person)),
+        "plants": _once(lambda: _plants(request, person)),
+        "plant": _once(lambda: access.shown_plant(request)),
+        "today": _once(lambda: _today(request)),
+        "search_url": _url("find"),
+        "sign_out_url": _url("sign-out"),
+        "account_url": _url("password"),
+    }
+
+
+def _once(make: Callable[[], T]) -> Callable[[], T]:
+    return cache(make)
+
+
+def _sections(request: HttpRequest, person: User) -> list[Link]:
+    match = request.resolver_match
+    here = (match.url_name if match else "") or ""
+    return [
+        Link(section.label, url, section.holds(here))
+        for section in SECTIONS
+        if access.may_anywhere(person, section.permission) and (url := _url(section.url_name))
+    ]
+
+
+def _plants(request: HttpRequest, person: User) -> list[Link]:
+    shown = access.shown_plant(request)
+    match = request.resolver_match
+    # A list stays where it is and shows the other plant; a single thing has no counterpart there.
+    back = request.path if match and not match.kwargs and request.method == "GET" else reverse("home")
+    return [
+        Link(plant.name, f"{reverse('plant-choose', args=[plant.code])}?{urlencode({'next': back})}", plant == shown)
+        for plant in access.readable_plants(person)
+    ]
+
+
+def _today(request: HttpRequest) -> datetime.date:
+    shown: Plant | None = access.shown_plant(request)
+    return shown.today() if shown else datetime.datetime.now(datetime.UTC).date()
+
+
+def _url(name: str) -> str:
+    try:
+        return reverse(name)
+    except NoReverseMatch:
+        return ""

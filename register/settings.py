@@ -145,6 +145,8 @@ AXES_VERBOSE = False
 
 #: Functions called with the ids of the tags that a register act touched, in its transaction.
 AFTER_REGISTER_CHANGE = ["calibration.scheduling.refresh"]
+#: Functions called with a new plant and who made it, in the transaction of the act that makes it.
+AFTER_PLANT_CREATED = ["calibration.provision.provide_defaults"]
 
 LANGUAGE_CODE = "en"
 TIME_ZONE = "UTC"

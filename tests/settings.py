@@ -1,6 +1,13 @@
-"""Settings under test: a fast password hash, no lock-out by default, static files without a manifest."""
+"""Settings under test: a fast password hash, no lock-out by default, static files straight from their folders.
 
-from register.settings import *  # noqa: F403
+`DATABASE_URL` chooses the database as it does for the site; without it tests run on SQLite in memory.
+"""
+
+import os
+
+os.environ.setdefault("FOUNDLEFT_SECRET_KEY", "only-for-tests")
+
+from register.settings import *  # noqa: E402, F403
 
 PASSWORD_HASHERS = ["django.contrib.auth.hashers.MD5PasswordHasher"]
 AXES_ENABLED = False
@@ -8,4 +15,5 @@ STORAGES = {
     "default": {"BACKEND": "django.core.files.storage.InMemoryStorage"},
     "staticfiles": {"BACKEND": "django.contrib.staticfiles.storage.StaticFilesStorage"},
 }
-SECRET_KEY = "only-for-tests"
+WHITENOISE_AUTOREFRESH = True
+WHITENOISE_USE_FINDERS = True

@@ -1,0 +1,38 @@
+"""The first page, and the choice of the plant that lists show."""
+
+from __future__ import annotations
+
+from django.conf import settings
+from django.http import Http404, HttpRequest, HttpResponse, HttpResponseRedirect
+from django.shortcuts import redirect, render
+
+from register import access
+from register.models import Role, User
+from register.views.signing_in import onward
+
+YEAR = 365 * 24 * 3600
+
+
+def home(request: HttpRequest) -> HttpResponse:
+    """Lead each person to where his work begins."""
+    person = request.user
+    assert isinstance(person, User)
+    held = set().union(*access.roles(person).values())
+    if not held:
+        return render(request, "register/no_role.html")
+    if Role.PLANNER in held:
+        return redirect("due-list")
+    return redirect("register")
+
+
+def choose_plant(request: HttpRequest, code: str) -> HttpResponse:
+    """Keep the plant that lists show in a cookie, and go on; it grants nothing."""
+    person = request.user
+    assert isinstance(person, User)
+    if code not in {plant.code for plant in access.readable_plants(person)}:
+        raise Http404
+    response = HttpResponseRedirect(onward(request))
+    response.set_cookie(
+        "plant", code, max_age=YEAR, httponly=True, samesite="Lax", secure=settings.SESSION_COOKIE_SECURE
+    )
+    return response
