@@ -1,0 +1,13 @@
+"""The error, due and drift marks as template tags, with the arguments of `calibration.marks`."""
+
+from __future__ import annotations
+
+from django import template
+
+from calibration import marks
+
+register = template.Library()
+register.simple_tag(marks.error_mark)
+register.simple_tag(marks.error_bar)
+register.simple_tag(marks.due_mark)
+register.simple_tag(marks.drift_mark)
