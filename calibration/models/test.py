@@ -187,7 +187,7 @@ class StandardUse(Frozen):
 
 
 class Signature(Frozen):
-    """Who stands for a record, in which sense, and when."""
+    """Who stands for a record, in which sense, and when; a link of the plant's chain like the record itself."""
 
     class Meaning(models.TextChoices):
         PERFORMED = "performed", "performed the test"
@@ -201,11 +201,17 @@ class Signature(Frozen):
     signed_at = models.DateTimeField()
     time_zone = models.CharField(max_length=60)
     remarks = models.CharField(max_length=300, blank=True)
+    plant = models.ForeignKey(Plant, on_delete=models.PROTECT, related_name="signatures")
+    position = models.PositiveBigIntegerField(help_text="Counted together with the records of the plant.")
+    content = models.TextField(help_text="RFC 8785 form of everything above and the hash of the record.")
+    previous_hash = models.CharField(max_length=64)
+    hash = models.CharField(max_length=64)
 
     class Meta:
         ordering = ["signed_at", "id"]
         constraints = [
-            models.UniqueConstraint(fields=["record", "meaning", "person"], name="signature_once_per_meaning")
+            models.UniqueConstraint(fields=["record", "meaning", "person"], name="signature_once_per_meaning"),
+            models.UniqueConstraint(fields=["plant", "position"], name="signature_position_once_per_plant"),
         ]
 
     def __str__(self) -> str:

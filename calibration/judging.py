@@ -1,0 +1,138 @@
+"""Hands readings as typed to the arithmetic: the same function for a field being typed and for a record."""
+
+from __future__ import annotations
+
+import math
+from collections import Counter
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from calibration.basis import Basis
+
+if TYPE_CHECKING:
+    from calibration.metrology.conformity import Judgement
+    from calibration.metrology.errors import RunEvaluation
+
+METHOD_VERSION = 1
+_PLAUSIBLE_MA = (0.0, 25.0)
+_PLAUSIBLE_PERCENT = (-25.0, 131.25)
+
+
+@dataclass(frozen=True, slots=True)
+class Point:
+    """One reading as numbers: input in the unit of the range, output in mA; nan where nothing was read."""
+
+    applied: float
+    measured: float
+    direction: int
+    nominal_percent: float | None = None
+    cycle: int = 1
+
+
+@dataclass(frozen=True, slots=True)
+class JudgedRun:
+    """A run with its arithmetic. `missing` counts points of the list without a reading, which stand at the end."""
+
+    points: tuple[Point, ...]
+    missing: int
+    evaluation: RunEvaluation
+    judgement: Judgement
+
+
+def applied_in_range_unit(text: str, unit: str, basis: Basis) -> float:
+    """The applied input in the unit of the range.
+
+    Raises
+    ------
+    ValueError
+        Not a number, or a unit of another kind.
+    """
+    from register.engineering.typed import parse_number
+
+    value = parse_number(text, decimal_comma=basis.decimal_comma)
+    if unit in ("", basis.unit):
+        return value
+    from register.engineering.units import convert
+
+    return float(convert(value, unit, basis.unit))
+
+
+def measured_in_ma(text: str, unit: str, basis: Basis) -> float:
+    """The measured output in mA; percent of span is understood too.
+
+    Raises
+    ------
+    ValueError
+        Not a number, or a unit other than mA, A and percent.
+    """
+    from register.engineering.typed import parse_number
+
+    if unit in ("", "mA"):
+        return parse_number(text, decimal_comma=basis.decimal_comma, plausible=_PLAUSIBLE_MA)
+    if unit == "percent":
+        percent = parse_number(text, decimal_comma=basis.decimal_comma, plausible=_PLAUSIBLE_PERCENT)
+        return 4.0 + 0.16 * percent
+    raise ValueError(f"An output is read in mA or in percent of span, not in {unit}.")
+
+
+def judge(basis: Basis, kind: str, points: Sequence[Point]) -> JudgedRun:
+    """Evaluate and judge one run.
+
+    Parameters
+    ----------
+    basis : Basis
+        Range, tolerances, rule and point list of the test.
+    kind : str
+        "as-found" or "as-left": which tolerance applies.
+    points : sequence of Point
+        Readings in the order taken; repeated readings all count.
+
+    Notes
+    -----
+    Points of the list without a reading are added as missing, so that a run with gaps is incomplete.
+    """
+    from calibration.metrology.conformity import judge_run
+    from calibration.metrology.errors import evaluate_run
+
+    missing = _missing(basis, points)
+    whole = (*points, *missing)
+    named = all(point.nominal_percent is not None for point in whole)
+    signal = basis.signal()
+    evaluation = evaluate_run(
+        [point.applied for point in whole],
+        [point.measured for point in whole],
+        signal,
+        points=[point.nominal_percent for point in whole] if named else None,
+        directions=[point.direction for point in whole],
+    )
+    judgement = judge_run(evaluation, basis.tolerance(kind), basis.decision_rule())
+    return JudgedRun(points=tuple(whole), missing=len(missing), evaluation=evaluation, judgement=judgement)
+
+
+def _missing(basis: Basis, points: Sequence[Point]) -> list[Point]:
+    asked = basis.point_list()
+    if asked is None:
+        return []
+    taken = Counter(
+        (point.cycle, point.nominal_percent, point.direction)
+        for point in points
+        if not math.isnan(point.measured)
+    )
+    signal = basis.signal()
+    missing = []
+    for percent, direction, cycle in zip(asked.points, asked.directions, asked.cycles, strict=True):
+        key = (cycle, float(percent), int(direction))
+        if taken[key]:
+            taken[key] -= 1
+        else:
+            missing.append(
+                Point(
+                    applied=float(signal.input_of_percent(percent)),
+                    measured=math.nan,
+                    direction=int(direction),
+                    nominal_percent=float(percent),
+                    cycle=cycle,
+                )
+            )
+    return missing
