@@ -97,9 +97,13 @@ def _range_end(check: str, inputs: TagInputs) -> Finding:
     limit_name = "URL" if upward else "LRL"
     (limit_si,) = recorded((f"the head's {limit_name}", head.url_si if upward else head.lrl_si))
     limit, sums = restated(
-        f"the head's {limit_name}", limit_si, head.reference, setting.reference, inputs.surroundings.barometric_pa,
+        f"the head's {limit_name}",
+        limit_si,
+        head.reference,
+        setting.reference,
+        inputs.surroundings.barometric_pa,
         setting.unit,
-    )  # fmt: skip
+    )
     lrv_ends = (setting.lrv_si < setting.urv_si) != upward
     end_name, end_si = ("LRV", setting.lrv_si) if lrv_ends else ("URV", setting.urv_si)
     bounds = {name: abs(si) for name, si in (("URL", head.url_si), ("LRL", head.lrl_si)) if si is not None}

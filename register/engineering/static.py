@@ -44,9 +44,13 @@ def static_pressure(check: str, inputs: TagInputs) -> Finding:
     if rating is None:
         raise _unrated(type_limits, process, hottest)
     demanded, sums = restated(
-        f"the {name}", pressure, process.reference, Reference.GAUGE, inputs.surroundings.barometric_pa,
+        f"the {name}",
+        pressure,
+        process.reference,
+        Reference.GAUGE,
+        inputs.surroundings.barometric_pa,
         process.pressure_unit,
-    )  # fmt: skip
+    )
     worst_at = _worst_temperature(process, hottest, table)
     at = in_unit(worst_at, process.temperature_unit)
     return Comparison(
@@ -76,9 +80,13 @@ def one_side(check: str, inputs: TagInputs) -> Finding:
         note, vented = f" (the {behind})", ", the other side vented"
     (limit,) = recorded(("the one-side limit of the type", type_limits.one_side_limit_pa))
     demanded, sums = restated(
-        f"the {name.removesuffix(' of')}", pressure, process.reference, Reference.GAUGE,
-        inputs.surroundings.barometric_pa, process.pressure_unit,
-    )  # fmt: skip
+        f"the {behind}",
+        pressure,
+        process.reference,
+        Reference.GAUGE,
+        inputs.surroundings.barometric_pa,
+        process.pressure_unit,
+    )
     return Comparison(
         check=check,
         demanded=Side(
@@ -109,9 +117,13 @@ def lowest_pressure(check: str, inputs: TagInputs) -> Finding:
         ("the lowest absolute pressure of the type", type_limits.vacuum_limit_pa),
     )
     demanded, sums = restated(
-        "the lowest pressure", pressure, process.reference, Reference.ABSOLUTE, inputs.surroundings.barometric_pa,
+        "the lowest pressure",
+        pressure,
+        process.reference,
+        Reference.ABSOLUTE,
+        inputs.surroundings.barometric_pa,
         process.pressure_unit,
-    )  # fmt: skip
+    )
     return Comparison(
         check=check,
         demanded=Side(demanded, "Lowest pressure", _pressure_source(process, "lowest pressure", pressure), " absolute"),
