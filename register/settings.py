@@ -2,54 +2,18 @@
 
 from __future__ import annotations
 
-import os
-import secrets
 from pathlib import Path
 
-import dj_database_url
 from csp.constants import NONE, SELF
-from django.core.exceptions import ImproperlyConfigured
+
+from register import environment
 
 BASE_DIR = Path(__file__).resolve().parent.parent
-
-
-def flag(name: str, default: bool) -> bool:
-    """A yes/no variable; anything but 1/0, yes/no, true/false is an error."""
-    text = os.environ.get(name, "").strip().lower()
-    if text == "":
-        return default
-    if text in {"1", "yes", "true"}:
-        return True
-    if text in {"0", "no", "false"}:
-        return False
-    raise ImproperlyConfigured(f"{name} is “{text}”; use yes or no.")
-
-
-def listed(name: str) -> list[str]:
-    """A comma-separated variable."""
-    return [part.strip() for part in os.environ.get(name, "").split(",") if part.strip()]
-
-
-DATA_DIR = Path(os.environ.get("FOUNDLEFT_DATA", BASE_DIR / ".data")).resolve()
-
-
-def secret_key() -> str:
-    """FOUNDLEFT_SECRET_KEY, else a key made once and kept readable by its owner only."""
-    if key := os.environ.get("FOUNDLEFT_SECRET_KEY"):
-        return key
-    path = DATA_DIR / "secret_key"
-    if not path.exists():
-        DATA_DIR.mkdir(parents=True, exist_ok=True)
-        handle = os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o600)
-        with os.fdopen(handle, "w") as out:
-            out.write(secrets.token_urlsafe(64))
-    return path.read_text().strip()
-
-
-SECRET_KEY = secret_key()
-DEBUG = flag("FOUNDLEFT_DEBUG", False)
-HTTPS = flag("FOUNDLEFT_HTTPS", False)
-ALLOWED_HOSTS = listed("FOUNDLEFT_HOSTS") or ["localhost", "127.0.0.1", "[::1]"]
+DATA_DIR = environment.data_folder(BASE_DIR / ".data")
+SECRET_KEY = environment.secret_key(DATA_DIR)
+DEBUG = environment.flag("FOUNDLEFT_DEBUG", False)
+HTTPS = environment.flag("FOUNDLEFT_HTTPS", False)
+ALLOWED_HOSTS = environment.hosts("FOUNDLEFT_HOSTS", ["localhost", "127.0.0.1", "[::1]"])
 
 INSTALLED_APPS = [
     "django.contrib.auth",
@@ -67,6 +31,7 @@ INSTALLED_APPS = [
 AUTH_USER_MODEL = "register.User"
 
 MIDDLEWARE = [
+    "register.proxies.ProxyMiddleware",
     "django.middleware.security.SecurityMiddleware",
     "whitenoise.middleware.WhiteNoiseMiddleware",
     "csp.middleware.CSPMiddleware",
@@ -111,11 +76,7 @@ TEMPLATES = [
     }
 ]
 
-DATABASES = {
-    "default": dj_database_url.parse(
-        os.environ.get("DATABASE_URL") or f"sqlite:///{DATA_DIR / 'foundleft.sqlite3'}", conn_max_age=60
-    )
-}
+DATABASES = {"default": environment.database(DATA_DIR / "foundleft.sqlite3")}
 if DATABASES["default"]["ENGINE"] == "django.db.backends.sqlite3":
     DATABASES["default"]["OPTIONS"] = {
         "transaction_mode": "IMMEDIATE",
@@ -180,9 +141,27 @@ SESSION_COOKIE_SAMESITE = "Lax"
 SESSION_COOKIE_SECURE = HTTPS
 CSRF_COOKIE_SECURE = HTTPS
 SECURE_SSL_REDIRECT = HTTPS
-SECURE_HSTS_SECONDS = 31536000 if HTTPS else 0
+SECURE_HSTS_SECONDS = environment.whole_number("FOUNDLEFT_HSTS_SECONDS", 31536000) if HTTPS else 0
 SECURE_HSTS_INCLUDE_SUBDOMAINS = HTTPS
 SECURE_HSTS_PRELOAD = HTTPS
 SESSION_COOKIE_AGE = 12 * 3600
-CSRF_TRUSTED_ORIGINS = listed("FOUNDLEFT_ORIGINS")
+CSRF_TRUSTED_ORIGINS = environment.origins("FOUNDLEFT_ORIGINS")
+#: Reverse proxies that are believed about the address and scheme a request came with (`register.proxies`).
+TRUSTED_PROXIES = environment.networks("FOUNDLEFT_PROXIES")
+SECURE_PROXY_SSL_HEADER = ("HTTP_X_FORWARDED_PROTO", "https") if TRUSTED_PROXIES else None
 EMAIL_BACKEND = "django.core.mail.backends.console.EmailBackend"
+
+LOG_LEVEL = environment.one_of("FOUNDLEFT_LOG_LEVEL", ("DEBUG", "INFO", "WARNING", "ERROR"), "INFO")
+LOGGING = {
+    "version": 1,
+    "disable_existing_loggers": False,
+    "formatters": {"line": {"format": "{asctime} {levelname} {name}: {message}", "style": "{"}},
+    "handlers": {"stderr": {"class": "logging.StreamHandler", "formatter": "line"}},
+    "root": {"handlers": ["stderr"], "level": "WARNING"},
+    "loggers": {
+        "django": {"handlers": ["stderr"], "level": "WARNING", "propagate": False},
+        "axes": {"handlers": ["stderr"], "level": "WARNING", "propagate": False},
+        "register": {"handlers": ["stderr"], "level": LOG_LEVEL, "propagate": False},
+        "calibration": {"handlers": ["stderr"], "level": LOG_LEVEL, "propagate": False},
+    },
+}

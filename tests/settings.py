@@ -7,7 +7,7 @@ import os
 
 os.environ.setdefault("FOUNDLEFT_SECRET_KEY", "only-for-tests")
 
-from register.settings import *  # noqa: E402, F403
+from register.settings import *  # noqa: F403
 
 PASSWORD_HASHERS = ["django.contrib.auth.hashers.MD5PasswordHasher"]
 AXES_ENABLED = False
