@@ -13,7 +13,9 @@ FIELDS = ("name", "points", "for_square_root", "withdrawn_at")
 
 
 @transaction.atomic
-def create_point_list(*, by: Actor, plant: Plant, name: str, points: str, for_square_root: bool, reason: str) -> PointList:
+def create_point_list(
+    *, by: Actor, plant: Plant, name: str, points: str, for_square_root: bool, reason: str
+) -> PointList:
     made = PointList.objects.create(plant=plant, name=name, points=_tidy(points), for_square_root=for_square_root)
     act = Act(by=by, reason=reason)
     act.created(made, plant=plant)
@@ -22,7 +24,9 @@ def create_point_list(*, by: Actor, plant: Plant, name: str, points: str, for_sq
 
 
 @transaction.atomic
-def edit_point_list(*, by: Actor, point_list: PointList, name: str, points: str, for_square_root: bool, reason: str) -> PointList:
+def edit_point_list(
+    *, by: Actor, point_list: PointList, name: str, points: str, for_square_root: bool, reason: str
+) -> PointList:
     held = PointList.objects.select_for_update().get(pk=point_list.pk)
     before = snapshot(held, FIELDS)
     held.name, held.points, held.for_square_root = name, _tidy(points), for_square_root

@@ -56,9 +56,7 @@ class Requirement(models.Model):
     input_unit = models.CharField("unit of the input figures", max_length=20, blank=True)
     decision_rule = models.CharField(max_length=24, choices=Rule.choices, default=Rule.SIMPLE)
     interval_months = models.PositiveSmallIntegerField("interval (months)")
-    anchor = models.CharField(
-        "counted from", max_length=12, choices=Anchor.choices, default=Anchor.LAST_TEST
-    )
+    anchor = models.CharField("counted from", max_length=12, choices=Anchor.choices, default=Anchor.LAST_TEST)
     anchor_on = models.DateField("calendar begins", null=True, blank=True)
     grace_days = models.PositiveSmallIntegerField(
         "grace (days)", null=True, blank=True, help_text="Empty: a quarter of the interval."

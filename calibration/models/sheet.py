@@ -47,7 +47,9 @@ class Sheet(models.Model):
     transfer = models.CharField(max_length=12)
     low_cut_percent = models.FloatField(default=0.0)
     below_cut = models.CharField(max_length=8, default="linear")
-    basis = models.JSONField(help_text="Tolerances, decision rule, point list, head, cautions and checklist as they stood.")
+    basis = models.JSONField(
+        help_text="Tolerances, decision rule, point list, head, cautions and checklist as they stood."
+    )
 
     class Meta:
         ordering = ["-opened_at"]

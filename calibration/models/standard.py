@@ -9,8 +9,18 @@ from django.db import models
 from register.models import Plant, Typed, TypedQuantities
 
 
+class StandardQuerySet(models.QuerySet["Standard"]):
+    def with_until(self) -> StandardQuerySet:
+        """Annotate `until`: the last day that a certificate which still counts is relied on, or None."""
+        return self.annotate(
+            until=models.Max("certificates__valid_until", filter=models.Q(certificates__withdrawn_at__isnull=True))
+        )
+
+
 class Standard(TypedQuantities):
     """Equipment a test is made against."""
+
+    objects = StandardQuerySet.as_manager()
 
     QUANTITIES: ClassVar = (Typed("low", "unit", "low_si"), Typed("high", "unit", "high_si"))
 
@@ -54,6 +64,23 @@ class Standard(TypedQuantities):
 
     def __str__(self) -> str:
         return f"{self.name} ({self.get_kind_display()})"
+
+    @property
+    def unit_label(self) -> str:
+        from register.engineering.units import label
+
+        return label(self.unit)
+
+    @property
+    def specification(self) -> str:
+        """The specification in words, its parts added; empty where none is known."""
+        parts = (
+            (self.spec_reading_percent, "% of reading"),
+            (self.spec_scale_percent, "% of full scale"),
+            (self.spec_absolute, self.unit_label),
+        )
+        said = [f"{value:g} {of}" for value, of in parts if value is not None]
+        return "±(" + " + ".join(said) + ")" if said else ""
 
 
 class Certificate(models.Model):

@@ -42,9 +42,7 @@ class Test(models.Model):
     transmitter = models.ForeignKey(Transmitter, on_delete=models.PROTECT, related_name="tests")
     fitting = models.ForeignKey(Fitting, on_delete=models.PROTECT, null=True, related_name="tests")
     sheet = models.OneToOneField(Sheet, on_delete=models.PROTECT, null=True, related_name="test")
-    current_record = models.OneToOneField(
-        "calibration.Record", on_delete=models.PROTECT, null=True, related_name="+"
-    )
+    current_record = models.OneToOneField("calibration.Record", on_delete=models.PROTECT, null=True, related_name="+")
     state = models.CharField(max_length=12, choices=State.choices)
     outcome = models.CharField(max_length=20, choices=Outcome.choices, default=Outcome.DONE)
     tested_on = models.DateField(help_text="Plant date of the last reading.")
@@ -97,7 +95,9 @@ class Record(Frozen):
     low_cut_percent = models.FloatField(default=0.0)
     below_cut = models.CharField(max_length=8, default="linear")
     basis = models.JSONField()
-    answers = models.JSONField(default=dict, help_text="Confirmation, cautions, adjustment, checklist, remarks as typed.")
+    answers = models.JSONField(
+        default=dict, help_text="Confirmation, cautions, adjustment, checklist, remarks as typed."
+    )
 
     class Meta:
         ordering = ["plant", "-position"]
