@@ -5,13 +5,15 @@ The functions run inside the transaction of the act: what they refuse, the act h
 
 from __future__ import annotations
 
+import datetime
 from collections.abc import Collection
 
 from django.conf import settings
+from django.core.exceptions import ValidationError
 from django.utils.module_loading import import_string
 
 from register.auditing import Actor
-from register.models import Plant
+from register.models import Plant, Tag
 
 
 def announce(tag_ids: Collection[int]) -> None:
@@ -26,3 +28,19 @@ def plant_created(plant: Plant, by: Actor) -> None:
     """Call every function of `AFTER_PLANT_CREATED` with the new plant and who made it."""
     for name in settings.AFTER_PLANT_CREATED:
         import_string(name)(plant, by)
+
+
+def object_to_backdating(tag: Tag, on: datetime.date, *, field: str) -> None:
+    """Ask the functions named in `BEFORE_BACKDATING` whether something that stands forbids a change from a day on.
+
+    Each is called with the tag and the day and answers a sentence, or nothing where it has no objection.
+
+    Raises
+    ------
+    ValidationError
+        Beside `field`, with the sentence of the first that objects: a test after that day would say something
+        else than it said when it was signed.
+    """
+    for name in settings.BEFORE_BACKDATING:
+        if sentence := import_string(name)(tag, on):
+            raise ValidationError({field: sentence})

@@ -103,9 +103,12 @@ AXES_LOCKOUT_PARAMETERS = [["username", "ip_address"]]
 AXES_RESET_ON_SUCCESS = True
 AXES_LOCKOUT_TEMPLATE = "register/locked_out.html"
 AXES_VERBOSE = False
+AXES_SENSITIVE_PARAMETERS = ["password", "old_password", "new_password1", "new_password2", "code"]
 
 #: Functions called with the ids of the tags that a register act touched, in its transaction.
 AFTER_REGISTER_CHANGE = ["calibration.scheduling.refresh"]
+#: Functions asked with a tag and a day whether a change may be dated back to it; they answer an objection or "".
+BEFORE_BACKDATING = ["calibration.objections.to_backdating"]
 #: Functions called with a new plant and who made it, in the transaction of the act that makes it.
 AFTER_PLANT_CREATED = ["calibration.provision.provide_defaults"]
 
