@@ -169,9 +169,10 @@ class Basis:
         return kept
 
     def signal(self) -> Signal:
-        """The configured range for the arithmetic, in the unit of the range."""
+        """The configured range for the arithmetic; its unit is the one a reader sees."""
         from calibration.metrology.signal import BelowCut, Signal, Transfer
         from register.engineering.typed import parse_number
+        from register.engineering.units import label
 
         return Signal(
             lrv=parse_number(self.lrv),
@@ -179,7 +180,7 @@ class Basis:
             transfer=Transfer(self.transfer),
             low_cut_percent=self.low_cut_percent,
             below_cut=BelowCut(self.below_cut),
-            unit=self.unit,
+            unit=label(self.unit),
         )
 
     def tolerance(self, kind: str) -> Tolerance:

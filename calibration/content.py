@@ -85,7 +85,7 @@ class RecordContent:
     runs: tuple[RunContent, ...]
     made_at: datetime.datetime
     made_by_id: int | None
-    outcome: str = "tested"
+    outcome: str = "done"
     transcribed: bool = False
     answers: Mapping[str, Any] = field(default_factory=dict)
     signatures: tuple[SignatureContent, ...] = ()
