@@ -11,16 +11,23 @@ import re
 from collections import defaultdict
 from collections.abc import Collection, Iterable
 from dataclasses import dataclass, field
-from typing import Any
+from typing import TYPE_CHECKING, Any
+from zoneinfo import ZoneInfo
 
 from calibration.models import Deferral, Requirement, Standing, Test
-from register.models import Flag, Intervention, Range, Tag, TransmitterType
+from calibration.models.standing import NO_DATE, NO_ERROR
+from register.models import Fitting, Flag, Intervention, Range, Tag, TransmitterType
+
+if TYPE_CHECKING:
+    from register.engineering.limits import TypeLimits
 
 #: Interventions after which the transmitter must prove itself again before it counts as tested.
 RESTARTS = (Intervention.Kind.REPAIR, Intervention.Kind.NEW_HEAD)
-NO_DATE = datetime.date.max
+Phase = Standing.Phase
 _PIECES = re.compile(r"[^\W\d_]+|\d+")
 _EDGES = re.compile(r"^\W+|\W+$")
+_DIGITS = re.compile(r"\d+")
+_WORD = 60
 
 
 @dataclass(slots=True)
@@ -40,27 +47,47 @@ def read(tag_ids: Collection[int]) -> History:
     """Read everything that decides how the tags stand."""
     history = History(
         list(
-            Tag.objects.filter(pk__in=tag_ids).select_related(
+            Tag.objects.filter(pk__in=tag_ids)
+            .order_by("pk")
+            .select_related(
                 "plant",
                 "area",
                 "current_range",
                 "current_fitting__transmitter__maker",
-                "current_fitting__transmitter__type",
+                "current_fitting__transmitter__type__maker",
                 "current_fitting__transmitter__head",
             )
         )
     )
-    applied = {"tag_id__in": tag_ids, "applied_at__isnull": False, "withdrawn_at__isnull": True}
-    for requirement in Requirement.objects.filter(**applied).order_by("tag_id", "effective_from", "id"):
+    in_force = {"tag_id__in": tag_ids, "applied_at__isnull": False, "withdrawn_at__isnull": True}
+    for requirement in Requirement.objects.filter(**in_force).order_by("tag_id", "effective_from", "id"):
         history.requirements[requirement.tag_id] = requirement
-    for row in Range.objects.filter(**applied).order_by("tag_id", "effective_from", "id"):
+    for row in Range.objects.filter(**in_force).order_by("tag_id", "effective_from", "id"):
         history.ranges[row.tag_id].append(row)
     fitted = {tag.current_fitting.transmitter_id for tag in history.tags if tag.current_fitting}
-    for transmitter_id, done_on in Intervention.objects.filter(
-        transmitter_id__in=fitted, kind__in=RESTARTS, withdrawn_at__isnull=True
-    ).values_list("transmitter_id", "done_on"):
+    for transmitter_id, done_on in (
+        Intervention.objects.filter(transmitter_id__in=fitted, kind__in=RESTARTS, withdrawn_at__isnull=True)
+        .order_by()
+        .values_list("transmitter_id", "done_on")
+    ):
         history.restarts[transmitter_id].append(done_on)
-    for test in (
+    for test in _tests(tag_ids):
+        history.tests[test["tag_id"]].append(test)
+    for deferral in Deferral.objects.filter(
+        tag_id__in=tag_ids, approved_at__isnull=False, withdrawn_at__isnull=True
+    ).order_by():
+        history.deferrals[deferral.tag_id].append(deferral)
+    for tag_id, severity, accepted_at in (
+        Flag.objects.filter(tag_id__in=tag_ids, closed_at__isnull=True)
+        .order_by()
+        .values_list("tag_id", "severity", "accepted_at")
+    ):
+        history.flags[tag_id].append((severity, accepted_at is not None))
+    return history
+
+
+def _tests(tag_ids: Collection[int]) -> Iterable[dict[str, Any]]:
+    return (
         Test.objects.filter(tag_id__in=tag_ids, outcome=Test.Outcome.DONE)
         .order_by("tag_id", "tested_on", "id")
         .values(
@@ -79,17 +106,7 @@ def read(tag_ids: Collection[int]) -> History:
             "current_record__urv_si",
             "current_record__transfer",
         )
-    ):
-        history.tests[test["tag_id"]].append(test)
-    for deferral in Deferral.objects.filter(
-        tag_id__in=tag_ids, approved_at__isnull=False, withdrawn_at__isnull=True
-    ):
-        history.deferrals[deferral.tag_id].append(deferral)
-    for tag_id, severity, accepted_at in Flag.objects.filter(tag_id__in=tag_ids, closed_at__isnull=True).values_list(
-        "tag_id", "severity", "accepted_at"
-    ):
-        history.flags[tag_id].append((severity, accepted_at is not None))
-    return history
+    )
 
 
 def work_out(history: History) -> list[Standing]:
@@ -107,6 +124,7 @@ def _standing(tag: Tag, history: History, strips: Strips) -> Standing:
         plant_id=tag.plant_id,
         area_id=tag.area_id,
         number=tag.number,
+        sort_key=sort_key(tag.number),
         service=tag.service,
         area_code=tag.area.code,
         criticality=tag.criticality,
@@ -124,35 +142,55 @@ def _standing(tag: Tag, history: History, strips: Strips) -> Standing:
         standing.range_text = f"{span.lrv} to {span.urv}"[:80]
         standing.range_unit = label(span.unit)[:20]
         standing.square_root = span.transfer == Range.Transfer.SQUARE_ROOT
-    flags = history.flags.get(tag.pk, [])
-    standing.open_flags = sum(1 for severity, accepted in flags if severity and not accepted)
-    standing.accepted_flags = sum(1 for severity, accepted in flags if severity and accepted)
-    standing.flag_severity = max((severity for severity, accepted in flags if not accepted), default=0)
-    if fitting is None:
-        return standing
-    since = restarted_on(tag, history)
-    of_fitting = [test for test in history.tests.get(tag.pk, []) if _belongs(test, fitting)]
-    if of_fitting:
-        last = of_fitting[-1]
+    _flagged(standing, history.flags.get(tag.pk, []))
+    if fitting is not None:
+        _tested(standing, tag, fitting, history)
+    return standing
+
+
+def _flagged(standing: Standing, flags: list[tuple[int, bool]]) -> None:
+    counted = [(severity, accepted) for severity, accepted in flags if severity != Flag.Severity.CLEAR]
+    standing.open_flags = sum(1 for _, accepted in counted if not accepted)
+    standing.accepted_flags = len(counted) - standing.open_flags
+    worst = max((severity for severity, accepted in counted if not accepted), default=Flag.Severity.CLEAR)
+    standing.flag_rank = Flag.Severity.VIOLATION - worst
+
+
+def _tested(standing: Standing, tag: Tag, fitting: Fitting, history: History) -> None:
+    """Fill in what the tests of the fitted transmitter at this tag say, and when the next is due."""
+    since = restarted_on(tag, fitting, history)
+    tests = [test for test in history.tests.get(tag.pk, []) if _belongs(test, fitting)]
+    if tests:
+        last = tests[-1]
         standing.last_test_id = last["id"]
         standing.last_tested_on = last["tested_on"]
         standing.last_verdict = last["as_left_verdict"] or last["as_found_verdict"]
         standing.as_found_verdict = last["as_found_verdict"]
         standing.as_found_ratio = last["as_found_ratio"]
         standing.as_left_ratio = last["as_left_ratio"]
-    accepted = [test for test in of_fitting if _proves(test, since, span)]
-    standing.last_accepted_on = accepted[-1]["tested_on"] if accepted else None
-    _schedule(standing, requirement, since)
-    if tag.out_of_service_on is None:
-        standing.phase = Standing.Phase.SCHEDULED if accepted else Standing.Phase.NEVER_TESTED
-    standing.deferred_until = _deferred(standing, history.deferrals.get(tag.pk, []))
-    return standing
+        ratio = last["as_left_ratio"] if last["as_left_verdict"] else last["as_found_ratio"]
+        standing.error_rank = NO_ERROR if ratio is None else -abs(ratio)
+    accepted = [test["tested_on"] for test in tests if _proves(test, since, tag.current_range)]
+    standing.last_accepted_on = accepted[-1] if accepted else None
+    requirement = history.requirements.get(tag.pk)
+    if not accepted:
+        standing.phase, standing.due_on = Phase.NEVER_TESTED, since
+    elif requirement is None:
+        standing.phase = Phase.NO_REQUIREMENT
+    else:
+        standing.phase = Phase.SCHEDULED
+        _schedule(standing, requirement, accepted[-1])
+        standing.deferred_until = _deferred(standing, tag, history.deferrals.get(tag.pk, []))
+    if tag.out_of_service_on is not None:
+        standing.phase = Phase.NOT_IN_SERVICE
+        standing.grace_until = standing.window_opens_on = standing.deferred_until = None
+        standing.grace_span = standing.lead_span = 0
+    elif standing.due_on is not None:
+        standing.due_key = standing.due_on
 
 
-def restarted_on(tag: Tag, history: History) -> datetime.date:
+def restarted_on(tag: Tag, fitting: Fitting, history: History) -> datetime.date:
     """The day from which the fitted transmitter must have been tested at the tag: fitted, repaired or re-ranged."""
-    fitting = tag.current_fitting
-    assert fitting is not None
     days = [fitting.fitted_on, *history.restarts.get(fitting.transmitter_id, [])]
     earlier: Range | None = None
     for row in history.ranges.get(tag.pk, []):
@@ -165,10 +203,8 @@ def restarted_on(tag: Tag, history: History) -> datetime.date:
 def _same_range(one: Range, other: Range) -> bool:
     if (one.reference, one.transfer) != (other.reference, other.transfer):
         return False
-    if one.transfer == Range.Transfer.SQUARE_ROOT and (one.low_cut_percent, one.below_cut) != (
-        other.low_cut_percent,
-        other.below_cut,
-    ):
+    cuts = [(row.low_cut_percent, row.below_cut) for row in (one, other)]
+    if one.transfer == Range.Transfer.SQUARE_ROOT and cuts[0] != cuts[1]:
         return False
     return _equal(one.lrv_si, one.urv_si, other.lrv_si, other.urv_si)
 
@@ -178,7 +214,7 @@ def _equal(lrv: float, urv: float, other_lrv: float, other_urv: float) -> bool:
     return abs(lrv - other_lrv) <= slack and abs(urv - other_urv) <= slack
 
 
-def _belongs(test: dict[str, Any], fitting: Any) -> bool:
+def _belongs(test: dict[str, Any], fitting: Fitting) -> bool:
     if test["fitting_id"] is not None:
         return bool(test["fitting_id"] == fitting.pk)
     return bool(test["transmitter_id"] == fitting.transmitter_id and test["tested_on"] >= fitting.fitted_on)
@@ -199,107 +235,108 @@ def _proves(test: dict[str, Any], since: datetime.date, span: Range | None) -> b
     )
 
 
-def _schedule(standing: Standing, requirement: Requirement | None, since: datetime.date) -> None:
-    if standing.last_accepted_on is None:
-        standing.due_on = standing.grace_until = standing.window_opens_on = since
-        return
-    if requirement is None:
-        return
+def _schedule(standing: Standing, requirement: Requirement, last_accepted: datetime.date) -> None:
     from calibration.metrology.due import plan_next
 
     calendar = requirement.anchor == Requirement.Anchor.CALENDAR
     plan = plan_next(
-        standing.last_accepted_on,
+        last_accepted,
         requirement.interval_months,
         calendar_anchor=requirement.anchor_on if calendar else None,
         grace_days=requirement.grace_days,
         lead_days=requirement.lead_days,
     )
+    assert plan.due is not None and plan.limit is not None and plan.opens is not None
     standing.due_on, standing.grace_until, standing.window_opens_on = plan.due, plan.limit, plan.opens
+    standing.grace_span = (plan.limit - plan.due).days
+    standing.lead_span = (plan.due - plan.opens).days
 
 
-def _deferred(standing: Standing, deferrals: Iterable[Deferral]) -> datetime.date | None:
-    """The latest approved limit date; a deferral is used up by the next accepted test."""
-    last = standing.last_accepted_on
-    until = [d.until for d in deferrals if last is None or d.requested_at.date() > last]
-    return max(until, default=None)
+def _deferred(standing: Standing, tag: Tag, deferrals: Iterable[Deferral]) -> datetime.date | None:
+    """The latest approved limit date beyond due; the next accepted test uses a deferral up."""
+    last, due = standing.last_accepted_on, standing.due_on
+    zone = ZoneInfo(tag.plant.time_zone)
+    standing_ones = [
+        deferral.until
+        for deferral in deferrals
+        if (last is None or deferral.requested_at.astimezone(zone).date() > last)
+        and (due is None or deferral.until > due)
+    ]
+    return max(standing_ones, default=None)
 
 
 class Strips:
-    """Works out what the range strips of many tags are drawn from; ratings are read once per type."""
+    """Works out what the range strips of many tags are drawn from; the limits of a type are read once."""
 
     def __init__(self) -> None:
-        self._tables: dict[int, Any] = {}
+        self._types: dict[int, TypeLimits] = {}
         self._ratings: dict[tuple[int, float | None, float | None], float | None] = {}
 
     def of(self, tag: Tag) -> list[float | None]:
-        """Fractions LRV, URV, least span of the head, operating and design pressure of the rating; None = unknown."""
-        fitting, span = tag.current_fitting, tag.current_range
-        if fitting is None:
+        """LRV, URV, least span as fractions of the head, operating and design pressure of the body rating.
+
+        Returns
+        -------
+        list
+            Five fractions, None where unknown, and 1.0 where the rating is known; empty where nothing is fitted.
+        """
+        if tag.current_fitting is None:
             return []
-        transmitter = fitting.transmitter
+        transmitter, span = tag.current_fitting.transmitter, tag.current_range
         head, kind = transmitter.head, transmitter.type
         width = head.url_si - head.lrl_si
         lrv = urv = None
         if span is not None:
-            lrv = self._fraction(self._restated(span.lrv_si, span, kind, tag), head.lrl_si, width)
-            urv = self._fraction(self._restated(span.urv_si, span, kind, tag), head.lrl_si, width)
+            lrv, urv = (
+                None if value is None else round((value - head.lrl_si) / width, 4)
+                for value in (_restated(si, span.reference, kind.measures, tag) for si in (span.lrv_si, span.urv_si))
+            )
         rating = self._rating(kind, tag)
-        pressures = [_gauge(value, tag) for value in (tag.operating_pressure_pa, tag.design_pressure_pa)]
-        shares = [None if rating is None or value is None else round(value / rating, 4) for value in pressures]
+        shares = [
+            None if rating is None or value is None else round(value / rating, 4)
+            for value in (
+                _restated(pressure, tag.pressure_reference, "gauge", tag)
+                for pressure in (tag.operating_pressure_pa, tag.design_pressure_pa)
+            )
+        ]
         return [lrv, urv, round(head.least_span_si / width, 4), *shares, None if rating is None else 1.0]
 
-    @staticmethod
-    def _fraction(value: float | None, low: float, width: float) -> float | None:
-        return None if value is None else round((value - low) / width, 4)
-
-    @staticmethod
-    def _restated(value: float, span: Range, kind: TransmitterType, tag: Tag) -> float | None:
-        from register.engineering.pressure import PressureReferenceError, restate
-
-        try:
-            return restate(value, span.reference, kind.measures, tag.plant.barometric_pa)
-        except PressureReferenceError:
-            return None
-
     def _rating(self, kind: TransmitterType, tag: Tag) -> float | None:
+        from register.checking import process_of, type_limits
+        from register.engineering.limits import body_rating_at
+
         key = (kind.pk, tag.process_min_k, tag.process_max_k)
         if key not in self._ratings:
-            self._ratings[key] = self._worked_rating(kind, tag)
+            if kind.pk not in self._types:
+                self._types[kind.pk] = type_limits(kind)
+            self._ratings[key] = body_rating_at(self._types[kind.pk], process_of(tag))
         return self._ratings[key]
 
-    def _worked_rating(self, kind: TransmitterType, tag: Tag) -> float | None:
-        from register.engineering.rating import least_rating, rating_table
 
-        if kind.pk not in self._tables:
-            self._tables[kind.pk] = rating_table(kind.body_rating, kind.temperature_unit, kind.pressure_unit)
-        highest = tag.process_max_k
-        if highest is None or not self._tables[kind.pk]:
-            return None
-        lowest = tag.process_min_k if tag.process_min_k is not None else highest
-        rating = float(least_rating(lowest, highest, self._tables[kind.pk]))
-        return None if rating != rating else rating
-
-
-def _gauge(value: float | None, tag: Tag) -> float | None:
-    from register.engineering.pressure import BarometricMissingError, restate
+def _restated(value: float | None, reference: str, to_reference: str, tag: Tag) -> float | None:
+    from register.engineering.pressure import PressureReferenceError, restate
 
     if value is None:
         return None
     try:
-        return float(restate(value, tag.pressure_reference, "gauge", tag.plant.barometric_pa))
-    except BarometricMissingError:
+        return float(restate(value, reference, to_reference, tag.plant.barometric_pa))
+    except PressureReferenceError:
         return None
+
+
+def sort_key(number: str) -> str:
+    """A tag number with its digits widened, so that FT-9 comes before FT-10."""
+    return _DIGITS.sub(lambda digits: digits[0].zfill(6), number.casefold())[:120]
 
 
 def words_of(text: str) -> set[str]:
     """Words by which a text is found: its parts between spaces, and the letters and digits inside each."""
     found: set[str] = set()
     for part in text.casefold().split():
-        whole = _EDGES.sub("", part)[:60]
+        whole = _EDGES.sub("", part)[:_WORD]
         if whole:
             found.add(whole)
-            found.update(piece[:60] for piece in _PIECES.findall(whole))
+            found.update(piece[:_WORD] for piece in _PIECES.findall(whole))
     return found
 
 

@@ -4,7 +4,7 @@ from calibration.models.guidance import GuidanceLine
 from calibration.models.requirement import Deferral, PointList, Requirement, ToleranceForm
 from calibration.models.sheet import Entry, Sheet
 from calibration.models.standard import Certificate, Standard
-from calibration.models.standing import SearchWord, Standing
+from calibration.models.standing import ScheduleState, SearchWord, Standing
 from calibration.models.test import (
     ChainHead,
     Reading,
@@ -29,6 +29,7 @@ __all__ = [
     "Requirement",
     "Run",
     "RunFigures",
+    "ScheduleState",
     "SearchWord",
     "Sheet",
     "Signature",
