@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass
+from functools import lru_cache
 
-from register.engineering.findings import Finding, Severity
-from register.engineering.margins import ON_THE_LIMIT, lower_margin, severity_codes, upper_margin
+from register.engineering.findings import Finding, Said, Severity
+from register.engineering.margins import ON_THE_LIMIT, severity_codes
 from register.engineering.typed import format_number
-from register.engineering.units import SI_UNIT, difference_from_si, from_si, kind_of, label
+from register.engineering.units import difference_from_si, from_si, label
 
 # Margins below which a demand inside its limit is a caution: own choice, no source.
 NARROW_SHARE = 0.05
@@ -19,16 +21,29 @@ LONGEST_TEXT = 400
 
 
 @dataclass(frozen=True, slots=True)
+class Source:
+    """Where a number stands: whose it is, what it is there, and how it reads there."""
+
+    origin: str
+    what: str
+    si: float
+    unit: str
+    remark: str = ""
+
+    def __str__(self) -> str:
+        return clipped(f"{self.origin}: {self.what} {in_unit(self.si, self.unit)}{self.remark}", LONGEST_SOURCE)
+
+
+@dataclass(frozen=True, slots=True)
 class Side:
     """One of the two numbers of a comparison.
 
-    `name` begins the sentence for a demand and follows "above" or "below" for a limit; `note` follows the number;
-    `source` says where the number stands.
+    `name` begins the sentence for a demand and follows "above" or "below" for a limit; `note` follows the number.
     """
 
     si: float
     name: str
-    source: str
+    source: Source
     note: str = ""
 
 
@@ -42,7 +57,11 @@ class Share:
 
 @dataclass(frozen=True, slots=True)
 class Comparison:
-    """A demand that must not pass a limit; `narrow` is the margin [SI] below which it is a caution."""
+    """A demand that must not pass a limit, and the words for it.
+
+    `narrow` is the margin [SI] below which the demand is a caution; `working` gives the lines of arithmetic that
+    lead to the two numbers.
+    """
 
     check: str
     demanded: Side
@@ -51,87 +70,103 @@ class Comparison:
     must_stay_below: bool
     share: Share | None = None
     narrow: float = 0.0
-    working: tuple[str, ...] = ()
+    working: tuple[Callable[[], str], ...] = ()
     advice: str = ""
 
     def finding(self) -> Finding:
-        """Compare, and say it."""
-        demanded, limit = self.demanded.si, self.limit.si
-        margin_si = float((upper_margin if self.must_stay_below else lower_margin)(demanded, limit))
-        size = max(abs(demanded), abs(limit))
-        if abs(margin_si) <= ON_THE_LIMIT * size:
-            margin_si = 0.0
-        severity = list(Severity)[severity_codes(margin_si, size, self.narrow)]
-        margin = difference_from_si(margin_si, self.unit)
-        base = None if self.share is None or not self.share.si > 0 else difference_from_si(self.share.si, self.unit)
-        percent = None if base is None else margin / base * 100.0
-        shown = (from_si(demanded, self.unit), from_si(limit, self.unit))
-        decimals = shared_decimals(*shown, margin)
-        said = _Said(
-            demanded=tidy(shown[0], decimals),
-            limit=tidy(shown[1], decimals),
-            margin=tidy(margin, decimals),
-            percent=_percent(percent),
-        )
+        """Compare."""
+        severity = _SEVERITIES[severity_codes(self.margin_si, self._size, self.narrow)]
+        share = self.share if self.share is not None and self.share.si > 0 else None
         return Finding(
             check=self.check,
             severity=severity,
-            sentence=clipped(self._sentence(said, margin, severity), LONGEST_TEXT),
+            words=self,
             unit=self.unit,
-            si_unit=SI_UNIT[kind_of(self.unit)],
-            demanded_si=demanded,
-            limit_si=limit,
-            margin_si=margin_si,
-            demanded=shown[0],
-            limit=shown[1],
-            margin=margin,
-            margin_percent=percent,
-            percent_of="" if percent is None or self.share is None else self.share.name,
-            demanded_source=clipped(self.demanded.source, LONGEST_SOURCE),
-            limit_source=clipped(self.limit.source, LONGEST_SOURCE),
-            arithmetic=clipped("; ".join((*self.working, self._arithmetic(said, base))), LONGEST_TEXT),
+            demanded_si=self.demanded.si,
+            limit_si=self.limit.si,
+            margin_si=self.margin_si,
+            share_si=None if share is None else share.si,
+            percent_of="" if share is None else share.name,
             advice="" if severity is Severity.CLEAR else self.advice,
         )
 
-    def _sentence(self, said: _Said, margin: float, severity: Severity) -> str:
-        unit = short_label(self.unit)
+    @property
+    def margin_si(self) -> float:
+        """Margin in SI; what is left by rounding alone is no margin."""
+        margin = self.limit.si - self.demanded.si if self.must_stay_below else self.demanded.si - self.limit.si
+        return 0.0 if abs(margin) <= ON_THE_LIMIT * self._size else margin
+
+    @property
+    def _size(self) -> float:
+        return max(abs(self.demanded.si), abs(self.limit.si))
+
+    @property
+    def sentence(self) -> str:
+        """Say the comparison."""
+        found, said, unit = self.finding(), self._said(), short_label(self.unit)
         start = f"{self.demanded.name} {said.demanded} {unit}{self.demanded.note} is"
         end = f"{self.limit.name} of {said.limit}{self.limit.note}."
-        if margin == 0:
-            return f"{start} exactly at {end}"
+        if self.margin_si == 0:
+            return clipped(f"{start} exactly at {end}", LONGEST_TEXT)
         share = f" ({said.percent.removeprefix('−')})" if said.percent else ""
-        place = "above" if (margin < 0) == self.must_stay_below else "below"
-        only = "only " if severity is Severity.CAUTION else ""
-        return f"{start} {only}{said.margin.removeprefix('−')} {unit}{share} {place} {end}"
+        place = "above" if (self.margin_si < 0) == self.must_stay_below else "below"
+        only = "only " if found.severity is Severity.CAUTION else ""
+        return clipped(f"{start} {only}{said.margin.removeprefix('−')} {unit}{share} {place} {end}", LONGEST_TEXT)
 
-    def _arithmetic(self, said: _Said, base: float | None) -> str:
+    @property
+    def arithmetic(self) -> str:
+        """Show the numbers so that they can be added again."""
+        said = self._said()
         first, second = (said.limit, said.demanded) if self.must_stay_below else (said.demanded, said.limit)
-        line = f"{first} − {bracketed(second)} = {said.margin} {label(self.unit)}"
-        if base is None:
-            return line
-        return f"{line}; {said.margin} / {tidy(base, shared_decimals(base))} = {said.percent}"
+        lines = [line() for line in self.working]
+        lines.append(f"{first} − {bracketed(second)} = {said.margin} {label(self.unit)}")
+        if said.percent:
+            lines.append(f"{said.margin} / {said.share} = {said.percent}")
+        return clipped("; ".join(lines), LONGEST_TEXT)
+
+    @property
+    def demanded_source(self) -> str:
+        """Say where the demand stands."""
+        return str(self.demanded.source)
+
+    @property
+    def limit_source(self) -> str:
+        """Say where the limit stands."""
+        return str(self.limit.source)
+
+    def _said(self) -> _Numbers:
+        found = self.finding()
+        shown = [from_si(side.si, self.unit) for side in (self.demanded, self.limit)]
+        shown.append(difference_from_si(self.margin_si, self.unit))
+        decimals = shared_decimals(*shown)
+        share = None if found.share_si is None else difference_from_si(found.share_si, self.unit)
+        return _Numbers(
+            demanded=tidy(shown[0], decimals),
+            limit=tidy(shown[1], decimals),
+            margin=tidy(shown[2], decimals),
+            share="" if share is None else tidy(share, shared_decimals(share)),
+            percent=_percent(found.margin_percent),
+        )
 
 
 @dataclass(frozen=True, slots=True)
-class _Said:
+class _Numbers:
     demanded: str
     limit: str
     margin: str
+    share: str
     percent: str
 
 
-def cannot(check: str, missing: tuple[str, ...], why: str = "", unit: str = "") -> Finding:
+_SEVERITIES = tuple(Severity)
+
+
+def cannot(check: str, missing: tuple[str, ...], why: str = "") -> Finding:
     """Say that a check cannot be made, and what it lacks."""
     if not why:
         why = f"{' and '.join(missing)} {'is' if len(missing) == 1 else 'are'} not recorded"
-    return Finding(
-        check=check,
-        severity=Severity.CANNOT_CHECK,
-        sentence=clipped(f"Cannot be checked: {why}.", LONGEST_TEXT),
-        unit=unit,
-        si_unit=SI_UNIT[kind_of(unit)] if unit else "",
-        missing=missing,
-    )
+    sentence = clipped(f"Cannot be checked: {why}.", LONGEST_TEXT)
+    return Finding(check, Severity.CANNOT_CHECK, Said(sentence), missing=missing)
 
 
 def shared_decimals(*values: float) -> int:
@@ -156,6 +191,7 @@ def bracketed(text: str) -> str:
     return f"({text})" if text.startswith("−") else text
 
 
+@lru_cache(maxsize=8192)
 def in_unit(si: float, unit: str) -> str:
     """Write an SI value in a unit with the unit's full label."""
     value = from_si(si, unit)

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from enum import StrEnum
 from types import MappingProxyType
+from typing import Protocol
 
-from register.engineering.units import label
+from register.engineering.units import SI_UNIT, difference_from_si, from_si, kind_of, label
 
 
 class Severity(StrEnum):
@@ -47,30 +48,54 @@ CHECKS: Mapping[str, str] = MappingProxyType(
 CHECK_CHOICES: list[tuple[str, str]] = list(CHECKS.items())
 
 
+class Words(Protocol):
+    """What a finding says; made only when it is read, since most findings of a fleet never are."""
+
+    @property
+    def sentence(self) -> str:
+        """The finding as a tradesman would say it."""
+
+    @property
+    def arithmetic(self) -> str:
+        """The numbers as a line that can be added again; empty where none are compared."""
+
+    @property
+    def demanded_source(self) -> str:
+        """Where the demand stands."""
+
+    @property
+    def limit_source(self) -> str:
+        """Where the limit stands."""
+
+
+@dataclass(frozen=True, slots=True)
+class Said:
+    """Words of a finding that compares no numbers."""
+
+    sentence: str
+    demanded_source: str = ""
+    limit_source: str = ""
+    arithmetic: str = ""
+
+
 @dataclass(frozen=True, slots=True)
 class Finding:
     """Result of one check at one tag.
 
-    `margin` is zero or more inside the limit and negative beyond it; `margin_percent` has its sign and is a
-    percentage of what `percent_of` names. Numbers are None where the check compares none or cannot be made.
+    Numbers are in SI and, as properties, in the user's `unit`; None where the check compares none or cannot be
+    made. A margin is zero or more inside the limit and negative beyond it; `share_si` is what 100 % of it is, and
+    `percent_of` names that.
     """
 
     check: str
     severity: Severity
-    sentence: str
+    words: Words = field(compare=False, repr=False)
     unit: str = ""
-    si_unit: str = ""
     demanded_si: float | None = None
     limit_si: float | None = None
     margin_si: float | None = None
-    demanded: float | None = None
-    limit: float | None = None
-    margin: float | None = None
-    margin_percent: float | None = None
+    share_si: float | None = None
     percent_of: str = ""
-    demanded_source: str = ""
-    limit_source: str = ""
-    arithmetic: str = ""
     missing: tuple[str, ...] = ()
     advice: str = ""
 
@@ -83,6 +108,51 @@ class Finding:
     def unit_label(self) -> str:
         """Label of the unit of demand, limit and margin; empty where the check compares no numbers."""
         return label(self.unit) if self.unit else ""
+
+    @property
+    def si_unit(self) -> str:
+        """Key of the SI unit of the numbers; empty where the check compares none."""
+        return SI_UNIT[kind_of(self.unit)] if self.unit else ""
+
+    @property
+    def demanded(self) -> float | None:
+        """The demand in the user's unit."""
+        return None if self.demanded_si is None else from_si(self.demanded_si, self.unit)
+
+    @property
+    def limit(self) -> float | None:
+        """The limit in the user's unit."""
+        return None if self.limit_si is None else from_si(self.limit_si, self.unit)
+
+    @property
+    def margin(self) -> float | None:
+        """The margin in the user's unit."""
+        return None if self.margin_si is None else difference_from_si(self.margin_si, self.unit)
+
+    @property
+    def margin_percent(self) -> float | None:
+        """The margin as a percentage of what `percent_of` names."""
+        return None if self.margin_si is None or self.share_si is None else self.margin_si / self.share_si * 100.0
+
+    @property
+    def sentence(self) -> str:
+        """The finding as a tradesman would say it."""
+        return self.words.sentence
+
+    @property
+    def arithmetic(self) -> str:
+        """The numbers as a line that can be added again; empty where none are compared."""
+        return self.words.arithmetic
+
+    @property
+    def demanded_source(self) -> str:
+        """Where the demand stands."""
+        return self.words.demanded_source
+
+    @property
+    def limit_source(self) -> str:
+        """Where the limit stands."""
+        return self.words.limit_source
 
 
 def worst(findings: Iterable[Finding]) -> Severity:

@@ -8,6 +8,7 @@ temperature limit. A range that ends on a limit of its head is not narrow.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
+from functools import partial
 from types import MappingProxyType
 
 from register.engineering.comparing import (
@@ -16,11 +17,11 @@ from register.engineering.comparing import (
     Comparison,
     Share,
     Side,
+    Source,
     bracketed,
     cannot,
     in_unit,
     shared_decimals,
-    short_label,
     tidy,
 )
 from register.engineering.demands import (
@@ -33,7 +34,7 @@ from register.engineering.demands import (
     TagInputs,
     TypeLimits,
 )
-from register.engineering.findings import CHECKS, Finding, Severity, worst
+from register.engineering.findings import CHECKS, Finding, Said, Severity, worst
 from register.engineering.loop import DEFAULT_HIGH_FAILURE_CURRENT_MA, available_resistance
 from register.engineering.pressure import Reference
 from register.engineering.ranges import known
@@ -47,7 +48,7 @@ from register.engineering.recorded import (
     restated,
 )
 from register.engineering.static import body_rating_at, lowest_pressure, one_side, static_pressure
-from register.engineering.units import from_si
+from register.engineering.units import from_si, label
 
 __all__ = [
     "HeadLimits",
@@ -61,6 +62,9 @@ __all__ = [
     "check_all",
     "worst",
 ]
+
+
+ONLY_DIFFERENTIAL = "only a differential pressure rises with the square of the flow"
 
 
 def check_all(inputs: TagInputs) -> tuple[Finding, ...]:
@@ -110,11 +114,11 @@ def _range_end(check: str, inputs: TagInputs) -> Finding:
     greater = max(bounds, key=lambda name: bounds[name])
     return Comparison(
         check=check,
-        demanded=Side(end_si, end_name, f"{setting.source}: {end_name} {in_unit(end_si, setting.unit)}"),
+        demanded=Side(end_si, end_name, Source(setting.source, end_name, end_si, setting.unit)),
         limit=Side(
             limit,
             f"the head's {'upper' if upward else 'lower'} limit",
-            f"{head.source}: {limit_name} {in_unit(limit_si, head.unit)} {head.reference}",
+            Source(head.source, limit_name, limit_si, head.unit, f" {head.reference}"),
         ),
         unit=setting.unit,
         must_stay_below=upward,
@@ -126,7 +130,7 @@ def _range_end(check: str, inputs: TagInputs) -> Finding:
 def _least_span(check: str, inputs: TagInputs) -> Finding:
     head, setting = head_and_range(inputs)
     (least,) = recorded(("the head's least span", head.least_span_si))
-    limit = Side(least, "the head's least span", f"{head.source}: least span {in_unit(least, head.unit)}")
+    limit = Side(least, "the head's least span", Source(head.source, "least span", least, head.unit))
     return _span(check, setting, limit, must_stay_below=False, narrow=NARROW_SHARE * least)
 
 
@@ -137,58 +141,48 @@ def _greatest_span(check: str, inputs: TagInputs) -> Finding:
         said = "URL − LRL"
         lower, upper = recorded(("the head's LRL", head.lrl_si), ("the head's URL", head.url_si))
         greatest = upper - lower
-    source = f"{head.source}: {said} {in_unit(greatest, head.unit)}"
+    source = Source(head.source, said, greatest, head.unit)
     limit = Side(greatest, "the head's greatest span", source)
     return _span(check, setting, limit, must_stay_below=True, narrow=0.0)
 
 
 def _span(check: str, setting: RangeSetting, limit: Side, *, must_stay_below: bool, narrow: float) -> Finding:
     magnitude = abs(setting.urv_si - setting.lrv_si)
-    shown = [from_si(si, setting.unit) for si in (setting.urv_si, setting.lrv_si, magnitude)]
-    decimals = shared_decimals(*shown)
-    urv, lrv, said = (tidy(value, decimals) for value in shown)
     return Comparison(
         check=check,
-        demanded=Side(magnitude, "Span", f"{setting.source}: |URV − LRV| = {in_unit(magnitude, setting.unit)}"),
+        demanded=Side(magnitude, "Span", Source(setting.source, "span", magnitude, setting.unit)),
         limit=limit,
         unit=setting.unit,
         must_stay_below=must_stay_below,
         share=Share(limit.si, limit.name),
         narrow=narrow,
-        working=(f"|{urv} − {bracketed(lrv)}| = {said}",),
+        working=(partial(_span_said, setting),),
     ).finding()
+
+
+def _span_said(setting: RangeSetting) -> str:
+    ends = setting.urv_si, setting.lrv_si
+    shown = [from_si(si, setting.unit) for si in (*ends, abs(ends[0] - ends[1]))]
+    decimals = shared_decimals(*shown)
+    urv, lrv, magnitude = (tidy(value, decimals) for value in shown)
+    return f"|{urv} − {bracketed(lrv)}| = {magnitude}"
 
 
 def _square_root(check: str, inputs: TagInputs) -> Finding:
     setting = range_in_force(inputs)
     source = f"{setting.source}: transfer {setting.transfer}, {setting.reference}"
     if setting.transfer != SQUARE_ROOT:
-        return Finding(
-            check,
-            Severity.CLEAR,
-            f"The transfer is {setting.transfer}; no square root is taken here.",
-            demanded_source=source,
-        )
+        said = Said(f"The transfer is {setting.transfer}; no square root is taken here.", source)
+        return Finding(check, Severity.CLEAR, said)
     if setting.reference != Reference.DIFFERENTIAL:
-        return Finding(
-            check,
-            Severity.VIOLATION,
-            f"Square root is set on a range of {setting.reference} pressure: only a differential pressure rises with "
-            "the square of the flow.",
-            demanded_source=source,
-        )
+        said = Said(f"Square root is set on a range of {setting.reference} pressure: {ONLY_DIFFERENTIAL}.", source)
+        return Finding(check, Severity.VIOLATION, said)
     head = fitted_head(inputs)
-    differential = head.reference == Reference.DIFFERENTIAL
-    return Finding(
-        check,
-        Severity.CLEAR if differential else Severity.VIOLATION,
-        "Square root is set on a differential pressure."
-        if differential
-        else f"Square root is set on a head that measures {head.reference} pressure: only a differential pressure "
-        "rises with the square of the flow.",
-        demanded_source=source,
-        limit_source=f"{head.source}: measures {head.reference} pressure",
-    )
+    head_source = f"{head.source}: measures {head.reference} pressure"
+    if head.reference != Reference.DIFFERENTIAL:
+        sentence = f"Square root is set on a head that measures {head.reference} pressure: {ONLY_DIFFERENTIAL}."
+        return Finding(check, Severity.VIOLATION, Said(sentence, source, head_source))
+    return Finding(check, Severity.CLEAR, Said("Square root is set on a differential pressure.", source, head_source))
 
 
 def _square_root_place(check: str, inputs: TagInputs) -> Finding:
@@ -196,15 +190,13 @@ def _square_root_place(check: str, inputs: TagInputs) -> Finding:
     place = setting.root_extraction
     if not place:
         raise LackingError(("where the square root is taken",))
-    rooted = setting.transfer == SQUARE_ROOT
-    severity, sentence = _PLACES[rooted, place]
-    return Finding(
-        check,
-        severity,
+    severity, sentence = _PLACES[setting.transfer == SQUARE_ROOT, place]
+    said = Said(
         sentence,
-        demanded_source=f"{setting.source}: transfer {setting.transfer}",
-        limit_source=f"{inputs.process.source}: square root taken: {place}",
+        f"{setting.source}: transfer {setting.transfer}",
+        f"{inputs.process.source}: square root taken: {place}",
     )
+    return Finding(check, severity, said)
 
 
 _PLACES: Mapping[tuple[bool, str], tuple[Severity, str]] = MappingProxyType(
@@ -246,10 +238,8 @@ def _temperature(check: str, inputs: TagInputs) -> Finding:
     width = high - low if low is not None and high is not None else 0.0
     return Comparison(
         check=check,
-        demanded=Side(demanded, what.capitalize(), f"{source}: {what} {in_unit(demanded, unit)}"),
-        limit=Side(
-            limit, "the type's limit", f"{type_limits.source}: {what} {in_unit(limit, type_limits.temperature_unit)}"
-        ),
+        demanded=Side(demanded, what.capitalize(), Source(source, what, demanded, unit)),
+        limit=Side(limit, "the type's limit", Source(type_limits.source, what, limit, type_limits.temperature_unit)),
         unit=unit,
         must_stay_below=upward,
         share=Share(width, f"the width of the type's {kind} limits"),
@@ -261,7 +251,7 @@ def _tracing(check: str, inputs: TagInputs) -> Finding:
     process = inputs.process
     demanded = process.tracing_temperature_k
     if demanded is None and not process.traced:
-        return Finding(check, Severity.CLEAR, "No heat tracing is recorded at the tag.", demanded_source=process.source)
+        return Finding(check, Severity.CLEAR, Said("No heat tracing is recorded at the tag.", process.source))
     type_limits = fitted_type(inputs)
     stated, low = type_limits.capsule_max_k, type_limits.process_min_k
     temperature, limit = recorded(
@@ -274,12 +264,12 @@ def _tracing(check: str, inputs: TagInputs) -> Finding:
         demanded=Side(
             temperature,
             "Heat tracing of",
-            f"{process.source}: heat tracing {in_unit(temperature, process.temperature_unit)}",
+            Source(process.source, "heat tracing", temperature, process.temperature_unit),
         ),
         limit=Side(
             limit,
             "the capsule's limit",
-            f"{type_limits.source}: {limit_what} {in_unit(limit, type_limits.temperature_unit)}",
+            Source(type_limits.source, limit_what, limit, type_limits.temperature_unit),
         ),
         unit=process.temperature_unit,
         must_stay_below=True,
@@ -296,11 +286,11 @@ def _supply_voltage(check: str, inputs: TagInputs) -> Finding:
     )
     return Comparison(
         check=check,
-        demanded=Side(supply, "Supply", f"{inputs.loop.source}: loop supply {in_unit(supply, 'V')}"),
+        demanded=Side(supply, "Supply", Source(inputs.loop.source, "loop supply", supply, "V")),
         limit=Side(
             least,
             "the transmitter's lift-off voltage",
-            f"{type_limits.source}: least supply voltage {in_unit(least, 'V')}",
+            Source(type_limits.source, "least supply voltage", least, "V"),
         ),
         unit="V",
         must_stay_below=False,
@@ -320,31 +310,29 @@ def _loop_resistance(check: str, inputs: TagInputs) -> Finding:
     available = known(available_resistance(supply, least, current))
     if available is None:
         raise LackingError(("a high failure current above zero",))
-    volts, lift_off, milliamps = in_unit(supply, "V"), in_unit(least, "V"), in_unit(current / 1e3, "mA")
-    sum_ = " ".join(
-        (
-            f"({volts.removesuffix(' V')} − {lift_off.removesuffix(' V')})",
-            f"/ ({milliamps.removesuffix(' mA')} / 1000) = {in_unit(available, 'ohm')}",
-        )
-    )
-    assumed = " taken as usual" if stated is None else ""
+    milliamps = in_unit(current / 1e3, "mA")
+    taken = ", the usual high failure current" if stated is None else ", its high failure current"
     return Comparison(
         check=check,
-        demanded=Side(
-            resistance, "Loop resistance", f"{inputs.loop.source}: loop resistance {in_unit(resistance, 'ohm')}"
-        ),
+        demanded=Side(resistance, "Loop resistance", Source(inputs.loop.source, "loop resistance", resistance, "ohm")),
         limit=Side(
             available,
             "the limit",
-            f"{type_limits.source}: lift-off {lift_off}, high failure current {milliamps}{assumed}; supply {volts}",
-            f" {short_label('ohm')} that {volts} can drive at {milliamps}",
+            Source(type_limits.source, f"at {milliamps}{taken}, the supply can drive", available, "ohm"),
+            f" {label('ohm')} that {in_unit(supply, 'V')} can drive at {milliamps}",
         ),
         unit="ohm",
         must_stay_below=True,
         share=Share(available, "what the supply can drive"),
         narrow=NARROW_SHARE * max(available, 0.0),
-        working=(sum_,),
+        working=(partial(_drivable, supply, least, current, available),),
     ).finding()
+
+
+def _drivable(supply_v: float, least_v: float, greatest_ma: float, available_ohm: float) -> str:
+    supply, least = (in_unit(volts, "V").removesuffix(" V") for volts in (supply_v, least_v))
+    current = in_unit(greatest_ma / 1e3, "mA").removesuffix(" mA")
+    return f"({supply} − {least}) / ({current} / 1000) = {in_unit(available_ohm, 'ohm')}"
 
 
 _CHECK_OF: Mapping[str, Callable[[str, TagInputs], Finding]] = MappingProxyType(

@@ -6,13 +6,17 @@ nowhere else: it is never extrapolated.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Sequence
+from functools import lru_cache
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike
 
 from register.engineering.broadcasting import numbers, plain
+from register.engineering.margins import ON_THE_LIMIT
 from register.engineering.typed import NumberError, parse_number
 from register.engineering.units import to_si
 
@@ -45,12 +49,17 @@ def rating_table(pairs: Iterable[Sequence[str]], temperature_unit: str, pressure
     UnitError
         A unit is unknown.
     """
+    return _read(tuple(tuple(map(str, pair)) for pair in pairs), temperature_unit, pressure_unit)
+
+
+@lru_cache(maxsize=1024)
+def _read(pairs: tuple[tuple[str, ...], ...], temperature_unit: str, pressure_unit: str) -> Table:
     table: list[tuple[float, float]] = []
     for line, pair in enumerate(pairs, start=1):
         if len(pair) != 2:
             raise RatingError(f"Line {line} of the body rating needs a temperature and a pressure.")
         try:
-            temperature, pressure = (parse_number(str(text)) for text in pair)
+            temperature, pressure = (parse_number(text) for text in pair)
         except NumberError as error:
             raise RatingError(f"Line {line} of the body rating: {error}") from None
         if pressure <= 0:
@@ -80,6 +89,8 @@ def rating_at(temperature_k: ArrayLike | None, table: Table) -> Any:
     float or array
         Gauge pressure [Pa], linear between listed temperatures; nan outside them and for an empty table.
     """
+    if type(temperature_k) is float:
+        return _one_rating(temperature_k, table)
     (temperature,) = numbers(temperature_k)
     if not table:
         return plain(np.full_like(temperature, np.nan))
@@ -90,14 +101,23 @@ def rating_at(temperature_k: ArrayLike | None, table: Table) -> Any:
 
 def least_rating(min_k: ArrayLike | None, max_k: ArrayLike | None, table: Table) -> Any:
     """Give the lowest rating anywhere between two temperatures [K]; nan where a part lies outside the table."""
-    low, high = np.broadcast_arrays(*numbers(min_k, max_k))
-    least = np.minimum(rating_at(low, table), rating_at(high, table))
-    for listed, pressure in table:
-        least = np.where((low < listed) & (listed < high), np.minimum(least, pressure), least)
-    return plain(np.asarray(least))
+    ratings = [rating_at(min_k, table), rating_at(max_k, table)]
+    low, high = numbers(min_k, max_k)
+    ratings += [np.where((low < listed) & (listed < high), pressure, np.inf) for listed, pressure in table]
+    return plain(np.minimum.reduce(np.broadcast_arrays(*ratings)))
+
+
+def _one_rating(temperature: float, table: Table) -> float:
+    """Interpolate for one temperature; numpy takes ten times as long for a single number."""
+    for (low_k, low_pa), (high_k, high_pa) in pairwise((*table, *table[-1:])):
+        if abs(temperature - low_k) <= ON_THE_LIMIT * low_k:
+            return low_pa
+        if low_k < temperature < high_k - ON_THE_LIMIT * high_k:
+            return low_pa + (high_pa - low_pa) * (temperature - low_k) / (high_k - low_k)
+    return math.nan
 
 
 def _onto(temperature: Any, listed: Any) -> Any:
     """Put a temperature that misses a listed one by rounding alone (100 °C against 212 °F) onto it."""
     nearest = listed[np.abs(temperature[..., np.newaxis] - listed).argmin(axis=-1)]
-    return np.where(np.abs(temperature - nearest) <= 1e-9 * nearest, nearest, temperature)
+    return np.where(np.abs(temperature - nearest) <= ON_THE_LIMIT * nearest, nearest, temperature)

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from functools import partial
+
 from register.engineering.comparing import shared_decimals, short_label, tidy
 from register.engineering.demands import HeadLimits, RangeSetting, TagInputs, TypeLimits
 from register.engineering.pressure import BarometricMissingError, PressureReferenceError, Reference, restate
@@ -63,7 +66,7 @@ def head_and_range(inputs: TagInputs) -> tuple[HeadLimits, RangeSetting]:
 
 def restated(
     name: str, pressure_pa: float, reference: str, wanted: str, barometric_pa: float | None, unit: str
-) -> tuple[float, tuple[str, ...]]:
+) -> tuple[float, tuple[Callable[[], str], ...]]:
     """Bring a pressure to another reference and show the sum.
 
     Parameters
@@ -80,7 +83,7 @@ def restated(
     Returns
     -------
     tuple
-        Pressure [Pa] against `wanted`; the lines of arithmetic, none where nothing had to be done.
+        Pressure [Pa] against `wanted`; what says the sum, nothing where nothing had to be done.
 
     Raises
     ------
@@ -103,8 +106,12 @@ def restated(
         ) from None
     if reference == wanted or barometric_pa is None:
         return found, ()
-    shown = [from_si(si, unit) for si in (pressure_pa, barometric_pa, found)]
+    return found, (partial(_sum, name, (pressure_pa, barometric_pa, found), wanted, unit),)
+
+
+def _sum(name: str, pressures_pa: tuple[float, float, float], wanted: str, unit: str) -> str:
+    shown = [from_si(si, unit) for si in pressures_pa]
     decimals = shared_decimals(*shown)
     first, barometric, result = (tidy(value, decimals) for value in shown)
     sign = "+" if wanted == Reference.ABSOLUTE else "−"
-    return found, (f"{name}: {first} {sign} {barometric} = {result} {short_label(unit)} {wanted}",)
+    return f"{name}: {first} {sign} {barometric} = {result} {short_label(unit)} {wanted}"

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+from functools import partial
 from itertools import pairwise
 
 from register.engineering.comparing import (
@@ -9,6 +11,7 @@ from register.engineering.comparing import (
     Comparison,
     Share,
     Side,
+    Source,
     bracketed,
     in_unit,
     shared_decimals,
@@ -18,7 +21,7 @@ from register.engineering.demands import Process, TagInputs, TypeLimits
 from register.engineering.findings import Finding
 from register.engineering.pressure import Reference
 from register.engineering.ranges import known
-from register.engineering.rating import Table, least_rating, rating_at
+from register.engineering.rating import Table, rating_at
 from register.engineering.recorded import LackingError, fitted_type, recorded, restated
 from register.engineering.units import from_si, label
 
@@ -29,7 +32,7 @@ def body_rating_at(type_limits: TypeLimits | None, process: Process) -> float | 
     """Give the lowest body rating [Pa gauge] over the temperatures of the process; None where it is not known."""
     if type_limits is None or process.process_max_k is None:
         return None
-    return known(least_rating(_coldest(process), process.process_max_k, type_limits.body_rating))
+    return known(_weakest(process, process.process_max_k, type_limits.body_rating)[0])
 
 
 def static_pressure(check: str, inputs: TagInputs) -> Finding:
@@ -40,8 +43,8 @@ def static_pressure(check: str, inputs: TagInputs) -> Finding:
     table = type_limits.body_rating
     if not table:
         raise LackingError(("the body rating of the type",))
-    rating = body_rating_at(type_limits, process)
-    if rating is None:
+    rating, worst_at = _weakest(process, hottest, table)
+    if math.isnan(rating):
         raise _unrated(type_limits, process, hottest)
     demanded, sums = restated(
         f"the {name}",
@@ -51,7 +54,6 @@ def static_pressure(check: str, inputs: TagInputs) -> Finding:
         inputs.surroundings.barometric_pa,
         process.pressure_unit,
     )
-    worst_at = _worst_temperature(process, hottest, table)
     at = in_unit(worst_at, process.temperature_unit)
     return Comparison(
         check=check,
@@ -59,14 +61,14 @@ def static_pressure(check: str, inputs: TagInputs) -> Finding:
         limit=Side(
             rating,
             "the body rating",
-            f"{type_limits.source}: body rating at {at} {in_unit(rating, type_limits.pressure_unit)} gauge",
+            Source(type_limits.source, f"body rating at {at}", rating, type_limits.pressure_unit, " gauge"),
             f" at {at}",
         ),
         unit=process.pressure_unit,
         must_stay_below=True,
         share=Share(rating, "the body rating at the process temperature"),
         narrow=NARROW_SHARE * rating,
-        working=(*sums, _interpolation(worst_at, table, process)),
+        working=(*sums, partial(_interpolation, worst_at, table, process)),
     ).finding()
 
 
@@ -92,13 +94,13 @@ def one_side(check: str, inputs: TagInputs) -> Finding:
         demanded=Side(
             demanded,
             "Pressure on one side",
-            f"{_pressure_source(process, behind, pressure)}{vented}",
+            _pressure_source(process, behind, pressure, vented),
             f"{' gauge' if sums else ''}{note}",
         ),
         limit=Side(
             limit,
             "the one-side limit",
-            f"{type_limits.source}: one-side limit {in_unit(limit, type_limits.pressure_unit)} gauge",
+            Source(type_limits.source, "one-side limit", limit, type_limits.pressure_unit, " gauge"),
         ),
         unit=process.pressure_unit,
         must_stay_below=True,
@@ -130,7 +132,7 @@ def lowest_pressure(check: str, inputs: TagInputs) -> Finding:
         limit=Side(
             limit,
             "the vacuum limit",
-            f"{type_limits.source}: lowest pressure {in_unit(limit, type_limits.pressure_unit)} absolute",
+            Source(type_limits.source, "lowest pressure", limit, type_limits.pressure_unit, " absolute"),
         ),
         unit=process.pressure_unit,
         must_stay_below=False,
@@ -155,19 +157,16 @@ def _static(process: Process) -> tuple[float, str]:
     return max(known_ones, key=lambda one: one[0])
 
 
-def _pressure_source(process: Process, name: str, pressure: float) -> str:
-    return f"{process.source}: {name} {in_unit(pressure, process.pressure_unit)} {process.reference}"
+def _pressure_source(process: Process, name: str, pressure: float, remark: str = "") -> Source:
+    return Source(process.source, name, pressure, process.pressure_unit, f" {process.reference}{remark}")
 
 
-def _coldest(process: Process) -> float | None:
-    return process.process_max_k if process.process_min_k is None else process.process_min_k
-
-
-def _worst_temperature(process: Process, hottest: float, table: Table) -> float:
-    coldest = _coldest(process)
-    between = [listed for listed, _ in table if coldest is not None and coldest < listed < hottest]
-    candidates = [hottest, *between, hottest if coldest is None else coldest]
-    return min(candidates, key=lambda temperature: float(rating_at(temperature, table)))
+def _weakest(process: Process, hottest: float, table: Table) -> tuple[float, float]:
+    """Give the lowest rating from the coldest to the hottest process, and its temperature; nan outside the table."""
+    coldest = hottest if process.process_min_k is None else process.process_min_k
+    temperatures = [hottest, coldest, *(listed for listed, _ in table if coldest < listed < hottest)]
+    ratings = [(float(rating_at(float(temperature), table)), temperature) for temperature in temperatures]
+    return min(ratings, key=lambda one: (not math.isnan(one[0]), one[0]))
 
 
 def _unrated(type_limits: TypeLimits, process: Process, hottest: float) -> LackingError:

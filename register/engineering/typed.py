@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 import re
 from decimal import ROUND_HALF_UP, Decimal
+from functools import cache
 
 MINUS = "\N{MINUS SIGN}"
 
@@ -83,7 +84,7 @@ def format_number(value: float, decimals: int, *, signed: bool = False) -> str:
     Halves of the last digit go away from zero (ISO 80000-1 Annex B, rule B; clause from memory), judged on the
     shortest decimal form of the float: 2.675 gives 2.68, as a reader of "2.675" expects.
     """
-    rounded = Decimal(repr(float(value))).quantize(Decimal(1).scaleb(-decimals), rounding=ROUND_HALF_UP)
+    rounded = Decimal(repr(float(value))).quantize(_step(decimals), rounding=ROUND_HALF_UP)
     sign = MINUS if rounded < 0 else "+" if signed and rounded > 0 else ""
     return f"{sign}{abs(rounded):f}"
 
@@ -94,7 +95,7 @@ def format_significant(value: float, digits: int = 6) -> str:
     if not number:
         return "0"
     decimals = digits - 1 - number.adjusted()
-    rounded = number.quantize(Decimal(1).scaleb(-decimals), rounding=ROUND_HALF_UP)
+    rounded = number.quantize(_step(decimals), rounding=ROUND_HALF_UP)
     return _bare(rounded).replace("-", MINUS)
 
 
@@ -112,6 +113,11 @@ def shortest(value: float) -> str:
     if isinstance(value, bool) or not math.isfinite(value):
         raise NumberError(f"“{value}” is not a number.")
     return _bare(Decimal(f"{value:.15g}")) if value else "0"
+
+
+@cache
+def _step(decimals: int) -> Decimal:
+    return Decimal(1).scaleb(-decimals)
 
 
 def _bare(number: Decimal) -> str:
