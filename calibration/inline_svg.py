@@ -25,7 +25,7 @@ ROLES = {
     "#8d8a7f": "rule",
     "#fcfbf7": "paper",
     "#b8290d": "outside",
-    "#c98a12": "near",
+    "#b97d0c": "near",
     "#0a5566": "action",
 }
 COLOURS = {role: value for value, role in ROLES.items()}
