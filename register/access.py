@@ -13,8 +13,8 @@ from typing import Any, Final, TypeVar
 from django.contrib.auth.views import redirect_to_login
 from django.core.exceptions import PermissionDenied
 from django.db import models
-from django.http import Http404, HttpRequest, HttpResponse
-from django.shortcuts import get_object_or_404
+from django.http import Http404, HttpRequest, HttpResponse, JsonResponse
+from django.shortcuts import get_object_or_404, redirect, resolve_url
 
 from register.models import Area, Flag, Membership, Plant, Role, Tag, Transmitter, User
 
@@ -40,6 +40,9 @@ PERMISSIONS: Final[dict[str, frozenset[str]]] = {
 }
 #: Besides roles: "public" (anyone, signed in or not) and "signed in" (any active person).
 OPEN: Final = frozenset({"public", "signed in"})
+
+#: Pages of somebody whose password was given to him by another: nothing may be done or signed with it.
+WITH_TEMPORARY_PASSWORD: Final = frozenset({"password", "sign-out"})
 
 View = Callable[..., HttpResponse]
 V = TypeVar("V", bound=View)
@@ -83,10 +86,35 @@ class PermissionMiddleware:
         if permission == "public":
             return None
         if not request.user.is_authenticated:
-            return redirect_to_login(request.get_full_path())
+            return to_sign_in(request)
+        if request.session.get("password_is_temporary") and view_name(request) not in WITH_TEMPORARY_PASSWORD:
+            return redirect("password")
         if permission == "signed in" or may_anywhere(request.user, permission):
             return None
         raise PermissionDenied(f"None of your roles lets you {permission}.")
+
+
+def to_sign_in(request: HttpRequest) -> HttpResponse:
+    """Send a person who is not signed in to the door, without losing what he typed.
+
+    A page is redirected. A script that sends what was typed gets 401 and keeps it; one that only reads a
+    fragment is told to load the door as a page.
+    """
+    if not request.accepts("text/html"):
+        return JsonResponse({"error": "signed out", "sign_in": resolve_url("sign-in")}, status=401)
+    htmx = getattr(request, "htmx", None)
+    if not htmx:
+        return redirect_to_login(request.get_full_path())
+    if request.method != "GET":
+        return HttpResponse("Signed out: sign in again in another window. What is typed here stays.", status=401)
+    response = HttpResponse(status=401)
+    response["HX-Redirect"] = redirect_to_login(htmx.current_url_abs_path or "/").url
+    return response
+
+
+def view_name(request: HttpRequest) -> str:
+    """Name of the url that was asked for; empty where it has none."""
+    return (request.resolver_match.url_name if request.resolver_match else "") or ""
 
 
 def roles(user: User) -> dict[int, set[str]]:
@@ -118,7 +146,7 @@ def plants(user: User, permission: str = READ) -> models.QuerySet[Plant]:
 
 def in_plant(request: HttpRequest, plant_id: int, permission: str) -> None:
     """Let pass, or answer 404 where nothing may be seen and 403 where it may be read only."""
-    user = _person(request)
+    user = person(request)
     if not may(user, READ, plant_id):
         raise Http404
     if not may(user, permission, plant_id):
@@ -137,9 +165,7 @@ def get_tag(request: HttpRequest, pk: int, permission: str = READ) -> Tag:
 
 
 def get_transmitter(request: HttpRequest, pk: int, permission: str = READ) -> Transmitter:
-    return get(
-        request, Transmitter.objects.select_related("plant", "maker", "type", "head"), permission, pk=pk
-    )
+    return get(request, Transmitter.objects.select_related("plant", "maker", "type", "head"), permission, pk=pk)
 
 
 def get_area(request: HttpRequest, pk: int, permission: str = READ) -> Area:
@@ -158,6 +184,19 @@ def get_plant(request: HttpRequest, code: str, permission: str = READ) -> Plant:
     return plant
 
 
+def get_person(request: HttpRequest, pk: int) -> User:
+    """A person whom the asking administrator can see: of one of his plants, or without any role; else 404."""
+    mine = plants(person(request), "manage people")
+    found = User.objects.filter(models.Q(memberships__plant__in=mine) | models.Q(memberships=None))
+    return get_object_or_404(found.distinct(), pk=pk)
+
+
+def governs(user: User, person: User) -> bool:
+    """Whether a user administers every plant in which a person has a role, and so may act on the person himself."""
+    mine = {plant_id for plant_id, held in roles(user).items() if PERMISSIONS["manage people"] & held}
+    return bool(mine) and set(roles(person)) <= mine
+
+
 def readable_plants(user: User) -> list[Plant]:
     """Plants in which a person has any role, by name; read once per request."""
     cached: list[Plant] | None = getattr(user, "_readable_plants", None)
@@ -169,7 +208,7 @@ def readable_plants(user: User) -> list[Plant]:
 
 def shown_plant(request: HttpRequest) -> Plant | None:
     """The plant named by `?plant=CODE`, else the one last chosen, else the first by name; None without any role."""
-    available = readable_plants(_person(request))
+    available = readable_plants(person(request))
     wanted = request.GET.get("plant") or request.COOKIES.get("plant", "")
     return next((plant for plant in available if plant.code == wanted), available[0] if available else None)
 
@@ -184,7 +223,18 @@ def chosen_plant(request: HttpRequest) -> Plant:
     return plant
 
 
-def _person(request: HttpRequest) -> User:
+def person(request: HttpRequest) -> User:
+    """Who asks."""
     if not isinstance(request.user, User):
         raise PermissionDenied("Sign in first.")
     return request.user
+
+
+def allowed(request: HttpRequest, plant_id: int, permission: str) -> bool:
+    """Whether the person may do so in a plant; for links that are shown to those only who can follow them."""
+    return may(person(request), permission, plant_id)
+
+
+def readable_ids(request: HttpRequest) -> list[int]:
+    """Ids of the plants in which the person has any role."""
+    return [plant_id for plant_id, held in roles(person(request)).items() if PERMISSIONS[READ] & held]

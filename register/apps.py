@@ -7,6 +7,7 @@ class RegisterConfig(AppConfig):
     verbose_name = "Register"
 
     def ready(self) -> None:
-        from register import checks, guards  # noqa: F401 - checks register themselves
+        from register import checks, entering, guards  # noqa: F401 - checks register themselves
 
+        entering.watch()
         post_migrate.connect(guards.install_after_migrate, dispatch_uid="register.guards")

@@ -6,13 +6,16 @@ import datetime
 import uuid
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
-from typing import Any
+from typing import Any, Final
 
 from django.db import models
 from django.http import HttpRequest
 from django.utils import timezone
 
 from register.models import AuditEntry, Plant, User
+
+#: Things that belong to something else than a tag, a transmitter or a standard.
+BELONGS_TO: Final[Mapping[str, tuple[str, ...]]] = {"measuringhead": ("type",)}
 
 
 @dataclass(frozen=True, slots=True)
@@ -25,7 +28,7 @@ class Actor:
     @classmethod
     def of(cls, request: HttpRequest) -> Actor:
         person = request.user if isinstance(request.user, User) else None
-        return cls(person=person, remote_address=request.META.get("REMOTE_ADDR", ""))
+        return cls(person=person, remote_address=request.META.get("REMOTE_ADDR", "")[:60])
 
 
 @dataclass(slots=True)
@@ -85,8 +88,8 @@ class Act:
                 remote_address=self.by.remote_address,
                 plant_id=plant.pk if isinstance(plant, Plant) else plant,
                 thing_type=thing._meta.label_lower,
-                thing_id=str(thing.pk),
-                thing_label=str(thing)[:200],
+                thing_id="" if thing.pk is None else str(thing.pk),
+                thing_label=label(thing)[:200],
                 field=name,
                 before=as_text(before),
                 after=as_text(after),
@@ -98,6 +101,16 @@ class Act:
 def snapshot(thing: models.Model, names: Iterable[str]) -> dict[str, Any]:
     """Values of the named fields, for `Act.changed`; foreign keys are shown by what they name."""
     return {name: _shown(getattr(thing, name)) for name in names}
+
+
+def label(thing: models.Model) -> str:
+    """What the trail calls a thing; one that belongs to another is called by that first, so that it is found there."""
+    words = str(thing)
+    for name in BELONGS_TO.get(thing._meta.model_name or "", ("tag", "transmitter", "standard")):
+        place = getattr(thing, name, None)
+        if place is not None and str(place) not in words:
+            return f"{place}: {words}"
+    return words
 
 
 def as_text(value: Any) -> str:

@@ -67,7 +67,10 @@ TEMPLATES = [
                     [
                         (
                             "django.template.loaders.cached.Loader",
-                            ["django.template.loaders.filesystem.Loader", "django.template.loaders.app_directories.Loader"],
+                            [
+                                "django.template.loaders.filesystem.Loader",
+                                "django.template.loaders.app_directories.Loader",
+                            ],
                         )
                     ],
                 )
@@ -103,6 +106,7 @@ AXES_LOCKOUT_PARAMETERS = [["username", "ip_address"]]
 AXES_RESET_ON_SUCCESS = True
 AXES_LOCKOUT_TEMPLATE = "register/locked_out.html"
 AXES_VERBOSE = False
+AXES_RESET_COOL_OFF_ON_FAILURE_DURING_LOCKOUT = False
 AXES_SENSITIVE_PARAMETERS = ["password", "old_password", "new_password1", "new_password2", "code"]
 
 #: Functions called with the ids of the tags that a register act touched, in its transaction.
@@ -163,7 +167,8 @@ LOGGING = {
     "root": {"handlers": ["stderr"], "level": "WARNING"},
     "loggers": {
         "django": {"handlers": ["stderr"], "level": "WARNING", "propagate": False},
-        "axes": {"handlers": ["stderr"], "level": "WARNING", "propagate": False},
+        # Its warnings hold sign-in names as typed, which may be passwords; the audit trail tells of failures.
+        "axes": {"handlers": ["stderr"], "level": "ERROR", "propagate": False},
         "register": {"handlers": ["stderr"], "level": LOG_LEVEL, "propagate": False},
         "calibration": {"handlers": ["stderr"], "level": LOG_LEVEL, "propagate": False},
     },

@@ -71,6 +71,7 @@ SENTENCES: Final[dict[str, tuple[str, str]]] = {
 UNIQUE: Final[dict[tuple[str, str], str]] = {
     ("plant", "code"): "The code {code} belongs to another plant.",
     ("maker", "name"): "There is already a maker named {name}.",
+    ("user", "username"): "The sign-in name {username} is taken.",
 }
 
 

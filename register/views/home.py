@@ -7,7 +7,7 @@ from django.http import Http404, HttpRequest, HttpResponse, HttpResponseRedirect
 from django.shortcuts import redirect, render
 
 from register import access
-from register.models import Role, User
+from register.models import Role
 from register.views.signing_in import onward
 
 YEAR = 365 * 24 * 3600
@@ -15,9 +15,7 @@ YEAR = 365 * 24 * 3600
 
 def home(request: HttpRequest) -> HttpResponse:
     """Lead each person to where his work begins."""
-    person = request.user
-    assert isinstance(person, User)
-    held = set().union(*access.roles(person).values())
+    held = set().union(*access.roles(access.person(request)).values())
     if not held:
         return render(request, "register/no_role.html")
     if Role.PLANNER in held:
@@ -27,9 +25,7 @@ def home(request: HttpRequest) -> HttpResponse:
 
 def choose_plant(request: HttpRequest, code: str) -> HttpResponse:
     """Keep the plant that lists show in a cookie, and go on; it grants nothing."""
-    person = request.user
-    assert isinstance(person, User)
-    if code not in {plant.code for plant in access.readable_plants(person)}:
+    if code not in {plant.code for plant in access.readable_plants(access.person(request))}:
         raise Http404
     response = HttpResponseRedirect(onward(request))
     response.set_cookie(

@@ -1,0 +1,138 @@
+"""Forms of people, their roles and passwords, and of the first administrator."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from django import forms
+from django.core.exceptions import ValidationError
+
+from register.forms.fields import ReasonField, RegisterForm
+from register.models import Role, User
+from register.models.plant import known_time_zone
+
+PASSWORD = forms.PasswordInput(attrs={"autocomplete": "new-password"})
+
+
+def _roles() -> forms.MultipleChoiceField:
+    return forms.MultipleChoiceField(
+        label="Roles", choices=Role.choices, widget=forms.CheckboxSelectMultiple, required=False
+    )
+
+
+class PersonForm(RegisterForm):
+    """Names and address of a person."""
+
+    username = forms.CharField(
+        label="Sign-in name",
+        max_length=150,
+        validators=User._meta.get_field("username").validators,
+        help_text="Letters, digits and @ . + - _",
+        widget=forms.TextInput(attrs={"autocomplete": "off", "autocapitalize": "none", "spellcheck": "false"}),
+    )
+    printed_name = forms.CharField(
+        label="Printed name", max_length=120, help_text="As it stands beside his signature on a record."
+    )
+    email = forms.EmailField(label="Mail address", required=False)
+    reason = ReasonField()
+
+
+class NewPersonForm(PersonForm):
+    """A new person with roles in one plant and a first password."""
+
+    roles = _roles()
+    password = forms.CharField(
+        label="First password",
+        required=False,
+        strip=False,
+        widget=PASSWORD,
+        help_text="Leave it empty to have one made. Either way it must be changed at the first sign-in.",
+    )
+
+    field_order = ("username", "printed_name", "email", "roles", "password", "reason")
+
+    def clean_roles(self) -> list[str]:
+        roles: list[str] = self.cleaned_data["roles"]
+        if not roles:
+            raise ValidationError("Choose at least one role: without any a person sees nothing.")
+        return roles
+
+
+class JoiningForm(RegisterForm):
+    """Roles in one plant for somebody who signs in already, at another plant."""
+
+    username = forms.CharField(
+        label="Sign-in name",
+        max_length=150,
+        help_text="Exactly as he signs in.",
+        widget=forms.TextInput(attrs={"autocomplete": "off", "autocapitalize": "none", "spellcheck": "false"}),
+    )
+    roles = _roles()
+    reason = ReasonField()
+
+    def clean_username(self) -> User:
+        name = self.cleaned_data["username"]
+        person = User.objects.filter(username=name).first()
+        if person is None:
+            raise ValidationError(f"Nobody signs in as “{name}”. Make a new person instead.")
+        return person
+
+    def clean_roles(self) -> list[str]:
+        roles: list[str] = self.cleaned_data["roles"]
+        if not roles:
+            raise ValidationError("Choose at least one role.")
+        return roles
+
+
+class RolesForm(RegisterForm):
+    """The roles of a person in one plant; none takes him off the plant."""
+
+    roles = _roles()
+    reason = ReasonField()
+
+
+class GivenPasswordForm(RegisterForm):
+    """A new password for somebody else."""
+
+    password = forms.CharField(
+        label="New password",
+        required=False,
+        strip=False,
+        widget=PASSWORD,
+        help_text="Leave it empty to have one made. It must be changed at the next sign-in.",
+    )
+    reason = ReasonField()
+
+
+class ReasonForm(RegisterForm):
+    """Only the reason of an act that needs nothing else."""
+
+    reason = ReasonField()
+
+
+class FirstAdministratorForm(RegisterForm):
+    """The first plant and its administrator."""
+
+    code = forms.CharField(
+        label="One-time code",
+        max_length=40,
+        help_text="Printed where the site was started; `manage.py first_administrator_code` prints it again.",
+        widget=forms.TextInput(attrs={"autocomplete": "off", "spellcheck": "false"}),
+    )
+    plant_code = forms.SlugField(
+        label="Short name of the plant", max_length=20, help_text="Used in addresses and files."
+    )
+    plant_name = forms.CharField(label="Name of the plant", max_length=120)
+    time_zone = forms.CharField(
+        label="Time zone", max_length=60, validators=[known_time_zone], help_text="Such as Europe/Paris."
+    )
+    username = PersonForm.base_fields["username"]
+    printed_name = PersonForm.base_fields["printed_name"]
+    password = forms.CharField(label="Password", strip=False, widget=PASSWORD)
+    again = forms.CharField(label="The password again", strip=False, widget=PASSWORD)
+
+    def clean(self) -> dict[str, Any]:
+        values = super().clean() or self.cleaned_data
+        if "again" in values and values.get("password") not in (None, values["again"]):
+            self.add_error("again", "This is not the password typed above.")
+        return values
