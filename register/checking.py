@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Iterator, Sequence
 from typing import TYPE_CHECKING
 
-from register.models import MeasuringHead, Range, Tag, TransmitterType
+from register.models import MeasuringHead, Range, Tag, Transmitter, TransmitterType
 
 if TYPE_CHECKING:
     from register.engineering.findings import Finding
@@ -37,18 +37,18 @@ def with_inputs(tag_ids: Iterable[int]) -> Iterator[Tag]:
         yield from Tag.objects.filter(pk__in=ids[start : start + CHUNK]).select_related(*RELATED).order_by("pk")
 
 
-def findings(tag: Tag, *, setting: Range | None = None) -> tuple[Finding, ...]:
-    """What every limit check finds at a tag; `setting` stands in for its current range (not stored, as asked)."""
+def findings(tag: Tag, *, setting: Range | None = None, transmitter: Transmitter | None = None) -> tuple[Finding, ...]:
+    """What every limit check finds at a tag; `setting` and `transmitter` stand in for its own, to ask “what if”."""
     from register.engineering.limits import check_all
 
-    return check_all(inputs_of(tag, setting=setting))
+    return check_all(inputs_of(tag, setting=setting, transmitter=transmitter))
 
 
-def inputs_of(tag: Tag, *, setting: Range | None = None) -> TagInputs:
+def inputs_of(tag: Tag, *, setting: Range | None = None, transmitter: Transmitter | None = None) -> TagInputs:
     """The inputs of the limit checks of one tag, from rows already read."""
     from register.engineering.limits import TagInputs
 
-    transmitter = tag.current_fitting.transmitter if tag.current_fitting else None
+    transmitter = transmitter or (tag.current_fitting.transmitter if tag.current_fitting else None)
     chosen = setting or tag.current_range
     return TagInputs(
         process=process_of(tag),

@@ -103,6 +103,8 @@ def edit_type(*, by: Actor, reason: str, type_: TransmitterType, values: Values)
     """Edit a type; every tag at which one of it is fitted is checked again, in all plants."""
     type_ = TransmitterType.objects.select_for_update(of=("self",)).select_related("maker").get(pk=type_.pk)
     _check_rating(values, type_)
+    if values.get("maker", type_.maker) != type_.maker and type_.transmitters.exists():
+        raise ValidationError({"maker": f"Transmitters of this type are registered under {type_.maker} already."})
     act = Act(by, reason)
     changed = _edit(act, type_, values, None)
     settle(act, _fitted(transmitter__type=type_) if changed else [])
@@ -156,10 +158,11 @@ def edit_transmitter(*, by: Actor, reason: str, transmitter: Transmitter, values
 
 @transaction.atomic
 def correct_head(*, by: Actor, reason: str, transmitter: Transmitter, head: MeasuringHead) -> Transmitter:
-    """Correct a head that was entered wrongly: the device had this one all along, so its history goes on."""
+    """Correct a head entered wrongly, with type and maker: the device had it all along, so its history goes on."""
     transmitter = _transmitter(transmitter.pk)
     act = Act(by, reason)
-    if not _edit(act, transmitter, {"head": head}, transmitter.plant, check=lambda: _one_make(transmitter)):
+    values = {"maker": head.type.maker, "type": head.type, "head": head}
+    if not _edit(act, transmitter, values, transmitter.plant):
         raise ValidationError({"head": f"The register has the head {head} already."})
     settle(act, _fitted(transmitter=transmitter))
     return transmitter

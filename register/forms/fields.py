@@ -3,14 +3,27 @@
 from __future__ import annotations
 
 import datetime
-from collections.abc import Mapping
-from typing import Any
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from typing import Any, ClassVar, TypeVar
 
 from django import forms
-from django.core.exceptions import NON_FIELD_ERRORS, ValidationError
+from django.core.exceptions import ValidationError
+from django.http import HttpRequest, QueryDict
 
 from register.engineering.typed import NumberError, parse_number, shortest
 from register.engineering.units import choices
+
+T = TypeVar("T")
+
+
+@dataclass(frozen=True, slots=True)
+class Group:
+    """Fields that belong together, under one heading; `say` is a sentence below it."""
+
+    legend: str
+    fields: list[forms.BoundField]
+    say: str = ""
 
 
 class TypedNumberField(forms.CharField):
@@ -125,8 +138,11 @@ class DateField(forms.DateField):
 class RegisterForm(forms.Form):
     """Base of the site's forms: errors stand beside their field, and what was typed stays in it.
 
-    `decimal_comma` (the plant's habit) is handed to every number field.
+    `decimal_comma` (the plant's habit) is handed to every number field. A long form names its fields in groups:
+    heading, names, and if need be a sentence.
     """
+
+    GROUPS: ClassVar[tuple[tuple[str, tuple[str, ...], str], ...]] = ()
 
     def __init__(self, *args: Any, decimal_comma: bool = False, **kwargs: Any) -> None:
         kwargs.setdefault("label_suffix", "")
@@ -142,16 +158,64 @@ class RegisterForm(forms.Form):
                     "max_length", f"At most {field.max_length} characters fit here; shorten it."
                 )
 
+    def groups(self) -> list[Group]:
+        """The visible fields by group; a field that no group names, such as the reason, is in none."""
+        return [Group(legend, [self[name] for name in names], say) for legend, names, say in self.GROUPS]
+
+    def submit(self, act: Callable[[], T]) -> T | None:
+        """Run an act if what was typed is valid; what it refuses stands in the form, and None comes back."""
+        if not self.is_valid():
+            return None
+        try:
+            return act()
+        except ValidationError as error:
+            self.refuse(error)
+            return None
+
     def refuse(self, error: ValidationError) -> None:
         """Show what an act refused: beside the fields it names, else above the form."""
         if not hasattr(error, "error_dict"):
             self.add_error(None, error)
             return
         for name, errors in error.error_dict.items():
-            known = name in self.fields and name != NON_FIELD_ERRORS
+            known = name in self.fields and not self.fields[name].widget.is_hidden
             for one in errors:
                 self.add_error(name if known else None, one)
+
+    @property
+    def why(self) -> str:
+        """The reason typed into a valid form."""
+        return str(self.cleaned_data["reason"])
 
     def values(self, *left_out: str) -> Mapping[str, Any]:
         """Cleaned values by field name, for an act; without the named ones and without `reason`."""
         return {name: value for name, value in self.cleaned_data.items() if name not in {"reason", *left_out}}
+
+
+class ChangeForm(RegisterForm):
+    """Base of forms that change a thing: a reason, and a look at what others changed since the page was opened."""
+
+    seen = forms.IntegerField(widget=forms.HiddenInput, required=False)
+    reason = ReasonField()
+
+    def __init__(self, *args: Any, changes: Callable[[int], list[str]], latest: int, **kwargs: Any) -> None:
+        """`changes` says what was changed after an entry of the trail, `latest` is the newest entry now."""
+        self.changes = changes
+        self.latest = latest
+        kwargs["initial"] = {**(kwargs.get("initial") or {}), "seen": latest}
+        super().__init__(*args, **kwargs)
+
+    def clean(self) -> dict[str, Any]:
+        cleaned: dict[str, Any] = super().clean() or self.cleaned_data
+        seen = cleaned.pop("seen", None)
+        if seen is not None and seen < self.latest:
+            for sentence in self.changes(seen):
+                self.add_error(None, sentence)
+            # Told once: who saves again has read it.
+            self.data = dict(self.data.items()) | {self.add_prefix("seen"): str(self.latest)}
+        return cleaned
+
+
+def typed(request: HttpRequest) -> QueryDict | None:
+    """What was sent with a form, None where it is only asked for."""
+    return request.POST if request.method == "POST" else None

@@ -8,6 +8,7 @@ from django.db import models
 
 from register.models.plant import Area, Plant
 from register.models.typed import ReferenceKind, Typed, TypedQuantities
+from register.searching import SearchKey
 
 
 class Criticality(models.TextChoices):
@@ -116,6 +117,7 @@ class Tag(TypedQuantities):
         ordering = ["number"]
         constraints = [
             models.UniqueConstraint(fields=["plant", "number"], name="tag_once_per_plant"),
+            models.UniqueConstraint("plant", SearchKey("number"), name="tag_once_per_plant_in_any_case"),
             models.CheckConstraint(condition=~models.Q(number=""), name="tag_number_given"),
             models.CheckConstraint(
                 condition=models.Q(pressure_reference__in=["gauge", "absolute"]), name="tag_static_gauge_or_absolute"

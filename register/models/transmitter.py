@@ -7,6 +7,7 @@ from django.db import models
 from register.models.plant import Plant
 from register.models.tag import Tag
 from register.models.types import Maker, MeasuringHead, TransmitterType
+from register.searching import SearchKey
 
 
 class Transmitter(models.Model):
@@ -37,9 +38,13 @@ class Transmitter(models.Model):
         ordering = ["serial"]
         constraints = [
             models.UniqueConstraint(fields=["maker", "serial"], name="transmitter_serial_once_per_maker"),
+            models.UniqueConstraint("maker", SearchKey("serial"), name="transmitter_serial_once_in_any_case"),
             models.CheckConstraint(condition=~models.Q(serial=""), name="transmitter_serial_given"),
         ]
-        indexes = [models.Index(fields=["plant", "serial"], name="transmitter_by_serial")]
+        indexes = [
+            models.Index(fields=["plant", "serial"], name="transmitter_by_serial"),
+            models.Index("plant", SearchKey("serial"), name="transmitter_by_serial_key"),
+        ]
 
     def __str__(self) -> str:
         return f"{self.maker} {self.serial}"
