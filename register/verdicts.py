@@ -1,0 +1,129 @@
+"""What a change would mean at a tag, asked of the limit checks before it is made."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Final
+
+from django.utils.safestring import SafeString
+
+from register.checking import findings, inputs_of, with_inputs
+from register.models import Range, Tag, Transmitter
+
+if TYPE_CHECKING:
+    from register.engineering.findings import Finding
+    from register.engineering.limits import TagInputs
+
+#: Checks whose outcome a range decides.
+OF_THE_RANGE: Final = (
+    "range_lower",
+    "range_upper",
+    "least_span",
+    "greatest_span",
+    "square_root",
+    "square_root_place",
+)
+#: Severity → class of its list item, and of the word before it.
+CLASSES: Final = {
+    "violation": ("violation", "out"),
+    "caution": ("caution", "near"),
+    "cannot check": ("unknown", "unknown"),
+}
+
+
+@dataclass(frozen=True, slots=True)
+class Line:
+    """One finding, ready for the page."""
+
+    item: str
+    state: str
+    word: str
+    sentence: str
+    arithmetic: str
+    advice: str
+
+
+@dataclass(frozen=True, slots=True)
+class Verdict:
+    """What the checks say: the lines that are not clear, worst first, how many are clear, and the strip."""
+
+    lines: list[Line]
+    clear: int
+    strip: SafeString | str
+    broken: int
+
+
+def of_range(tag: Tag, setting: Range) -> Verdict:
+    """What the limit checks would say with another range."""
+    made = [finding for finding in findings(tag, setting=setting) if finding.check in OF_THE_RANGE]
+    return _verdict(made, inputs_of(tag, setting=setting))
+
+
+def of_transmitter(tag: Tag, transmitter: Transmitter) -> Verdict:
+    """What the limit checks would say with another transmitter."""
+    return _verdict(findings(tag, transmitter=transmitter), inputs_of(tag, transmitter=transmitter))
+
+
+def tag_with_inputs(tag: Tag) -> Tag:
+    """The tag again, with everything that its checks read."""
+    return next(with_inputs([tag.pk]))
+
+
+def strip_of(inputs: TagInputs) -> SafeString:
+    """The range drawn inside the head, and the static pressure against the body rating."""
+    from register.engineering.limits import body_rating_at
+    from register.engineering.pressure import PressureReferenceError, restate, to_gauge
+    from register.engineering.ranges import known, range_strip, static_strip
+    from register.marks import range_strip as draw
+
+    head, setting, process = inputs.head, inputs.range, inputs.process
+    barometric = inputs.surroundings.barometric_pa
+    lrv = urv = None
+    if setting is not None:
+        lrv, urv = setting.lrv_si, setting.urv_si
+        if head is not None:
+            try:
+                lrv = restate(lrv, setting.reference, head.reference, barometric)
+                urv = restate(urv, setting.reference, head.reference, barometric)
+            except PressureReferenceError:
+                head = None
+    strip = range_strip(
+        lrv,
+        urv,
+        head.lrl_si if head else None,
+        head.url_si if head else None,
+        head.least_span_si if head else None,
+    )
+    rating = body_rating_at(inputs.type, process) if inputs.type else None
+
+    def gauge(pressure: float | None) -> float | None:
+        try:
+            return None if pressure is None else to_gauge(pressure, process.reference, barometric)
+        except PressureReferenceError:
+            return None
+
+    static = static_strip(rating, gauge(process.operating_pressure_pa), gauge(process.design_pressure_pa))
+    return draw(
+        known(strip.lrv),
+        known(strip.urv),
+        known(strip.least_span),
+        known(static.operating),
+        known(static.design),
+        "The range inside the measuring head; below it the static pressure against the body rating.",
+        head=head is not None,
+        rated=rating is not None,
+    )
+
+
+def _verdict(made: Iterable[Finding], inputs: TagInputs) -> Verdict:
+    from register.engineering.findings import Severity
+
+    made = list(made)
+    order: Mapping[Severity, int] = {Severity.VIOLATION: 0, Severity.CAUTION: 1, Severity.CANNOT_CHECK: 2}
+    told = sorted((finding for finding in made if finding.severity in order), key=lambda one: order[one.severity])
+    lines = [
+        Line(*CLASSES[str(one.severity)], str(one.severity), one.sentence, one.arithmetic, one.advice) for one in told
+    ]
+    broken = sum(one.severity is Severity.VIOLATION for one in made)
+    return Verdict(lines=lines, clear=len(made) - len(lines), strip=strip_of(inputs), broken=broken)
