@@ -165,7 +165,7 @@ _BASIS_OF_TEMPERATURE = {
     ("20", "c"): "68F",
 }
 _REFERENCE_SUFFIX = re.compile(
-    r"(?P<unit>.+?)[(\[_-]?(?P<word>gauge|absolute|abs|differential|diff|g|a|d)\.?[)\]]?", re.DOTALL
+    r"(?P<unit>.+?)[(\[_-]?(?P<word>gauge|absolute|abs|differential|diff|g|a|d)\.?[)\]]?", re.DOTALL | re.IGNORECASE
 )
 _REFERENCES = {"g": "gauge", "a": "absolute", "d": "differential"}
 
