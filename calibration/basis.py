@@ -4,12 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from functools import cache
 from typing import TYPE_CHECKING, Any, Self
 
 from calibration.canonical import plain
 
 if TYPE_CHECKING:
-    from calibration.metrology.conformity import DecisionRule
+    from calibration.metrology.verdicts import DecisionRule
     from calibration.metrology.pointlist import PointList
     from calibration.metrology.signal import Signal
     from calibration.metrology.tolerance import Tolerance
@@ -189,15 +190,20 @@ class Basis:
         return stated.in_unit(self.unit)
 
     def decision_rule(self) -> DecisionRule:
-        from calibration.metrology.conformity import DecisionRule, Rule
+        from calibration.metrology.verdicts import DecisionRule, Rule
 
         return DecisionRule(kind=Rule(self.rule))
 
     def point_list(self) -> PointList | None:
         """The inputs asked for; None where none are stated (past tests brought in without a list)."""
-        from calibration.metrology.pointlist import PointList
+        return _parsed(self.points) if self.points else None
 
-        return PointList.parse(self.points) if self.points else None
+
+@cache
+def _parsed(points: str) -> PointList:
+    from calibration.metrology.pointlist import PointList
+
+    return PointList.parse(points)
 
 
 def _stated(stated: StatedTolerance) -> dict[str, str]:

@@ -12,7 +12,8 @@ from calibration.basis import Basis
 
 if TYPE_CHECKING:
     from calibration.metrology.conformity import Judgement
-    from calibration.metrology.errors import RunEvaluation
+    from calibration.metrology.evaluation import RunEvaluation
+    from calibration.metrology.verdicts import ReadingJudgement
 
 METHOD_VERSION = 1
 _PLAUSIBLE_MA = (0.0, 25.0)
@@ -97,17 +98,29 @@ def judge(basis: Basis, kind: str, points: Sequence[Point]) -> JudgedRun:
 
     missing = _missing(basis, points)
     whole = (*points, *missing)
-    named = all(point.nominal_percent is not None for point in whole)
+    nominal = [point.nominal_percent for point in whole if point.nominal_percent is not None]
     signal = basis.signal()
     evaluation = evaluate_run(
         [point.applied for point in whole],
         [point.measured for point in whole],
         signal,
-        points=[point.nominal_percent for point in whole] if named else None,
+        points=nominal if len(nominal) == len(whole) else None,
         directions=[point.direction for point in whole],
     )
     judgement = judge_run(evaluation, basis.tolerance(kind), basis.decision_rule())
     return JudgedRun(points=tuple(whole), missing=len(missing), evaluation=evaluation, judgement=judgement)
+
+
+def judge_one(basis: Basis, kind: str, applied: float, measured: float) -> ReadingJudgement:
+    """Judge one reading as it is typed: input in the unit of the range, output in mA.
+
+    Notes
+    -----
+    `judge` judges every reading of a run through the same function, so that both agree to the last digit.
+    """
+    from calibration.metrology.conformity import judge_readings
+
+    return judge_readings(applied, measured, basis.signal(), basis.tolerance(kind), basis.decision_rule())
 
 
 def _missing(basis: Basis, points: Sequence[Point]) -> list[Point]:

@@ -41,11 +41,12 @@ class Names:
     def told(self, content: RecordContent) -> RecordContent:
         """The content with the names of its instrument and its standards in the notes of its basis."""
         notes = dict(content.basis.notes)
-        notes["instrument"] = instrument(
-            self.tags[content.tag_id] if content.tag_id is not None else None,
-            self.transmitters[content.transmitter_id],
-            self.heads[content.basis.head_id],
-        )
+        if "instrument" not in notes:
+            notes["instrument"] = instrument(
+                self.tags[content.tag_id] if content.tag_id is not None else None,
+                self.transmitters[content.transmitter_id],
+                self.heads[content.basis.head_id],
+            )
         notes["standards"] = [
             self._standard(standard_id, certificate_id)
             for standard_id, certificate_id in sorted(

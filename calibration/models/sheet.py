@@ -15,10 +15,12 @@ class Sheet(models.Model):
     class Stage(models.TextChoices):
         CONFIRM = "confirm", "confirm the instrument"
         CAUTIONS = "cautions", "cautions"
+        STANDARDS = "standards", "reference standards"
         AS_FOUND = "as-found", "as-found"
         ADJUST = "adjust", "adjustment"
         AS_LEFT = "as-left", "as-left"
         RETURN = "return", "return to service"
+        CORRECT = "correct", "correction"
         SIGN = "sign", "sign"
         SIGNED = "signed", "signed"
         ABANDONED = "abandoned", "abandoned"
