@@ -1,0 +1,1 @@
+"""Arithmetic of tests, verdicts, schedules and drift; numpy, scipy and the standard library only."""
