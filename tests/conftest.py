@@ -14,7 +14,6 @@ from register import guards
 from register.models import User
 from tests import cast as people
 
-
 # A busy machine makes an example slow, not wrong.
 settings.register_profile("any machine", deadline=None, suppress_health_check=[HealthCheck.too_slow])
 settings.load_profile("any machine")

@@ -12,7 +12,7 @@ from register.engineering.limits import Process, Surroundings, TagInputs, body_r
 from register.engineering.rating import rating_table
 from register.engineering.units import to_si
 from tests.published import ROOT
-from tests.register.limit_cases import LOOP, RANGE, SOUND, TYPE, WATER, changed, finding
+from tests.register.limit_cases import LOOP, SOUND, TYPE, WATER, changed, finding
 
 
 def test_a_sound_tag_is_clear_in_every_check() -> None:
@@ -350,7 +350,6 @@ def test_the_worst_finding_speaks_for_the_tag() -> None:
     assert worst(check_all(inputs)) is Severity.VIOLATION
     assert worst(check_all(changed(loop={"supply_v": None}))) is Severity.CANNOT_CHECK
     assert [severity.rank for severity in Severity] == [0, 1, 2, 3]
-    assert RANGE.transfer == "square root"
 
 
 def test_the_checks_need_no_django() -> None:
