@@ -15,7 +15,7 @@ from calibration.models import Entry, GuidanceLine, PointList, Requirement, Shee
 from calibration.naming import instrument
 from calibration.reopening import entries_of
 from register.auditing import Act, Actor
-from register.models import Fitting, Plant, Range, Tag, Transmitter, User
+from register.models import Fitting, MeasuringHead, Plant, Range, Tag, Transmitter, User
 
 Applies = GuidanceLine.Applies
 SITE_FIRST: Final = "Site procedures, local codes and licensed practice come first."
@@ -43,24 +43,8 @@ def open_sheet(*, by: Actor, reason: str, tag: Tag, sheet_id: uuid.UUID) -> Shee
     fitting, used, requirement = locked.current_fitting, locked.current_range, current_requirement(locked)
     assert fitting is not None and used is not None and requirement is not None
     transmitter = _transmitter(fitting.transmitter_id)
-    guidance = _guidance(locked.plant, locked, transmitter, used.transfer)
-    basis = Basis.of(
-        used=used,
-        requirement=requirement,
-        head=transmitter.head,
-        decimal_comma=locked.plant.decimal_comma,
-        notes={
-            "head_id": transmitter.head_id,
-            "range_id": used.pk,
-            "requirement_id": requirement.pk,
-            "point_list": requirement.point_list.name,
-            "instrument": instrument(locked, transmitter, transmitter.head),
-            "facts": _facts(locked),
-            "units": {"temperature": locked.temperature_unit, "static": locked.pressure_unit},
-            "digital": transmitter.type.digital,
-            "site_first": SITE_FIRST,
-            **guidance,
-        },
+    basis = terms_at(
+        tag=locked, transmitter=transmitter, head=transmitter.head, used=used, requirement=requirement
     )
     return _opened(by, reason, sheet_id, locked.plant, transmitter, basis, tag=locked, fitting=fitting)
 
@@ -88,23 +72,7 @@ def open_bench_sheet(
     fitted = Fitting.objects.filter(transmitter=locked, removed_on=None).select_related("tag").first()
     if fitted is not None:
         raise ValidationError(f"It is fitted at {fitted.tag}: open the sheet from that tag.")
-    used = Range(**{name: values[name] for name in _RANGE if name in values})
-    asked = Requirement(**{name: values[name] for name in _TOLERANCE if name in values}, point_list=point_list)
-    basis = Basis.of(
-        used=used,
-        requirement=asked,
-        head=locked.head,
-        decimal_comma=locked.plant.decimal_comma,
-        notes={
-            "head_id": locked.head_id,
-            "point_list": point_list.name,
-            "instrument": instrument(None, locked, locked.head),
-            "units": {"temperature": locked.type.temperature_unit, "static": locked.type.pressure_unit},
-            "digital": locked.type.digital,
-            "site_first": SITE_FIRST,
-            **_guidance(locked.plant, None, locked, used.transfer),
-        },
-    )
+    basis = terms_on_the_bench(transmitter=locked, head=locked.head, point_list=point_list, values=values)
     _checked(basis)
     return _opened(by, reason, sheet_id, locked.plant, locked, basis)
 
@@ -154,6 +122,53 @@ def open_correction(*, by: Actor, reason: str, test: Test, sheet_id: uuid.UUID) 
     act.created(sheet, plant=locked.plant_id)
     act.write()
     return sheet
+
+
+def terms_at(
+    *, tag: Tag, transmitter: Transmitter, head: MeasuringHead, used: Range, requirement: Requirement
+) -> Basis:
+    """What a test at a tag is judged by and what is shown with it; plant, area and type are at hand on the rows."""
+    return Basis.of(
+        used=used,
+        requirement=requirement,
+        head=head,
+        decimal_comma=tag.plant.decimal_comma,
+        notes={
+            "head_id": head.pk,
+            "range_id": used.pk,
+            "requirement_id": requirement.pk,
+            "point_list": requirement.point_list.name,
+            "instrument": instrument(tag, transmitter, head),
+            "facts": _facts(tag),
+            "units": {"temperature": tag.temperature_unit, "static": tag.pressure_unit},
+            "digital": transmitter.type.digital,
+            "site_first": SITE_FIRST,
+            **_guidance(tag.plant, tag, transmitter, used.transfer),
+        },
+    )
+
+
+def terms_on_the_bench(
+    *, transmitter: Transmitter, head: MeasuringHead, point_list: PointList, values: Mapping[str, Any]
+) -> Basis:
+    """What a test of a spare is judged by; `values` as `open_bench_sheet` takes them."""
+    used = Range(**{name: values[name] for name in _RANGE if name in values})
+    asked = Requirement(**{name: values[name] for name in _TOLERANCE if name in values}, point_list=point_list)
+    return Basis.of(
+        used=used,
+        requirement=asked,
+        head=head,
+        decimal_comma=transmitter.plant.decimal_comma,
+        notes={
+            "head_id": head.pk,
+            "point_list": point_list.name,
+            "instrument": instrument(None, transmitter, head),
+            "units": {"temperature": transmitter.type.temperature_unit, "static": transmitter.type.pressure_unit},
+            "digital": transmitter.type.digital,
+            "site_first": SITE_FIRST,
+            **_guidance(transmitter.plant, None, transmitter, used.transfer),
+        },
+    )
 
 
 def what_is_lacking(tag: Tag) -> list[str]:
