@@ -32,7 +32,7 @@ def test_a_record_carries_runs_readings_figures_and_summaries(tag: people.Tag, c
     record = write_record(described(tag, found=found, left=(0.1,) * 9, signer=cast.technician), act=act())
     test = Test.objects.get()
     assert test.current_record == record
-    assert (test.state, test.outcome, test.accepted) == ("signed", "tested", True)
+    assert (test.state, test.outcome, test.accepted) == ("signed", "done", True)
     assert (test.as_found_verdict, test.as_left_verdict) == ("fail", "pass")
     assert test.as_found_worst == pytest.approx(0.6, abs=1e-3)
     assert test.as_found_ratio == pytest.approx(1.2, abs=2e-3)
