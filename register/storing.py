@@ -9,6 +9,7 @@ from django.core.exceptions import NON_FIELD_ERRORS, ValidationError
 from django.db import IntegrityError, models, transaction
 
 from register.models import TypedQuantities
+from register.models.typed import in_words
 
 #: Constraint → (field it is shown beside, sentence); the sentence is filled from the row's own fields.
 SENTENCES: Final[dict[str, tuple[str, str]]] = {
@@ -138,7 +139,7 @@ def check(thing: models.Model) -> None:
     ValidationError
         By field, in the user's words.
     """
-    thing.clean_fields()
+    thing.clean_fields(exclude=[field.name for field in thing._meta.fields if field.null and _unset(thing, field)])
     refused: dict[str, list[str]] = {}
     model = type(thing)
     for constraint in model._meta.constraints:
@@ -156,11 +157,13 @@ def check(thing: models.Model) -> None:
         raise ValidationError(refused)
 
 
+def _unset(thing: models.Model, field: models.Field[Any, Any]) -> bool:
+    """A column that may be null and is: Django would ask for a value all the same."""
+    return getattr(thing, field.attname) is None
+
+
 def _filled(sentence: str, thing: models.Model) -> str:
     values = {field.name: getattr(thing, field.name) for field in thing._meta.concrete_fields}
-    unit = values.get("unit")
-    if unit:
-        from register.engineering.units import UNITS
-
-        values["unit"] = UNITS[unit].label if unit in UNITS else unit
+    if "unit" in values:
+        values["unit"] = in_words(values["unit"])
     return sentence.format(**values)

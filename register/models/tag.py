@@ -7,7 +7,7 @@ from typing import ClassVar
 from django.db import models
 
 from register.models.plant import Area, Plant
-from register.models.typed import ReferenceKind, Typed, TypedQuantities
+from register.models.typed import ReferenceKind, Typed, TypedQuantities, in_words
 from register.searching import SearchKey
 
 
@@ -188,4 +188,4 @@ class Range(TypedQuantities):
         ]
 
     def __str__(self) -> str:
-        return f"{self.lrv} to {self.urv} {self.unit} {self.reference}, {self.transfer}"
+        return f"{self.lrv} to {self.urv} {in_words(self.unit)} {self.reference}, {self.transfer}"

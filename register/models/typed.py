@@ -42,6 +42,13 @@ class TypedQuantities(models.Model):
             setattr(self, quantity.si, value)
 
 
+def in_words(unit: str) -> str:
+    """The label of a unit's key; a key that is not known stays as it is."""
+    from register.engineering.units import UNITS
+
+    return UNITS[unit].label if unit in UNITS else unit
+
+
 class Frozen(models.Model):
     """A row that is inserted once and never again changed or deleted.
 
