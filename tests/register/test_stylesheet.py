@@ -87,7 +87,7 @@ def test_fonts_named_by_the_sheet_are_shipped_with_their_licence() -> None:
 
 def test_no_template_has_inline_style_script_or_handler() -> None:
     for path in TEMPLATES.rglob("*.html"):
-        text = path.read_text()
-        assert not re.search(r"\sstyle\s*=", text), path
-        assert not re.search(r"\son[a-z]+\s*=", text), path
+        text = re.sub(r"\{[%{].*?[%}]\}", "", path.read_text(), flags=re.DOTALL)
+        inside_tags = " ".join(re.findall(r"<[a-z][^>]*>", text))
+        assert not re.search(r"\s(style|on[a-z]+)\s*=", inside_tags), path
         assert not re.search(r"<style|<script(?![^>]*\ssrc=)", text), path
