@@ -80,15 +80,17 @@ TEMPLATES = [
 ]
 
 DATABASES = {"default": environment.database(DATA_DIR / "foundleft.sqlite3")}
-if DATABASES["default"]["ENGINE"] == "django.db.backends.sqlite3":
-    DATABASES["default"]["OPTIONS"] = {
-        "transaction_mode": "IMMEDIATE",
-        "timeout": 20,
-        "init_command": (
-            "PRAGMA journal_mode=WAL; PRAGMA synchronous=FULL; PRAGMA foreign_keys=ON; PRAGMA recursive_triggers=ON;"
-            "PRAGMA cache_size=-64000; PRAGMA mmap_size=268435456; PRAGMA temp_store=MEMORY;"
-        ),
-    }
+#: What every SQLite connection begins with; recursive triggers, or INSERT OR REPLACE slips past the guards.
+SQLITE_OPTIONS = {
+    "transaction_mode": "IMMEDIATE",
+    "timeout": 20,
+    "init_command": (
+        "PRAGMA journal_mode=WAL; PRAGMA synchronous=FULL; PRAGMA foreign_keys=ON; PRAGMA recursive_triggers=ON;"
+        "PRAGMA cache_size=-64000; PRAGMA mmap_size=268435456; PRAGMA temp_store=MEMORY;"
+    ),
+}
+if DATABASES["default"]["ENGINE"] == environment.SQLITE:
+    DATABASES["default"]["OPTIONS"] = SQLITE_OPTIONS
 DEFAULT_AUTO_FIELD = "django.db.models.BigAutoField"
 
 AUTHENTICATION_BACKENDS = ["axes.backends.AxesStandaloneBackend", "django.contrib.auth.backends.ModelBackend"]
@@ -113,6 +115,11 @@ AXES_SENSITIVE_PARAMETERS = ["password", "old_password", "new_password1", "new_p
 AFTER_REGISTER_CHANGE = ["calibration.scheduling.refresh"]
 #: Functions asked with a tag and a day whether a change may be dated back to it; they answer an objection or "".
 BEFORE_BACKDATING = ["calibration.objections.to_backdating"]
+#: Acts of `manage.py apply_planned`, in their order, with what they count: one of them, several of them.
+EVERY_DAY = {
+    "register.reranging.apply_planned": ("planned range is in force", "planned ranges are in force"),
+    "register.flagging.end_lapsed_acceptances": ("acceptance has ended", "acceptances have ended"),
+}
 #: Functions called with a new plant and who made it, in the transaction of the act that makes it.
 AFTER_PLANT_CREATED = ["calibration.provision.provide_defaults"]
 
