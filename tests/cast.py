@@ -11,7 +11,22 @@ import itertools
 from dataclasses import dataclass, field
 from typing import Any
 
-from calibration.models import Certificate, GuidanceLine, PointList, Requirement, Standard, ToleranceForm
+from calibration.models import (
+    Certificate,
+    Entry,
+    GuidanceLine,
+    PointList,
+    Reading,
+    Record,
+    Requirement,
+    Run,
+    Sheet,
+    Signature,
+    Standard,
+    StandardUse,
+    Test,
+    ToleranceForm,
+)
 from register.models import (
     Area,
     Fitting,
@@ -248,6 +263,101 @@ def make_ready_tag(area: Area, number: str = "", **values: Any) -> Tag:
     make_fitting(tag)
     make_requirement(tag)
     return tag
+
+
+def make_sheet(tag: Tag, person: User, **values: Any) -> Sheet:
+    """An open sheet of the transmitter fitted at a tag; its basis is bare."""
+    settings = {"opened_at": _noon(LONG_AGO), "basis": {}} | _range_columns(tag) | values
+    fitting = tag.current_fitting
+    assert fitting is not None
+    return _stored(
+        Sheet(plant=tag.plant, tag=tag, fitting=fitting, transmitter=fitting.transmitter, opened_by=person, **settings)
+    )
+
+
+def make_entry(sheet: Sheet, person: User, field: str = "remarks", text: str = "", **values: Any) -> Entry:
+    settings = {
+        "device": "desk",
+        "sequence": next(_numbers),
+        "typed_at": _noon(LONG_AGO),
+        "received_at": _noon(LONG_AGO),
+    } | values
+    return _stored(Entry(sheet=sheet, person=person, field=field, text=text, **settings))
+
+
+def make_record(tag: Tag, person: User, **values: Any) -> Record:
+    """A signed record of one as-found run with one reading, written row by row: not a link that the chain would take."""
+    fitting = tag.current_fitting
+    assert fitting is not None
+    test = Test(
+        plant=tag.plant,
+        tag=tag,
+        fitting=fitting,
+        transmitter=fitting.transmitter,
+        state=Test.State.SIGNED,
+        tested_on=LONG_AGO,
+        accepted=True,
+    )
+    test.save()
+    settings = (
+        {"made_by": person, "made_at": _noon(LONG_AGO), "head": fitting.transmitter.head, "basis": {}}
+        | _link()
+        | values
+    )
+    record = _stored(Record(test=test, plant=tag.plant, **_range_columns(tag), **settings))
+    test.current_record = record
+    test.save()
+    run = _stored(Run(record=record, kind=Run.Kind.AS_FOUND, tested_on=LONG_AGO))
+    _stored(
+        Reading(
+            run=run,
+            order=1,
+            direction="up",
+            applied="5.00",
+            applied_unit="bar",
+            applied_si=5e5,
+            measured="12.01",
+            measured_ma=12.01,
+        )
+    )
+    standard = make_standard(tag.plant)
+    _stored(
+        StandardUse(run=run, part=StandardUse.Part.APPLIED, standard=standard, certificate=standard.certificates.get())
+    )
+    _stored(
+        Signature(
+            record=record,
+            meaning=Signature.Meaning.PERFORMED,
+            person=person,
+            printed_name=str(person),
+            signed_at=_noon(LONG_AGO),
+            time_zone="UTC",
+            plant=tag.plant,
+            **_link(),
+        )
+    )
+    return record
+
+
+def _link() -> dict[str, Any]:
+    """Columns of a link of the chain that no check of the chain would take."""
+    number = next(_numbers)
+    return {"position": number, "content": "{}", "previous_hash": "0" * 64, "hash": f"{number:064x}"}
+
+
+def _range_columns(tag: Tag) -> dict[str, Any]:
+    names = (
+        "lrv",
+        "urv",
+        "unit",
+        "reference",
+        "lrv_si",
+        "urv_si",
+        "transfer",
+        "low_cut_percent",
+        "below_cut",
+    )
+    return {name: getattr(tag.current_range, name) for name in names}
 
 
 def _noon(day: datetime.date) -> datetime.datetime:

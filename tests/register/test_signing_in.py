@@ -107,9 +107,7 @@ def test_many_wrong_passwords_close_the_door_for_that_name_only(cast: Cast, sett
     assert sign_in(Client(), "technician", PASSWORD).status_code == 302
 
 
-def test_an_administrator_opens_the_door_again(
-    cast: Cast, settings: Any, client_as: Callable[[User], Client]
-) -> None:
+def test_an_administrator_opens_the_door_again(cast: Cast, settings: Any, client_as: Callable[[User], Client]) -> None:
     settings.AXES_ENABLED = True
     for _ in range(settings.AXES_FAILURE_LIMIT):
         sign_in(Client(), "planner", "guessed")
