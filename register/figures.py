@@ -56,6 +56,13 @@ def aligned(text: str | Number | None, decimals: int) -> SafeString:
     return SafeString(f'{shown}<span class="pad" aria-hidden="true">{fill}</span>')
 
 
+def typed(text: str | None) -> str:
+    """Text as typed, its leading hyphen shown as a true minus; nothing else is touched."""
+    if not text:
+        return NOTHING
+    return MINUS + text[1:] if text.startswith("-") else text
+
+
 def with_unit(value: Number | None, decimals: int, unit: str) -> SafeString:
     """A number, a thin space and its unit."""
     if value is None or isnan(value):

@@ -8,7 +8,7 @@ from decimal import Decimal
 import pytest
 from django.template import Context, Template
 
-from register.figures import age, ago, aligned, figure, iso, signed, with_unit
+from register.figures import age, ago, aligned, figure, iso, signed, typed, with_unit
 
 TODAY = date(2026, 3, 21)
 
@@ -38,14 +38,20 @@ def test_errors_carry_their_sign_and_a_rounded_zero_carries_none(value: float | 
 
 
 @pytest.mark.parametrize(
-    "typed, filled",
+    "text, filled",
     [("12.5", "00"), ("12", ".000"), ("12.", "000"), ("-0,25", "0"), ("12.0000", ""), ("n/a", ""), ("−3.1", "00")],
 )
-def test_text_as_typed_is_filled_to_one_decimal_line_without_gaining_digits(typed: str, filled: str) -> None:
-    shown = aligned(typed, 3)
+def test_text_as_typed_is_filled_to_one_decimal_line_without_gaining_digits(text: str, filled: str) -> None:
+    shown = aligned(text, 3)
     seen, _, unseen = shown.partition('<span class="pad" aria-hidden="true">')
-    assert seen == typed.replace("-", "−")
+    assert seen == text.replace("-", "−")
     assert unseen.removesuffix("</span>") == filled
+
+
+def test_typed_text_keeps_its_digits_and_gains_a_true_minus() -> None:
+    assert typed("-1.50") == "−1.50"
+    assert typed("12.000") == "12.000"
+    assert typed("") == "–"
 
 
 def test_aligned_text_is_escaped() -> None:
