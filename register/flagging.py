@@ -8,7 +8,9 @@ recomputing, and an accepted flag stays visible.
 from __future__ import annotations
 
 import datetime
-from collections.abc import Collection, Iterable
+from collections.abc import Collection, Iterable, Iterator
+from contextlib import contextmanager
+from contextvars import ContextVar
 from typing import TYPE_CHECKING, Any
 
 from django.core.exceptions import ValidationError
@@ -43,8 +45,31 @@ COMPUTED = (
 NOISE = 1e-9
 
 
+_waiting: ContextVar[set[int] | None] = ContextVar("tags that wait to be settled", default=None)
+
+
+@contextmanager
+def settled_together(act: Act) -> Iterator[None]:
+    """Let many acts of one transaction share one settling at the end of the block, under the given act.
+
+    For loading whole registers: the flags of a tag are then recomputed once, not after each of its acts.
+    """
+    touched: set[int] = set()
+    token = _waiting.set(touched)
+    try:
+        yield
+    finally:
+        _waiting.reset(token)
+    settle(act, touched)
+
+
 def settle(act: Act, tag_ids: Collection[int]) -> None:
     """End an act of the register: flags recomputed, entries written, the schedule told."""
+    waiting = _waiting.get()
+    if waiting is not None:
+        waiting.update(tag_ids)
+        act.write()
+        return
     recompute(tag_ids, act=act)
     act.write()
     announce(tag_ids)
@@ -178,10 +203,10 @@ def _columns(finding: Finding) -> dict[str, Any]:
 
 def _brought_up_to(flag: Flag, finding: Finding, act: Act) -> bool:
     """Bring one row up to a finding; says whether anything changed."""
-    columns = _columns(finding)
-    cleared = columns["severity"] == Flag.Severity.CLEAR
+    cleared = finding.severity.name == Flag.Severity.CLEAR.name
     if cleared and flag.closed_at is not None:
         return False
+    columns = _columns(finding)
     changed = {name: value for name, value in columns.items() if getattr(flag, name) != value}
     if not changed and not cleared and flag.closed_at is None:
         return False

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Final
 from django.utils.safestring import SafeString
 
 from register.checking import findings, inputs_of, with_inputs
-from register.models import Range, Tag, Transmitter
+from register.models import MeasuringHead, Range, ReferenceKind, Tag, Transmitter
 
 if TYPE_CHECKING:
     from register.engineering.findings import Finding
@@ -24,6 +24,9 @@ OF_THE_RANGE: Final = (
     "square_root",
     "square_root_place",
 )
+#: Heads offered, and serial numbers shown of each.
+CARRIERS: Final = 6
+SERIALS: Final = 4
 #: Severity → class of its list item, and of the word before it.
 CLASSES: Final = {
     "violation": ("violation", "out"),
@@ -50,7 +53,7 @@ class Verdict:
 
     lines: list[Line]
     clear: int
-    strip: SafeString | str
+    strip: SafeString
     broken: int
 
 
@@ -63,6 +66,46 @@ def of_range(tag: Tag, setting: Range) -> Verdict:
 def of_transmitter(tag: Tag, transmitter: Transmitter) -> Verdict:
     """What the limit checks would say with another transmitter."""
     return _verdict(findings(tag, transmitter=transmitter), inputs_of(tag, transmitter=transmitter))
+
+
+@dataclass(frozen=True, slots=True)
+class Carrier:
+    """A head that could carry what a tag asks, and the transmitters in stores that have it."""
+
+    head: MeasuringHead
+    serials: list[str]
+    doubts: int
+
+
+def carriers(tag: Tag, *, setting: Range | None = None) -> list[Carrier]:
+    """Heads with which no check would be violated: those with one in stores first, then the tightest fit.
+
+    Every head of the catalogue that measures the same kind of pressure is tried with the limits of its type.
+    """
+    from register.engineering.findings import Severity
+
+    wanted = setting or tag.current_range
+    if wanted is None:
+        return []
+    differential = ReferenceKind.DIFFERENTIAL
+    heads = MeasuringHead.objects.select_related("type__maker")
+    if wanted.reference == differential:
+        heads = heads.filter(type__measures=differential)
+    else:
+        heads = heads.exclude(type__measures=differential)
+    stored: dict[int, list[str]] = {}
+    in_stores = Transmitter.objects.filter(plant=tag.plant_id, whereabouts=Transmitter.Whereabouts.STORES)
+    for head_id, serial in in_stores.filter(head__in=heads).order_by("serial").values_list("head_id", "serial"):
+        stored.setdefault(head_id, []).append(serial)
+    found = []
+    for head in heads:
+        stand_in = Transmitter(plant_id=tag.plant_id, maker=head.type.maker, type=head.type, head=head)
+        made = findings(tag, setting=setting, transmitter=stand_in)
+        if all(one.severity is not Severity.VIOLATION for one in made):
+            doubts = sum(one.severity is not Severity.CLEAR for one in made)
+            found.append(Carrier(head, stored.get(head.pk, [])[:SERIALS], doubts))
+    found.sort(key=lambda one: (not one.serials, one.doubts, one.head.url_si - one.head.lrl_si))
+    return found[:CARRIERS]
 
 
 def tag_with_inputs(tag: Tag) -> Tag:

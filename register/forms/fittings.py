@@ -12,7 +12,11 @@ from register.models import Plant, Transmitter
 from register.queries import spares, transmitters_with_serial
 
 Whereabouts = Transmitter.Whereabouts
-GOES_TO: Final = [(place.value, place.label) for place in Whereabouts if place != Whereabouts.FITTED]
+GOES_TO: Final = [
+    (Whereabouts.STORES.value, "to stores"),
+    (Whereabouts.REPAIR.value, "away for repair"),
+    (Whereabouts.SCRAPPED.value, "to be scrapped"),
+]
 
 
 class TransmitterField(forms.CharField):

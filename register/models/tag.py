@@ -7,7 +7,7 @@ from typing import ClassVar
 from django.db import models
 
 from register.models.plant import Area, Plant
-from register.models.typed import ReferenceKind, Typed, TypedQuantities, in_words
+from register.models.typed import ReferenceKind, Typed, TypedQuantities, as_shown, in_words
 from register.searching import SearchKey
 
 
@@ -188,4 +188,5 @@ class Range(TypedQuantities):
         ]
 
     def __str__(self) -> str:
-        return f"{self.lrv} to {self.urv} {in_words(self.unit)} {self.reference}, {self.transfer}"
+        lrv, urv = as_shown(self.lrv), as_shown(self.urv)
+        return f"{lrv} to {urv} {in_words(self.unit)} {self.reference}, {self.transfer}"

@@ -49,6 +49,11 @@ def in_words(unit: str) -> str:
     return UNITS[unit].label if unit in UNITS else unit
 
 
+def as_shown(number: str) -> str:
+    """A typed number with a true minus sign."""
+    return number.replace("-", "\N{MINUS SIGN}")
+
+
 class Frozen(models.Model):
     """A row that is inserted once and never again changed or deleted.
 

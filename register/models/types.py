@@ -9,7 +9,7 @@ from typing import ClassVar
 
 from django.db import models
 
-from register.models.typed import ReferenceKind, Typed, TypedQuantities, in_words
+from register.models.typed import ReferenceKind, Typed, TypedQuantities, as_shown, in_words
 
 
 class Maker(models.Model):
@@ -130,4 +130,4 @@ class MeasuringHead(TypedQuantities):
         ]
 
     def __str__(self) -> str:
-        return f"{self.code} ({self.lrl} to {self.url} {in_words(self.unit)})"
+        return f"{self.code}: {as_shown(self.lrl)} to {as_shown(self.url)} {in_words(self.unit)}"

@@ -1,15 +1,13 @@
-"""Units in templates: `{{ head.unit|unit }}` gives the label of a key."""
+"""Typed values in templates: `{{ head.lrl|minus }} {{ head.unit|unit }}` gives −250 inH2O (68 °F)."""
 
 from __future__ import annotations
 
 from django import template
 
-from register.engineering.units import UNITS
+from register.models.typed import as_shown, in_words
 
 register = template.Library()
 
 
-@register.filter
-def unit(key: str) -> str:
-    """The label of a unit, such as "inH2O (68 °F)"; a key that is not known is shown as it is."""
-    return UNITS[key].label if key in UNITS else key
+register.filter("unit", in_words)
+register.filter("minus", as_shown)

@@ -83,8 +83,10 @@ def _what_if(request: HttpRequest, tag: Tag) -> dict[str, object]:
     serial = (request.POST if request.method == "POST" else request.GET).get("transmitter", "").strip()
     found = transmitters_with_serial(tag.plant, serial) if serial else []
     device = found[0] if len(found) == 1 else None
+    verdict = verdicts.of_transmitter(tag, device) if device is not None else None
     return {
         "serial": serial,
         "device": device,
-        "verdict": verdicts.of_transmitter(tag, device) if device is not None else None,
+        "verdict": verdict,
+        "carriers": verdicts.carriers(tag) if verdict is None or verdict.broken else [],
     }

@@ -34,8 +34,7 @@ def tag_range(request: HttpRequest, pk: int) -> HttpResponse:
         when = "is in force" if new.applied_at else "is planned"
         messages.success(request, f"{new} {when} from {new.effective_from} on.")
         return redirect("tag", tag.pk)
-    context = {"form": form, "tag": tag, "verdict": _what_if(request, tag)}
-    return answer(request, "register/tag_range.html", "verdict", context)
+    return answer(request, "register/tag_range.html", "verdict", {"form": form, "tag": tag} | _what_if(request, tag))
 
 
 def range_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
@@ -66,8 +65,17 @@ def _initial(tag: Tag) -> dict[str, Any]:
     return {"unit": tag.pressure_unit, "effective_from": today}
 
 
-def _what_if(request: HttpRequest, tag: Tag) -> verdicts.Verdict | None:
-    """The checks with the range that stands in the form; None as long as it is no range."""
+def _what_if(request: HttpRequest, tag: Tag) -> dict[str, Any]:
+    """The checks with the range that stands in the form, and heads that could carry it; nothing while it is none."""
+    setting = _in_form(request, tag)
+    if setting is None:
+        return {"verdict": None}
+    verdict = verdicts.of_range(tag, setting)
+    wanted = verdict.broken or tag.current_fitting is None
+    return {"verdict": verdict, "carriers": verdicts.carriers(tag, setting=setting) if wanted else []}
+
+
+def _in_form(request: HttpRequest, tag: Tag) -> Range | None:
     given = request.POST if request.method == "POST" else request.GET
     shown = {name: given.get(name, "") for name in RangeForm.base_fields} if "lrv" in given else _initial(tag)
     form = RangeForm({**shown, "reason": "asked only", "effective_from": tag.plant.today()}, plant=tag.plant)
@@ -78,4 +86,4 @@ def _what_if(request: HttpRequest, tag: Tag) -> verdicts.Verdict | None:
         fill(setting, form.values("effective_from"))
     except ValidationError:
         return None
-    return verdicts.of_range(tag, setting) if setting.lrv_si != setting.urv_si else None
+    return setting if setting.lrv_si != setting.urv_si else None
