@@ -143,9 +143,7 @@ def judge_readings(
     )
 
 
-def _codes_by_value(
-    error: Floats, limits: OutputLimits, rule: DecisionRule, expanded: Floats | None
-) -> Codes:
+def _codes_by_value(error: Floats, limits: OutputLimits, rule: DecisionRule, expanded: Floats | None) -> Codes:
     """Verdict codes of errors taken at face value."""
     within = inside(error, limits.lower, limits.upper)
     if rule.kind is Rule.SIMPLE:
@@ -260,9 +258,7 @@ def judge_run(
     -------
     Judgement
     """
-    readings = judge_readings(
-        evaluation.applied, evaluation.measured, evaluation.signal, tolerance, rule, expanded
-    )
+    readings = judge_readings(evaluation.applied, evaluation.measured, evaluation.signal, tolerance, rule, expanded)
     codes, sizes = readings.codes, np.abs(readings.ratio)
     code = int(codes.max()) if codes.size else _INCOMPLETE
     candidates = np.flatnonzero(codes == code)
@@ -343,9 +339,7 @@ def judge_runs(
     for start in range(0, runs, block):
         rows = slice(start, start + block)
         by_value = np.where(inside(e[rows], lows[rows], highs[rows]), _PASS, _FAIL).astype(np.int8)
-        here, outside = _settle(
-            e[rows], i[rows], lows[rows], highs[rows], by_value, np.zeros_like(by_value, bool)
-        )
+        here, outside = _settle(e[rows], i[rows], lows[rows], highs[rows], by_value, np.zeros_like(by_value, bool))
         codes[rows] = here.max(axis=1, initial=_PASS)
         known[rows] = np.where(outside.any(axis=1), 0, np.where((here == _INCOMPLETE).any(axis=1), -1, 1))
         ratio = _ratio(e[rows], i[rows], np.where(e[rows] < 0.0, -lows[rows], highs[rows]))

@@ -119,9 +119,7 @@ def error_covariance(var_end: ArrayLike, var_start: ArrayLike, shared: ArrayLike
     covariance = np.zeros((*total.shape, n))
     own = np.arange(n)
     covariance[..., own, own] = total
-    covariance[..., own[:-1], own[1:]] = covariance[..., own[1:], own[:-1]] = -np.asarray(
-        shared, dtype=np.float64
-    )
+    covariance[..., own[:-1], own[1:]] = covariance[..., own[1:], own[:-1]] = -np.asarray(shared, dtype=np.float64)
     return covariance
 
 
@@ -433,9 +431,7 @@ def estimate_rate(pairing: Pairing, channel: str, confidence: float = 0.95) -> D
         have = f"{n} {'pair' if n == 1 else 'pairs'} of tests"
         missing = f"not enough data: {have}, at least {LEAST_PAIRS} are needed"
         nan = math.nan
-        return DriftRate(
-            channel, pairs, confidence, n, False, nan, nan, nan, nan, nan, n - 1, nan, (missing, *notes)
-        )
+        return DriftRate(channel, pairs, confidence, n, False, nan, nan, nan, nan, nan, n - 1, nan, (missing, *notes))
     shared = [
         pairing.visits[one.end_index].shared_variance if one.end_index == next_one.start_index else 0.0
         for one, next_one in pairwise(pairs)
@@ -443,9 +439,7 @@ def estimate_rate(pairing: Pairing, channel: str, confidence: float = 0.95) -> D
     covariance = error_covariance(
         [(p.u_end or 0.0) ** 2 for p in pairs], [(p.u_start or 0.0) ** 2 for p in pairs], shared
     )
-    result = rates_from_differences(
-        [p.differences[channel] for p in pairs], [p.years for p in pairs], covariance
-    )
+    result = rates_from_differences([p.differences[channel] for p in pairs], [p.years for p in pairs], covariance)
     factor = float(special.stdtrit(n - 1, 0.5 + confidence / 2.0))
     rate, se = float(result.rate), float(result.se)
     if result.walk == 0.0 and se > 0.0:

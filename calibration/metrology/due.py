@@ -195,10 +195,7 @@ def plan_next(
             start = add_months(calendar_anchor, (n - 1) * interval_months)
         limit = min(
             due + timedelta(grace_after(start, due, grace_percent) if grace_days is None else grace_days),
-            after
-            + timedelta(
-                grace_after(last_accepted, after, grace_percent) if grace_days is None else grace_days
-            ),
+            after + timedelta(grace_after(last_accepted, after, grace_percent) if grace_days is None else grace_days),
         )
         due = min(due, limit)
         opens = due - timedelta(lead_days)
@@ -317,9 +314,7 @@ class ScheduleArrays:
     never_tested: NDArray[np.bool_]
 
 
-def _grace_array(
-    start: Days, end: Days, grace_days: ArrayLike | None, percent: ArrayLike
-) -> NDArray[np.timedelta64]:
+def _grace_array(start: Days, end: Days, grace_days: ArrayLike | None, percent: ArrayLike) -> NDArray[np.timedelta64]:
     if grace_days is not None:
         return np.asarray(grace_days, dtype="timedelta64[D]")
     length = (end - start).astype(np.float64)
@@ -361,9 +356,7 @@ def plan_next_array(
     ValueError
         If any interval is less than a month, or any grace or lead is negative.
     """
-    shape = np.broadcast_shapes(
-        *(np.shape(a) for a in (last_accepted, interval_months, calendar_anchor, fitted_on))
-    )
+    shape = np.broadcast_shapes(*(np.shape(a) for a in (last_accepted, interval_months, calendar_anchor, fitted_on)))
     last = np.broadcast_to(np.asarray(last_accepted, dtype="datetime64[D]"), shape)
     anchor = np.broadcast_to(np.asarray(calendar_anchor, dtype="datetime64[D]"), shape)
     fitted = np.broadcast_to(np.asarray(fitted_on, dtype="datetime64[D]"), shape)

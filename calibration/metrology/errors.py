@@ -376,19 +376,12 @@ def evaluate_run(
     )
 
 
-def _levels(
-    layout: Layout, x: Floats, error: Floats, usable: NDArray[np.bool_], curves: _Curves
-) -> tuple[Level, ...]:
+def _levels(layout: Layout, x: Floats, error: Floats, usable: NDArray[np.bool_], curves: _Curves) -> tuple[Level, ...]:
     used, place = usable.astype(np.float64)[:, None], np.where(usable, x, 0.0)[:, None]
-    percent = (
-        100.0 * _middle(_side_means(layout.up, place, used), _side_means(layout.down, place, used))[:, 0]
-    )
+    percent = 100.0 * _middle(_side_means(layout.up, place, used), _side_means(layout.down, place, used))[:, 0]
     known = np.where(usable, error, np.nan)[:, None]
     spreads = [
-        [
-            float(_spread(known[side[m] > 0.0])[0]) if side[m].any() else float("nan")
-            for m in range(len(layout.levels))
-        ]
+        [float(_spread(known[side[m] > 0.0])[0]) if side[m].any() else float("nan") for m in range(len(layout.levels))]
         for side in (layout.up, layout.down)
     ]
     return tuple(

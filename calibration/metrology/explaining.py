@@ -29,7 +29,8 @@ def signed(value: float, limit: float) -> str:
     places = 3
     if math.isfinite(limit) and limit > 0.0:
         places = max(0, 2 - math.floor(math.log10(limit)))
-        while places < 12 and abs(value) != limit and float(f"{abs(value):.{places}f}") == limit:
+        apart = abs(abs(value) - limit)
+        while places < 10 and apart > 1e-10 and abs(float(f"{abs(value):.{places}f}") - limit) < apart / 2:
             places += 1
     return f"{value:+.{places}f}".replace("-", "−")
 
@@ -60,9 +61,7 @@ def _error_and_limit(reading: ReadingJudgement, index: int) -> tuple[str, str]:
 def _beyond_acceptance(reading: ReadingJudgement, index: int) -> str:
     """Words for an error beyond the acceptance limit T - w."""
     limit = float(reading.judged_limit[index])
-    guard = (
-        reading.rule.guard_factor * float(reading.expanded[index]) if reading.expanded is not None else 0.0
-    )
+    guard = reading.rule.guard_factor * float(reading.expanded[index]) if reading.expanded is not None else 0.0
     return f"beyond the acceptance limit ±{plain(limit - guard)} {reading.unit}"
 
 
@@ -70,9 +69,7 @@ def _more(count: int, what: str) -> str:
     return f" {count} readings {what}." if count > 1 else ""
 
 
-def explain(
-    evaluation: RunEvaluation, readings: ReadingJudgement, verdict: Verdict, decisive: int | None
-) -> str:
+def explain(evaluation: RunEvaluation, readings: ReadingJudgement, verdict: Verdict, decisive: int | None) -> str:
     """Say in a sentence or two why a run got its verdict.
 
     Parameters
@@ -121,8 +118,7 @@ def _why_incomplete(readings: ReadingJudgement, decisive: int, name: str) -> str
     if saturated(current):
         return (
             f"{name}: {plain(current)} mA is at or beyond the edge of the measuring signal (3.8 to 20.5 mA, "
-            "NAMUR NE 43), so its error is only known as a bound, which does not decide."
-            + _more(gone, "are missing")
+            "NAMUR NE 43), so its error is only known as a bound, which does not decide." + _more(gone, "are missing")
         )
     return (
         f"{name}: the square-root output is held at 4 mA, so the input error is not known there; "
@@ -141,9 +137,7 @@ def _why_not_decidable(readings: ReadingJudgement, decisive: int, name: str) -> 
 def _why_failed(readings: ReadingJudgement, decisive: int, name: str) -> str:
     current = float(readings.measured[decisive])
     if int(classify(current)) in (SignalState.FAILURE_LOW, SignalState.FAILURE_HIGH):
-        return (
-            f"{name}: {plain(current)} mA is a failure current (NAMUR NE 43: 3.6 mA or less, 21 mA or more)."
-        )
+        return f"{name}: {plain(current)} mA is a failure current (NAMUR NE 43: 3.6 mA or less, 21 mA or more)."
     error, limit = _error_and_limit(readings, decisive)
     if saturated(current):
         return (

@@ -82,9 +82,7 @@ def points_from_applied(applied_percent: ArrayLike, window: float = 1.0) -> NDAr
     order = np.argsort(x, kind="stable")
     ranked = x[order]
     here = np.isfinite(ranked)
-    group = (
-        np.concatenate(([0], np.cumsum(np.diff(ranked[here]) > window))) if here.any() else np.zeros(0, int)
-    )
+    group = np.concatenate(([0], np.cumsum(np.diff(ranked[here]) > window))) if here.any() else np.zeros(0, int)
     mean = np.bincount(group, ranked[here]) / np.bincount(group) if group.size else np.zeros(0)
     name = np.round(mean, 1)
     for step in (12.5, 5.0):
@@ -177,8 +175,7 @@ class PointList:
                     points.append(float(piece.replace(",", ".").replace("−", "-")))
                 except ValueError:
                     raise ValueError(
-                        f"“{piece}” is not a percentage. "
-                        "Write the points in order, apart by spaces: 0 25 50 75 100."
+                        f"“{piece}” is not a percentage. Write the points in order, apart by spaces: 0 25 50 75 100."
                     ) from None
         return cls(tuple(points), tuple(starts) if len(starts) > 1 else ())
 

@@ -193,9 +193,7 @@ def input_of_current(
         Input in the unit of the range-values; NaN where the output is held (see `fraction_of_output`).
     """
     low = np.asarray(lrv, dtype=np.float64)
-    x = fraction_of_output(
-        (np.asarray(current, dtype=np.float64) - ZERO_MA) / SPAN_MA, square_root, low_cut, hold
-    )
+    x = fraction_of_output((np.asarray(current, dtype=np.float64) - ZERO_MA) / SPAN_MA, square_root, low_cut, hold)
     return low + x * (np.asarray(urv, dtype=np.float64) - low)
 
 

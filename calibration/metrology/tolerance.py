@@ -99,9 +99,7 @@ class Tolerance:
         object.__setattr__(self, "form", Form(self.form))
         for figure, name in ((self.percent, "percentage"), (self.amount, "amount in input units")):
             if not math.isfinite(figure) or figure < 0.0:
-                raise ValueError(
-                    f"The {name} of a tolerance is {figure:g}; it must be a number of zero or more."
-                )
+                raise ValueError(f"The {name} of a tolerance is {figure:g}; it must be a number of zero or more.")
         if self.is_pair:
             parts = (self.first, self.second)
             if any(part is None or part.is_pair for part in parts):
@@ -111,9 +109,7 @@ class Tolerance:
         else:
             if self.first is not None or self.second is not None:
                 raise ValueError("Only a sum, or the larger, has parts.")
-            used = {Form.SPAN: self.percent, Form.READING: self.percent, Form.ABSOLUTE: self.amount}[
-                self.form
-            ]
+            used = {Form.SPAN: self.percent, Form.READING: self.percent, Form.ABSOLUTE: self.amount}[self.form]
             if used <= 0.0:
                 raise ValueError(f"A tolerance stated as “{self.form}” must be above zero.")
 
