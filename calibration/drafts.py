@@ -127,8 +127,24 @@ class Draft:
             tested_on=on or last.astimezone(self.zone).date(),
             readings=contents,
             standards=standards,
-            **{name: self.text(f"{kind}.{short}") for name, short in _CONDITION_COLUMNS.items()},
+            **self._conditions(kind),
         )
+
+    def unit_of(self, kind: str, condition: str) -> str:
+        """Unit of a condition ("ambient", "height", "static"): the one chosen, else the usual one of the tag."""
+        usual = self.sheet.basis.get("units", {})
+        return self.text(f"{kind}.{condition}-unit") or {
+            "ambient": usual.get("temperature", "degC"),
+            "height": "mm",
+            "static": usual.get("static", "bar"),
+        }[condition]
+
+    def _conditions(self, kind: str) -> dict[str, str]:
+        columns: dict[str, str] = {}
+        for condition, (column, unit_column) in _CONDITIONS.items():
+            if text := self.text(f"{kind}.{condition}"):
+                columns |= {column: text, unit_column: self.unit_of(kind, condition)}
+        return columns
 
     def _reading_content(
         self, run: DraftRun, row: DraftReading, entered: Mapping[str, datetime.datetime | None]
@@ -196,7 +212,7 @@ class Draft:
 def readable(
     basis: Basis, applied: str, unit: str, measured: str
 ) -> tuple[tuple[float, float] | None, dict[str, str]]:
-    """Input [unit of the range] and output [mA] of typed texts, where both are numbers; and what is wrong with which."""
+    """Input [unit of the range] and output [mA] where both texts are numbers, and what is wrong with which."""
     problems: dict[str, str] = {}
     figures = [math.nan, math.nan]
     for place, (name, text) in enumerate(zip(PARTS, (applied, measured), strict=True)):
@@ -224,11 +240,8 @@ def _digital_problem(text: str, basis: Basis) -> dict[str, str]:
     return {}
 
 
-_CONDITION_COLUMNS = {
-    "ambient": "ambient",
-    "ambient_unit": "ambient-unit",
-    "height_difference": "height",
-    "height_unit": "height-unit",
-    "static_pressure": "static",
-    "static_unit": "static-unit",
+_CONDITIONS = {
+    "ambient": ("ambient", "ambient_unit"),
+    "height": ("height_difference", "height_unit"),
+    "static": ("static_pressure", "static_unit"),
 }

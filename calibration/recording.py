@@ -7,7 +7,7 @@ canonical content, links it to the chain under its lock and keeps the summaries 
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Collection, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Final
 
@@ -44,8 +44,19 @@ __all__ = [
 ]
 
 _AT_ONCE: Final = 1000
-
-
+#: Columns of a test that follow from the version that counts …
+FOLLOWS: Final = (
+    "adjusted",
+    "accepted",
+    "as_found_verdict",
+    "as_left_verdict",
+    "as_found_worst",
+    "as_left_worst",
+    "as_found_ratio",
+    "as_left_ratio",
+)
+#: … and all that a new version changes.
+_SUMMARY: Final = ("state", "outcome", "tested_on", *FOLLOWS)
 def write_record(content: RecordContent, *, act: Act) -> Record:
     """Write one test; see `write_records`."""
     return write_records([content], act=act)[0]
@@ -197,21 +208,6 @@ def _write_batch(batch: Sequence[_Judged], *, plant: Plant, chain: ChainHead) ->
     return records
 
 
-_SUMMARY: Final = [
-    "state",
-    "outcome",
-    "tested_on",
-    "adjusted",
-    "accepted",
-    "as_found_verdict",
-    "as_left_verdict",
-    "as_found_worst",
-    "as_left_worst",
-    "as_found_ratio",
-    "as_left_ratio",
-]
-
-
 def _test(judged: _Judged, earlier: Mapping[int, Test]) -> Test:
     content = judged.content
     if content.test_id is not None:
@@ -225,7 +221,9 @@ def _test(judged: _Judged, earlier: Mapping[int, Test]) -> Test:
             sheet_id=content.sheet_id,
         )
     test.tested_on = content.tested_on
-    test.state = _state(content)
+    test.state = state_of(
+        {signature.meaning for signature in content.signatures}, transcribed=content.transcribed
+    )
     summarise(
         test,
         outcome=content.outcome,
@@ -236,13 +234,13 @@ def _test(judged: _Judged, earlier: Mapping[int, Test]) -> Test:
     return test
 
 
-def _state(content: RecordContent) -> Test.State:
-    meanings = {signature.meaning for signature in content.signatures}
+def state_of(meanings: Collection[str], *, transcribed: bool) -> Test.State:
+    """The state that the signatures of the version that counts give a test."""
     if Signature.Meaning.SENT_BACK in meanings:
         return Test.State.SENT_BACK
     if Signature.Meaning.REVIEWED in meanings:
         return Test.State.REVIEWED
-    return Test.State.TRANSCRIBED if content.transcribed else Test.State.SIGNED
+    return Test.State.TRANSCRIBED if transcribed else Test.State.SIGNED
 
 
 def _record(judged: _Judged, test: Test, named: Names, *, plant: Plant, chain: ChainHead) -> Record:

@@ -1,0 +1,91 @@
+"""One reading's error in words and as a bar, for the sheet and for the finished test."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from django.utils.safestring import SafeString
+
+from calibration.basis import Basis
+from calibration.judging import judge_one
+from calibration.marks import error_bar
+from register.figures import signed
+
+if TYPE_CHECKING:
+    from calibration.metrology.verdicts import ReadingJudgement
+
+DECIMALS_MA = 3
+DECIMALS_ERROR = 3
+_WORDS = {
+    "pass": ("inside", "ok"),
+    "conditional pass": ("inside, within the guard band", "near"),
+    "conditional fail": ("outside, within the guard band", "out"),
+    "fail": ("outside", "out"),
+    "not decidable": ("not decidable", "unknown"),
+    "incomplete": ("at the edge of the signal: the error is only a bound", "unknown"),
+}
+
+
+@dataclass(frozen=True, slots=True)
+class Result:
+    """What is said of one reading, ready to print; `in_input` only where the tolerance is stated in the input."""
+
+    error: str
+    in_input: str
+    input_unit: str
+    expected: str
+    limit: str
+    word: str
+    css: str
+    bar: SafeString
+
+    @property
+    def outside(self) -> bool:
+        return self.css == "out"
+
+
+def result_of(judged: ReadingJudgement, index: int, *, up: bool | None = None) -> Result:
+    """The result of one reading out of those judged together."""
+    from calibration.metrology.tolerance import Quantity
+    from calibration.metrology.verdicts import VERDICTS
+
+    error = float(judged.error[index])
+    limit = float(judged.judged_limit[index])
+    ratio = float(judged.ratio[index])
+    word, css = _WORDS[VERDICTS[int(judged.codes[index])]]
+    failure = _failure(float(judged.measured[index]))
+    if failure:
+        word, css = failure, "out"
+    by_input = judged.tolerance.quantity is Quantity.INPUT
+    in_input = float(judged.judged_error[index]) if by_input else math.nan
+    unit = judged.unit
+    stated = f"{signed(in_input, DECIMALS_ERROR)} {unit}" if by_input and not math.isnan(in_input) else ""
+    limit_words = f"±{limit:.4g} {unit}"
+    words = f"error {stated or signed(error, DECIMALS_ERROR) + ' % of span'}, limit {limit_words}: {word}"
+    return Result(
+        error=signed(error, DECIMALS_ERROR),
+        in_input=stated,
+        input_unit=unit if by_input else "",
+        expected=f"{float(judged.limits.ideal_ma[index]):.{DECIMALS_MA}f}",
+        limit=limit_words,
+        word=word,
+        css=css,
+        bar=error_bar(None if math.isnan(ratio) else ratio, words, up=up),
+    )
+
+
+def result_now(basis: Basis, kind: str, applied: float, measured: float, *, up: bool | None = None) -> Result:
+    """The result of a reading as it is typed: input in the unit of the range, output in mA."""
+    return result_of(judge_one(basis, kind, applied, measured), 0, up=up)
+
+
+def _failure(measured: float) -> str:
+    from calibration.metrology.signal import FAILURE_HIGH_MA, FAILURE_LOW_MA
+
+    if measured <= FAILURE_LOW_MA:
+        return f"failure current (≤ {FAILURE_LOW_MA:g} mA)"
+    if measured >= FAILURE_HIGH_MA:
+        return f"failure current (≥ {FAILURE_HIGH_MA:g} mA)"
+    return ""

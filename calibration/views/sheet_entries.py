@@ -1,0 +1,185 @@
+"""The one address that takes entries, field by field from htmx or as a JSON list; live judging; news of others."""
+
+from __future__ import annotations
+
+import datetime
+import json
+import uuid
+from collections.abc import Mapping
+from typing import Any
+
+from django.core.exceptions import ValidationError
+from django.http import HttpRequest, HttpResponse, HttpResponseBadRequest, JsonResponse
+from django.shortcuts import render
+from django.utils import timezone
+from django.utils.dateparse import parse_datetime
+from django.views.decorators.http import require_GET
+
+from calibration import sheet_page
+from calibration.drafts import Draft, readable
+from calibration.entries import NewEntry
+from calibration.models import Sheet
+from calibration.results import result_now
+from calibration.sheet_fields import KINDS, PRESENT, label, reading, reading_of
+from calibration.storing_entries import Stored, add_entries
+from calibration.views.sheet import SHEETS
+from calibration.views.sheet_contexts import run_context
+from register import access
+from register.auditing import Actor
+
+MOST_AT_ONCE = 2000
+
+
+def sheet_entries(request: HttpRequest, pk: object) -> HttpResponse:
+    """Take entries (POST), or show all that were ever made (GET)."""
+    if request.method != "POST":
+        return _history(request, access.get(request, SHEETS, "read", pk=pk))
+    held = access.get(request, SHEETS, "test", pk=pk)
+    as_json = request.content_type == "application/json"
+    try:
+        entries = _from_json(request.body) if as_json else [_from_form(request.POST)]
+    except ValidationError as error:
+        return JsonResponse({"error": error.messages[0]}, status=400)
+    stored = add_entries(by=Actor.of(request), sheet_id=held.pk, entries=entries)
+    if as_json:
+        return JsonResponse(_told(stored))
+    return _fragment(request, stored, entries[0])
+
+
+@require_GET
+def sheet_judge(request: HttpRequest, pk: object) -> HttpResponse:
+    """The result of a reading while it is being typed; nothing is stored."""
+    held = access.get(request, SHEETS, "read", pk=pk)
+    kind, key = request.GET.get("kind", ""), request.GET.get("key", "")
+    if kind not in KINDS or reading_of(reading(kind, key, "measured")) is None:
+        return HttpResponseBadRequest("No such reading.")
+    draft = Draft(held)
+    view = sheet_page.one_reading(draft, kind, key, sheet_page.Viewer(access.person(request)))
+    if view is None:
+        return HttpResponseBadRequest("No such reading.")
+    applied, measured = (request.GET.get(reading(kind, key, what), "").strip() for what in ("applied", "measured"))
+    figures, problems = readable(draft.basis, applied, draft.runs[kind].unit, measured)
+    row = next((row for row in draft.runs[kind].readings if row.key.partition("-")[0] == key.partition("-")[0]), None)
+    result = result_now(draft.basis, kind, *figures, up=row is None or row.direction > 0) if figures else None
+    context = {"reading": view, "result": result, "problems": list(problems.values()), "sheet": held}
+    return render(request, "calibration/sheet_run.html#result", context)
+
+
+@require_GET
+def sheet_news(request: HttpRequest, pk: object) -> HttpResponse:
+    """What others did since the page was loaded."""
+    held = access.get(request, SHEETS, "read", pk=pk)
+    since = parse_datetime(request.GET.get("since", "")) or timezone.now()
+    device = request.GET.get("device", "")
+    draft = Draft(held)
+    fresh = [
+        entry
+        for entry in draft.sheet.entries.select_related("person").filter(received_at__gt=since).order_by("-received_at")
+        if entry.field != PRESENT and not (device and entry.device.startswith(device)) and entry.device != "site"
+    ]
+    mine = access.person(request).pk
+    lines = [
+        {
+            "who": "You, on another device," if entry.person_id == mine else str(entry.person),
+            "what": f"typed “{entry.text}” at {label(entry.field)}",
+            "at": sheet_page.clock(entry.received_at, draft.zone),
+        }
+        for entry in fresh[:3]
+    ]
+    context = {
+        "sheet": held,
+        "others": sheet_page.others(draft, access.person(request), timezone.now()),
+        "fresh": lines,
+        "more": max(0, len(fresh) - 3),
+        "moved": held.get_stage_display() if request.GET.get("stage") not in ("", held.stage) else "",
+    }
+    return render(request, "calibration/sheet.html#news", context)
+
+
+def _history(request: HttpRequest, held: Sheet) -> HttpResponse:
+    draft = Draft(held)
+    rows = [
+        {
+            "at": sheet_page.clock(entry.received_at, draft.zone),
+            "who": str(entry.person),
+            "field": label(entry.field),
+            "text": entry.text,
+            "device": entry.device,
+            "settles": entry.settles,
+        }
+        for entry in held.entries.select_related("person").order_by("received_at", "device", "sequence")
+    ]
+    return render(request, "calibration/sheet_entries.html", {"sheet": held, "rows": rows})
+
+
+def _fragment(request: HttpRequest, stored: Stored, new: NewEntry) -> HttpResponse:
+    """What htmx puts beside the field: its result where it is a reading, else a note; and the state of the run."""
+    draft = stored.draft
+    viewer = sheet_page.Viewer(access.person(request))
+    refused = [why for _, why in stored.refused]
+    context: dict[str, Any] = {"sheet": draft.sheet, "draft": draft, "refused": refused, "saved": not refused}
+    belongs = reading_of(new.field)
+    if belongs is not None and (view := sheet_page.one_reading(draft, *belongs, viewer)) is not None:
+        context |= {"reading": view, "result": view.result, "oob": True}
+        context |= {"run": run_context(draft, belongs[0], viewer)}
+        response = render(request, "calibration/sheet_run.html#saved", context)
+    else:
+        context["field"] = sheet_page.field_view(draft, new.field, viewer, "; ".join(refused))
+        response = render(request, "calibration/sheet.html#note", context)
+    response["HX-Trigger"] = json.dumps({"entries-told": _told(stored)})
+    return response
+
+
+def _told(stored: Stored) -> dict[str, Any]:
+    return {
+        "saved": [str(number) for number in stored.saved],
+        "refused": [{"id": str(number), "why": why} for number, why in stored.refused],
+        "clashes": [kept.name for kept in stored.draft.clashes],
+        "stage": stored.draft.sheet.stage,
+        "at": sheet_page.clock(timezone.now(), stored.draft.zone),
+    }
+
+
+def _from_json(body: bytes) -> list[NewEntry]:
+    try:
+        sent = json.loads(body)
+    except ValueError as error:
+        raise ValidationError("The entries are not readable JSON.") from error
+    rows = sent.get("entries") if isinstance(sent, dict) else None
+    if not isinstance(rows, list) or not all(isinstance(row, dict) for row in rows):
+        raise ValidationError("Entries come as a list under “entries”.")
+    if len(rows) > MOST_AT_ONCE:
+        raise ValidationError(f"At most {MOST_AT_ONCE} entries are taken at once.")
+    return [_entry(row) for row in rows]
+
+
+def _from_form(sent: Mapping[str, Any]) -> NewEntry:
+    row = {name: sent[name] for name in sent if name != "seen"}
+    row["settles"] = sent.get("settles") == "yes"
+    row["seen"] = [part for part in sent.get("seen", "").split(" ") if part]
+    return _entry(row)
+
+
+def _entry(row: Mapping[str, Any]) -> NewEntry:
+    try:
+        typed_at = parse_datetime(str(row["typed_at"]))
+        if typed_at is None or typed_at.tzinfo is None:
+            raise ValueError("a time with its zone is wanted")
+        sequence = int(row["sequence"])
+        device = str(row["device"])
+        if not 0 <= sequence < 2**53 or not 0 < len(device) <= 60:
+            raise ValueError("device or sequence is out of bounds")
+        return NewEntry(
+            id=uuid.UUID(str(row["uuid"])),
+            field=str(row["field"])[:80],
+            text=str(row.get("text", "")).replace("\0", ""),
+            device=device,
+            sequence=sequence,
+            base=uuid.UUID(str(row["base"])) if row.get("base") else None,
+            typed_at=typed_at.astimezone(datetime.UTC),
+            schema_version=int(row.get("schema_version", 1)),
+            settles=row.get("settles") is True,
+            seen=tuple(uuid.UUID(str(number)) for number in row.get("seen", ())),
+        )
+    except (KeyError, ValueError, TypeError, OverflowError) as error:
+        raise ValidationError(f"An entry is incomplete or unreadable: {error}.") from error
