@@ -20,9 +20,9 @@ from register.forms.fields import (
 )
 from register.models import Maker, MeasuringHead, ReferenceKind, TransmitterType
 
-#: Empty rows offered below those of a body rating, and the most rows a table may have.
-SPARE_ROWS: Final = 3
-MOST_ROWS: Final = 40
+#: Rows offered for a body rating: at least so many, and so many empty ones below those that stand.
+LEAST_ROWS: Final = 8
+SPARE_ROWS: Final = 4
 
 
 class MakerForm(RegisterForm):
@@ -93,15 +93,14 @@ class TypeFields(RegisterForm):
         label="High failure current (mA)", required=False, least=20, most=30, help_text="Empty: 22.5."
     )
 
-    def __init__(self, *args: Any, rating: Sequence[Sequence[str]] = (), more: bool = False, **kwargs: Any) -> None:
+    def __init__(self, *args: Any, rating: Sequence[Sequence[str]] = (), **kwargs: Any) -> None:
         super().__init__(*args, **kwargs)
-        rows = len(rating) + SPARE_ROWS
+        rows = max(LEAST_ROWS, len(rating) + SPARE_ROWS)
         if self.is_bound:
             rows = 0
-            while rows < MOST_ROWS and self.add_prefix(f"temperature_{rows}") in self.data:
+            while self.add_prefix(f"temperature_{rows}") in self.data:
                 rows += 1
-            rows += SPARE_ROWS if more else 0
-        self.rows = min(rows, MOST_ROWS)
+        self.rows = rows
         for row in range(self.rows):
             for column, label in enumerate(("temperature", "pressure")):
                 name = f"{label}_{row}"

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from functools import partial
-from typing import Any
 
 from django.contrib import messages
 from django.http import HttpRequest, HttpResponse
@@ -67,44 +66,32 @@ def type_(request: HttpRequest, pk: int) -> HttpResponse:
 
 
 def type_new(request: HttpRequest) -> HttpResponse:
-    more = "more" in request.POST
-    form = NewTypeForm(typed(request), more=more, initial={"maker": request.GET.get("maker")})
-    values = partial(form.values, "maker")
-    new = (
-        None
-        if more
-        else form.submit(
-            lambda: editing.create_type(by=Actor.of(request), maker=form.cleaned_data["maker"], values=values())
-        )
+    form = NewTypeForm(typed(request), initial={"maker": request.GET.get("maker")})
+    new = form.submit(
+        lambda: editing.create_type(by=Actor.of(request), maker=form.cleaned_data["maker"], values=form.values("maker"))
     )
     if new is not None:
         messages.success(request, f"{new} is in the catalogue. Next: add its measuring heads.")
         return redirect("type", new.pk)
-    return render(request, "register/type_form.html", {"form": _unjudged(form, more), "makers": Maker.objects.exists()})
+    return render(request, "register/type_form.html", {"form": form, "makers": Maker.objects.exists()})
 
 
 def type_edit(request: HttpRequest, pk: int) -> HttpResponse:
     shown = get_object_or_404(TransmitterType.objects.select_related("maker"), pk=pk)
-    more = "more" in request.POST
     form = EditTypeForm(
         typed(request),
-        more=more,
         rating=shown.body_rating,
         initial=initial_of_type(shown),
         latest=latest_change(shown),
         changes=partial(changes_since, shown, fields=[*TypeFields.base_fields, "body_rating"]),
     )
-    edited = (
-        None
-        if more
-        else form.submit(
-            lambda: editing.edit_type(by=Actor.of(request), reason=form.why, type_=shown, values=form.values())
-        )
+    edited = form.submit(
+        lambda: editing.edit_type(by=Actor.of(request), reason=form.why, type_=shown, values=form.values())
     )
     if edited is not None:
         messages.success(request, f"{edited} is changed; tags where one is fitted are checked again.")
         return redirect("type", shown.pk)
-    return render(request, "register/type_form.html", {"form": _unjudged(form, more), "type": shown, "makers": True})
+    return render(request, "register/type_form.html", {"form": form, "type": shown, "makers": True})
 
 
 def head(request: HttpRequest, pk: int) -> HttpResponse:
@@ -181,11 +168,3 @@ def maker_edit(request: HttpRequest, pk: int) -> HttpResponse:
         messages.success(request, f"The maker is called {edited} now.")
         return redirect("makers")
     return render(request, "register/maker_form.html", {"form": form, "maker": shown})
-
-
-def _unjudged(form: Any, more: bool) -> Any:
-    """A form that was sent for more rows only: nothing in it is called wrong yet."""
-    if more:
-        form.full_clean()
-        form.errors.clear()
-    return form
