@@ -31,7 +31,7 @@ def record_intervention(
     if kind == NEW_HEAD:
         raise ValidationError({"kind": "A new head also changes the limits: record it with “Change the head”."})
     transmitter = _locked(transmitter.pk)
-    _check_day(transmitter, done_on)
+    _check_day(transmitter, done_on, field="done_on")
     act = Act(by, reason)
     done = Intervention(
         transmitter=transmitter, kind=kind, done_on=done_on, breaks_history=breaks_history, reason=reason
@@ -49,7 +49,7 @@ def change_head(
         raise ValidationError(
             {"head": f"The head {head.code} does not go with the type {transmitter.type.designation}."}
         )
-    _check_day(transmitter, on)
+    _check_day(transmitter, on, field="on")
     later = transmitter.interventions.filter(kind=NEW_HEAD, withdrawn_at__isnull=True, done_on__gt=on).first()
     if later is not None:
         raise ValidationError(
@@ -127,12 +127,12 @@ def _locked(pk: int) -> Transmitter:
     return rows.select_related("plant", "maker", "type", "head").get(pk=pk)
 
 
-def _check_day(transmitter: Transmitter, on: datetime.date) -> None:
+def _check_day(transmitter: Transmitter, on: datetime.date, *, field: str) -> None:
     today = transmitter.plant.today()
     if on > today:
-        raise ValidationError({"on": f"{on} is still to come (today is {today}): note it when it has happened."})
+        raise ValidationError({field: f"{on} is still to come (today is {today}): note it when it has happened."})
     if transmitter.made_on is not None and on < transmitter.made_on:
-        raise ValidationError({"on": f"{transmitter} was made on {transmitter.made_on}, after {on}."})
+        raise ValidationError({field: f"{transmitter} was made on {transmitter.made_on}, after {on}."})
 
 
 def _tag_on(transmitter: Transmitter, on: datetime.date) -> Tag | None:
