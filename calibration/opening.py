@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import uuid
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from typing import Any, Final
 
 from django.core.exceptions import ValidationError
@@ -43,15 +43,19 @@ def open_sheet(*, by: Actor, reason: str, tag: Tag, sheet_id: uuid.UUID) -> Shee
     fitting, used, requirement = locked.current_fitting, locked.current_range, current_requirement(locked)
     assert fitting is not None and used is not None and requirement is not None
     transmitter = _transmitter(fitting.transmitter_id)
-    basis = terms_at(
-        tag=locked, transmitter=transmitter, head=transmitter.head, used=used, requirement=requirement
-    )
+    basis = terms_at(tag=locked, transmitter=transmitter, head=transmitter.head, used=used, requirement=requirement)
     return _opened(by, reason, sheet_id, locked.plant, transmitter, basis, tag=locked, fitting=fitting)
 
 
 @transaction.atomic
 def open_bench_sheet(
-    *, by: Actor, reason: str, transmitter: Transmitter, sheet_id: uuid.UUID, point_list: PointList, values: Mapping[str, Any]
+    *,
+    by: Actor,
+    reason: str,
+    transmitter: Transmitter,
+    sheet_id: uuid.UUID,
+    point_list: PointList,
+    values: Mapping[str, Any],
 ) -> Sheet:
     """Open a sheet for a spare that is fitted nowhere; range and tolerance are typed in.
 
@@ -125,9 +129,18 @@ def open_correction(*, by: Actor, reason: str, test: Test, sheet_id: uuid.UUID) 
 
 
 def terms_at(
-    *, tag: Tag, transmitter: Transmitter, head: MeasuringHead, used: Range, requirement: Requirement
+    *,
+    tag: Tag,
+    transmitter: Transmitter,
+    head: MeasuringHead,
+    used: Range,
+    requirement: Requirement,
+    lines: Iterable[GuidanceLine] | None = None,
 ) -> Basis:
-    """What a test at a tag is judged by and what is shown with it; plant, area and type are at hand on the rows."""
+    """What a test at a tag is judged by and what is shown with it.
+
+    Plant, area and type are at hand on the rows; `lines`: those of `guidance_lines`, where many terms are worked out.
+    """
     return Basis.of(
         used=used,
         requirement=requirement,
@@ -143,7 +156,7 @@ def terms_at(
             "units": {"temperature": tag.temperature_unit, "static": tag.pressure_unit},
             "digital": transmitter.type.digital,
             "site_first": SITE_FIRST,
-            **_guidance(tag.plant, tag, transmitter, used.transfer),
+            **_guidance(guidance_lines(tag.plant) if lines is None else lines, tag, transmitter, used.transfer),
         },
     )
 
@@ -166,7 +179,7 @@ def terms_on_the_bench(
             "units": {"temperature": transmitter.type.temperature_unit, "static": transmitter.type.pressure_unit},
             "digital": transmitter.type.digital,
             "site_first": SITE_FIRST,
-            **_guidance(transmitter.plant, None, transmitter, used.transfer),
+            **_guidance(guidance_lines(transmitter.plant), None, transmitter, used.transfer),
         },
     )
 
@@ -295,12 +308,19 @@ def _each_fact(tag: Tag) -> Iterator[dict[str, str]]:
             yield {"what": what, "value": text}
 
 
-def _guidance(plant: Plant, tag: Tag | None, transmitter: Transmitter, transfer: str) -> dict[str, list[dict[str, str]]]:
+def guidance_lines(plant: Plant) -> list[GuidanceLine]:
+    """Cautions and checklist lines of a plant as they are worded today, in their order."""
+    return list(GuidanceLine.objects.filter(plant=plant, withdrawn_at=None).order_by("part", "order", "id"))
+
+
+def _guidance(
+    lines: Iterable[GuidanceLine], tag: Tag | None, transmitter: Transmitter, transfer: str
+) -> dict[str, list[dict[str, str]]]:
     """Cautions and return-to-service checklist as they are worded today, and the tag's own isolation sequence."""
     applies = _applies(tag, transmitter, transfer)
     condensing = tag is not None and tag.condensing_service
     parts: dict[str, list[dict[str, str]]] = {"cautions": [], "checklist": []}
-    for line in GuidanceLine.objects.filter(plant=plant, withdrawn_at=None).order_by("part", "order", "id"):
+    for line in lines:
         if line.applies not in applies:
             continue
         # Opening the equaliser would drain the condensate legs: the two lines must never stand side by side.
@@ -310,7 +330,7 @@ def _guidance(plant: Plant, tag: Tag | None, transmitter: Transmitter, transfer:
         required = line.required and tag is not None and not (condensing and line.key == "zero-at-line")
         part = "cautions" if line.part == GuidanceLine.Part.CAUTION else "checklist"
         parts[part].append(_line(line.key, line.text, line.answer, required=required))
-    steps = (tag.isolation_sequence.splitlines() if tag is not None else ())
+    steps = tag.isolation_sequence.splitlines() if tag is not None else ()
     parts["cautions"] += [
         _line(f"isolation-{number}", step.strip(), GuidanceLine.Answer.TICK, required=True)
         for number, step in enumerate((step for step in steps if step.strip()), start=1)
