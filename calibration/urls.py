@@ -4,7 +4,17 @@ from __future__ import annotations
 
 from django.urls import URLPattern, URLResolver, path
 
-from calibration.views import guidance, point_lists, standards
+from calibration.views import (
+    finished,
+    guidance,
+    lists_of_tests,
+    point_lists,
+    sheet,
+    sheet_ends,
+    sheet_entries,
+    sheet_opening,
+    standards,
+)
 from register.access import needs
 
 urlpatterns: list[URLPattern | URLResolver] = [
@@ -34,4 +44,31 @@ urlpatterns: list[URLPattern | URLResolver] = [
     path("guidance/new/", needs("edit guidance")(guidance.guidance_new), name="guidance-new"),
     path("guidance/<int:pk>/edit/", needs("edit guidance")(guidance.guidance_edit), name="guidance-edit"),
     path("guidance/<int:pk>/withdraw/", needs("edit guidance")(guidance.guidance_withdraw), name="guidance-withdraw"),
+    path("tags/<int:pk>/test/", needs("test")(sheet_opening.sheet_open), name="sheet-open"),
+    path("transmitters/<int:pk>/test/", needs("test")(sheet_opening.sheet_bench), name="sheet-bench"),
+    path("tests/<int:pk>/correct/", needs("test")(sheet_opening.sheet_correct), name="sheet-correct"),
+    path("sheets/", needs("read")(lists_of_tests.sheets), name="sheets"),
+    path("sheets/<uuid:pk>/", needs("read")(sheet.sheet), name="sheet"),
+    path("sheets/<uuid:pk>/entries/", needs("read")(sheet_entries.sheet_entries), name="sheet-entries"),
+    path("sheets/<uuid:pk>/judge/", needs("read")(sheet_entries.sheet_judge), name="sheet-judge"),
+    path("sheets/<uuid:pk>/news/", needs("read")(sheet_entries.sheet_news), name="sheet-news"),
+    path("sheets/<uuid:pk>/settle/", needs("test")(sheet_ends.sheet_settle), name="sheet-settle"),
+    path("sheets/<uuid:pk>/sign/", needs("test")(sheet.sign), name="sheet-sign"),
+    path("sheets/<uuid:pk>/steps/<slug:name>/", needs("test")(sheet.step), name="sheet-step"),
+    path(
+        "sheets/<uuid:pk>/could-not-test/",
+        needs("test")(sheet_ends.sheet_could_not_test),
+        name="sheet-could-not-test",
+    ),
+    path("sheets/<uuid:pk>/abandon/", needs("test")(sheet_ends.sheet_abandon), name="sheet-abandon"),
+    path(
+        "sheets/<uuid:pk>/exceptions/<int:standard>/",
+        needs("read")(sheet_ends.sheet_exception),
+        name="sheet-exception",
+    ),
+    path("tests/", needs("read")(lists_of_tests.tests), name="tests"),
+    path("tests/<int:pk>/", needs("read")(finished.test), name="test"),
+    path("tests/<int:pk>/readings.csv", needs("read")(finished.test_readings), name="test-readings"),
+    path("tests/<int:pk>/review/", needs("review")(finished.test_review), name="test-review"),
+    path("tests/<int:pk>/send-back/", needs("review")(finished.test_send_back), name="test-send-back"),
 ]

@@ -61,6 +61,8 @@ class Test(models.Model):
         ordering = ["-tested_on", "-id"]
         indexes = [
             models.Index(fields=["plant", "-tested_on", "-id"], name="test_by_plant"),
+            models.Index(fields=["plant", "state", "-tested_on", "-id"], name="test_by_state"),
+            models.Index(fields=["plant", "as_found_verdict", "-tested_on", "-id"], name="test_by_verdict"),
             models.Index(fields=["tag", "-tested_on", "-id"], name="test_by_tag"),
             models.Index(fields=["transmitter", "-tested_on", "-id"], name="test_by_transmitter"),
         ]
