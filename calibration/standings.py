@@ -9,13 +9,13 @@ from __future__ import annotations
 import datetime
 import re
 from collections import defaultdict
-from collections.abc import Collection, Iterable
+from collections.abc import Collection, Iterable, Mapping
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 from zoneinfo import ZoneInfo
 
 from calibration.models import Deferral, Requirement, Standing, Test
-from calibration.models.standing import NO_DATE, NO_ERROR
+from calibration.models.standing import NO_ERROR
 from register.models import Fitting, Flag, Intervention, Range, Tag, TransmitterType
 
 if TYPE_CHECKING:
@@ -38,7 +38,7 @@ class History:
     requirements: dict[int, Requirement] = field(default_factory=dict)
     ranges: dict[int, list[Range]] = field(default_factory=lambda: defaultdict(list))
     restarts: dict[int, list[datetime.date]] = field(default_factory=lambda: defaultdict(list))
-    tests: dict[int, list[dict[str, Any]]] = field(default_factory=lambda: defaultdict(list))
+    tests: dict[int, list[Mapping[str, Any]]] = field(default_factory=lambda: defaultdict(list))
     deferrals: dict[int, list[Deferral]] = field(default_factory=lambda: defaultdict(list))
     flags: dict[int, list[tuple[int, bool]]] = field(default_factory=lambda: defaultdict(list))
 
@@ -86,7 +86,7 @@ def read(tag_ids: Collection[int]) -> History:
     return history
 
 
-def _tests(tag_ids: Collection[int]) -> Iterable[dict[str, Any]]:
+def _tests(tag_ids: Collection[int]) -> Iterable[Mapping[str, Any]]:
     return (
         Test.objects.filter(tag_id__in=tag_ids, outcome=Test.Outcome.DONE)
         .order_by("tag_id", "tested_on", "id")
@@ -214,13 +214,13 @@ def _equal(lrv: float, urv: float, other_lrv: float, other_urv: float) -> bool:
     return abs(lrv - other_lrv) <= slack and abs(urv - other_urv) <= slack
 
 
-def _belongs(test: dict[str, Any], fitting: Fitting) -> bool:
+def _belongs(test: Mapping[str, Any], fitting: Fitting) -> bool:
     if test["fitting_id"] is not None:
         return bool(test["fitting_id"] == fitting.pk)
     return bool(test["transmitter_id"] == fitting.transmitter_id and test["tested_on"] >= fitting.fitted_on)
 
 
-def _proves(test: dict[str, Any], since: datetime.date, span: Range | None) -> bool:
+def _proves(test: Mapping[str, Any], since: datetime.date, span: Range | None) -> bool:
     """Whether a test shows that the transmitter is right as it is fitted and ranged now.
 
     A test of the very day on which the work was done counts where it was made in the present range.

@@ -122,9 +122,7 @@ class Standing(models.Model):
             models.Index(
                 fields=["plant", "deferred_until"], condition=Q(deferred_until__isnull=False), name="standing_deferred"
             ),
-            models.Index(
-                fields=["plant", "accepted_flags"], condition=Q(accepted_flags__gt=0), name="standing_accepted"
-            ),
+            models.Index(fields=["plant", "accepted_flags"], name="standing_accepted"),
             models.Index(fields=["plant", "grace_span"], name="standing_grace_span"),
             models.Index(fields=["plant", "lead_span"], name="standing_lead_span"),
         ]
