@@ -118,6 +118,7 @@ BEFORE_BACKDATING = ["calibration.objections.to_backdating"]
 #: Acts of `manage.py apply_planned`, in their order, with what they count: one of them, several of them.
 EVERY_DAY = {
     "register.reranging.apply_planned": ("planned range is in force", "planned ranges are in force"),
+    "calibration.scheduling.apply_planned": ("planned requirement is in force", "planned requirements are in force"),
     "register.flagging.end_lapsed_acceptances": ("acceptance has ended", "acceptances have ended"),
 }
 #: Functions called with a new plant and who made it, in the transaction of the act that makes it.
