@@ -18,6 +18,6 @@ def to_backdating(tag: Tag, on: datetime.date) -> str:
     if test is None:
         return ""
     return (
-        f"{tag} was tested on {test.tested_on}, after {on}, with what the register says now: "
-        f"the change can begin on {test.tested_on} at the earliest."
+        f"{tag} was tested on {test.tested_on}, after {on}, by what the register says now: "
+        f"nothing before {test.tested_on} is changed any more."
     )

@@ -2,6 +2,9 @@
 
 `values` maps field names to values as a form or an import gives them; where a thing is edited, fields that are
 not named stay as they are. Acts raise `ValidationError` by field, in the user's words.
+
+What tags share (plant, area, catalogue) is locked before its tags, but without its key: an act on one tag, which
+holds the tag and then refers to its plant, never waits for it.
 """
 
 from __future__ import annotations
@@ -47,7 +50,7 @@ def create_plant(*, by: Actor, reason: str = "", values: Values) -> Plant:
 @transaction.atomic
 def edit_plant(*, by: Actor, reason: str, plant: Plant, values: Values) -> Plant:
     """Edit a plant; another barometric pressure is checked at all of its tags."""
-    plant = Plant.objects.select_for_update().get(pk=plant.pk)
+    plant = Plant.objects.select_for_update(no_key=True).get(pk=plant.pk)
     act = Act(by, reason)
     changed = _edit(act, plant, values, plant)
     barometric = changed & {"barometric_pressure", "barometric_unit"}
@@ -69,7 +72,7 @@ def create_area(*, by: Actor, reason: str = "", plant: Plant, values: Values) ->
 @transaction.atomic
 def edit_area(*, by: Actor, reason: str, area: Area, values: Values) -> Area:
     """Edit an area; all of its tags are checked again."""
-    area = Area.objects.select_for_update(of=("self",)).select_related("plant").get(pk=area.pk)
+    area = Area.objects.select_for_update(of=("self",), no_key=True).select_related("plant").get(pk=area.pk)
     act = Act(by, reason)
     changed = _edit(act, area, values, area.plant)
     settle(act, _ids(Tag.objects.filter(area=area)) if changed else [])
@@ -84,7 +87,7 @@ def create_maker(*, by: Actor, reason: str = "", values: Values) -> Maker:
 @transaction.atomic
 def edit_maker(*, by: Actor, reason: str, maker: Maker, values: Values) -> Maker:
     """Rename a maker; what tags show of it is told to the schedule."""
-    maker = Maker.objects.select_for_update().get(pk=maker.pk)
+    maker = Maker.objects.select_for_update(no_key=True).get(pk=maker.pk)
     act = Act(by, reason)
     changed = _edit(act, maker, values, None)
     settle(act, _fitted(transmitter__maker=maker) if changed else [])
@@ -101,7 +104,9 @@ def create_type(*, by: Actor, reason: str = "", maker: Maker, values: Values) ->
 @transaction.atomic
 def edit_type(*, by: Actor, reason: str, type_: TransmitterType, values: Values) -> TransmitterType:
     """Edit a type; every tag at which one of it is fitted is checked again, in all plants."""
-    type_ = TransmitterType.objects.select_for_update(of=("self",)).select_related("maker").get(pk=type_.pk)
+    type_ = (
+        TransmitterType.objects.select_for_update(of=("self",), no_key=True).select_related("maker").get(pk=type_.pk)
+    )
     _check_rating(values, type_)
     if values.get("maker", type_.maker) != type_.maker and type_.transmitters.exists():
         raise ValidationError({"maker": f"Transmitters of this type are registered under {type_.maker} already."})
@@ -119,7 +124,9 @@ def create_head(*, by: Actor, reason: str = "", type_: TransmitterType, values: 
 @transaction.atomic
 def edit_head(*, by: Actor, reason: str, head: MeasuringHead, values: Values) -> MeasuringHead:
     """Edit a measuring head; every tag at which a transmitter with it is fitted is checked again."""
-    head = MeasuringHead.objects.select_for_update(of=("self",)).select_related("type__maker").get(pk=head.pk)
+    head = (
+        MeasuringHead.objects.select_for_update(of=("self",), no_key=True).select_related("type__maker").get(pk=head.pk)
+    )
     act = Act(by, reason)
     changed = _edit(act, head, values, None)
     settle(act, _fitted(transmitter__head=head) if changed else [])
