@@ -8,7 +8,6 @@ from typing import Any, ClassVar, Final
 
 from django import forms
 
-from register.engineering.rating import RatingError, rating_table
 from register.engineering.units import PRESSURE, TEMPERATURE
 from register.forms.fields import (
     ChangeForm,
@@ -117,6 +116,8 @@ class TypeFields(RegisterForm):
         return 22.5 if given is None else given
 
     def clean(self) -> dict[str, Any]:
+        from register.engineering.rating import RatingError, rating_table
+
         cleaned: dict[str, Any] = super().clean() or self.cleaned_data
         pairs: list[list[str]] = []
         for row in range(self.rows):
