@@ -6,11 +6,13 @@ import datetime
 from collections.abc import Collection
 from dataclasses import dataclass
 from functools import cache
+from typing import Any
 from zoneinfo import ZoneInfo
 
 from django.apps import apps
 from django.core.exceptions import FieldDoesNotExist
-from django.db.models import Count, Exists, Model, OuterRef, Prefetch, Q, QuerySet
+from django.db.models import Count, Exists, Model, OuterRef, Prefetch, Q, QuerySet, Subquery
+from django.db.models.functions import Coalesce
 
 from register.models import (
     Area,
@@ -149,24 +151,30 @@ class TransmitterFilter:
 def types_with_counts(plant: Plant, maker_id: int | None = None) -> QuerySet[TransmitterType]:
     """Transmitter types with their number of heads, and of transmitters in a plant."""
     rows = TransmitterType.objects.select_related("maker").annotate(
-        head_count=Count("heads", distinct=True),
-        transmitter_count=Count("transmitters", filter=Q(transmitters__plant=plant), distinct=True),
+        head_count=_count_of(MeasuringHead.objects.all(), "type"),
+        transmitter_count=_count_of(Transmitter.objects.filter(plant=plant), "type"),
     )
     return rows if maker_id is None else rows.filter(maker=maker_id)
 
 
 def heads_of(type_: TransmitterType, plant: Plant) -> QuerySet[MeasuringHead]:
     """Heads of a type, smallest first, with the number of transmitters in a plant."""
-    count = Count("transmitters", filter=Q(transmitters__plant=plant))
+    count = _count_of(Transmitter.objects.filter(plant=plant), "head")
     return type_.heads.annotate(transmitter_count=count).order_by("url_si", "code")
 
 
 def makers_with_counts() -> QuerySet[Maker]:
-    return Maker.objects.annotate(type_count=Count("types")).order_by("name")
+    return Maker.objects.annotate(type_count=_count_of(TransmitterType.objects.all(), "maker")).order_by("name")
 
 
 def areas_with_counts(plant: Plant) -> QuerySet[Area]:
-    return plant.areas.annotate(tag_count=Count("tags")).order_by("code")
+    return plant.areas.annotate(tag_count=_count_of(Tag.objects.all(), "area")).order_by("code")
+
+
+def _count_of(rows: QuerySet[Any], name: str) -> Coalesce:
+    """How many of the rows point by the named column at the row that is read; counted on an index, row by row."""
+    counted = rows.filter(**{name: OuterRef("pk")}).order_by().values(name).annotate(count=Count("pk")).values("count")
+    return Coalesce(Subquery(counted), 0)
 
 
 @dataclass(frozen=True, slots=True)
@@ -227,3 +235,29 @@ def type_in_words(thing_type: str) -> str:
         return str(apps.get_model(thing_type)._meta.verbose_name)
     except LookupError:
         return thing_type.rpartition(".")[2]
+
+
+@dataclass(frozen=True, slots=True)
+class DemonstrationPerson:
+    """A person whose password is public, as the sign-in page and `manage.py start` show him."""
+
+    name: str
+    role: str
+    password: str
+
+
+def demonstration_people() -> list[DemonstrationPerson]:
+    """Demonstration people who can sign in, in the order of the demonstration, without those of another password."""
+    from fixtures.demonstration.people import PASSWORD, PEOPLE
+
+    active = dict(User.objects.filter(is_demonstration=True, is_active=True).values_list("username", "pk"))
+    changed = set(
+        AuditEntry.objects.filter(
+            thing_type=User._meta.label_lower, thing_id__in=[str(pk) for pk in active.values()], field="password"
+        ).values_list("thing_id", flat=True)
+    )
+    return [
+        DemonstrationPerson(person.username, person.does, PASSWORD)
+        for person in PEOPLE
+        if person.username in active and str(active[person.username]) not in changed
+    ]

@@ -44,6 +44,9 @@ class Transmitter(models.Model):
         indexes = [
             models.Index(fields=["plant", "serial"], name="transmitter_by_serial"),
             models.Index("plant", SearchKey("serial"), name="transmitter_by_serial_key"),
+            models.Index(fields=["plant", "whereabouts", "serial"], name="transmitter_by_whereabouts"),
+            models.Index(fields=["plant", "type", "serial"], name="transmitter_by_type"),
+            models.Index(fields=["plant", "head", "serial"], name="transmitter_by_head"),
         ]
 
     def __str__(self) -> str:
