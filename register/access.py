@@ -14,6 +14,7 @@ from django.contrib.auth.views import redirect_to_login
 from django.core.exceptions import PermissionDenied
 from django.db import models
 from django.http import Http404, HttpRequest, HttpResponse, JsonResponse
+from django.http.response import HttpResponseBase
 from django.shortcuts import get_object_or_404, redirect, resolve_url
 
 from register.models import Area, Flag, Membership, Plant, Role, Tag, Transmitter, User
@@ -32,6 +33,7 @@ PERMISSIONS: Final[dict[str, frozenset[str]]] = {
     "allow exception": frozenset({Role.ENGINEER, Role.REVIEWER}),
     "plan": frozenset({Role.PLANNER}),
     "approve deferral": frozenset({Role.ENGINEER}),
+    "withdraw deferral": frozenset({Role.ENGINEER, Role.PLANNER}),
     "edit standards": frozenset({Role.ENGINEER, Role.PLANNER, Role.ADMINISTRATOR}),
     "edit guidance": frozenset({Role.ENGINEER, Role.ADMINISTRATOR}),
     "import": frozenset({Role.ENGINEER, Role.ADMINISTRATOR}),
@@ -44,7 +46,7 @@ OPEN: Final = frozenset({"public", "signed in"})
 #: Pages of somebody whose password was given to him by another: nothing may be done or signed with it.
 WITH_TEMPORARY_PASSWORD: Final = frozenset({"password", "sign-out"})
 
-View = Callable[..., HttpResponse]
+View = Callable[..., HttpResponseBase]
 V = TypeVar("V", bound=View)
 M = TypeVar("M", bound=models.Model)
 
@@ -55,7 +57,7 @@ def needs(permission: str) -> Callable[[V], V]:
         raise ValueError(f"no such permission: {permission}")
 
     def mark(view: V) -> V:
-        def guarded(request: HttpRequest, *args: Any, **kwargs: Any) -> HttpResponse:
+        def guarded(request: HttpRequest, *args: Any, **kwargs: Any) -> HttpResponseBase:
             return view(request, *args, **kwargs)
 
         guarded.__name__ = getattr(view, "__name__", "view")
