@@ -12,10 +12,17 @@ from django.db import models
 from django.http import HttpRequest
 from django.utils import timezone
 
+from register.bulk import insert
 from register.models import AuditEntry, Plant, User
 
 #: Things that belong to something else than a tag, a transmitter or a standard.
 BELONGS_TO: Final[Mapping[str, tuple[str, ...]]] = {"measuringhead": ("type",)}
+#: Of an entry: what the act gives, what is noted, the reason.
+_COLUMNS: Final = (
+    *("act", "at", "person_id", "person_name", "remote_address"),
+    *("kind", "plant_id", "thing_type", "thing_id", "thing_label", "field", "before", "after"),
+    "reason",
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -39,7 +46,7 @@ class Act:
     reason: str = ""
     id: uuid.UUID = field(default_factory=uuid.uuid4)
     at: datetime.datetime = field(default_factory=timezone.now)
-    _entries: list[AuditEntry] = field(default_factory=list)
+    _entries: list[tuple[Any, ...]] = field(default_factory=list)
 
     def created(self, thing: models.Model, *, plant: Plant | int | None) -> None:
         """Note a new thing: one entry."""
@@ -65,7 +72,12 @@ class Act:
 
     def write(self) -> None:
         """Insert what was collected; call inside the transaction of the act."""
-        AuditEntry.objects.bulk_create(self._entries, batch_size=1000)
+        if not self._entries:
+            return
+        person = self.by.person
+        name = str(person)[:120] if person else ""
+        shared = (self.id, self.at, person.pk if person else None, name, self.by.remote_address)
+        insert(AuditEntry, _COLUMNS, ((*shared, *entry, self.reason[:300]) for entry in self._entries))
         self._entries.clear()
 
     def _note(
@@ -79,21 +91,15 @@ class Act:
         after: Any = None,
     ) -> None:
         self._entries.append(
-            AuditEntry(
-                act=self.id,
-                at=self.at,
-                kind=kind,
-                person=self.by.person,
-                person_name=str(self.by.person)[:120] if self.by.person else "",
-                remote_address=self.by.remote_address,
-                plant_id=plant.pk if isinstance(plant, Plant) else plant,
-                thing_type=thing._meta.label_lower,
-                thing_id="" if thing.pk is None else str(thing.pk),
-                thing_label=label(thing)[:200],
-                field=name,
-                before=as_text(before),
-                after=as_text(after),
-                reason=self.reason[:300],
+            (
+                str(kind),
+                plant.pk if isinstance(plant, Plant) else plant,
+                thing._meta.label_lower,
+                "" if thing.pk is None else str(thing.pk),
+                label(thing)[:200],
+                name,
+                as_text(before),
+                as_text(after),
             )
         )
 

@@ -17,8 +17,9 @@ from django.core.exceptions import ValidationError
 from django.db import transaction
 
 from register.auditing import Act, Actor, snapshot
+from register.bulk import columns_of, insert, values_of
 from register.changes import announce
-from register.checking import CHUNK, findings, with_inputs
+from register.checking import CHUNK, findings, fleet_of, with_inputs
 from register.models import Flag, Plant, Tag
 
 if TYPE_CHECKING:
@@ -157,14 +158,15 @@ def _recompute(ids: list[int], act: Act) -> None:
     rows: dict[int, dict[str, Flag]] = {}
     for flag in Flag.objects.filter(tag__in=ids).select_related("accepted_by"):
         rows.setdefault(flag.tag_id, {})[flag.check_key] = flag
+    concerns = _concerns(ids)
     added: list[Flag] = []
     altered: list[Flag] = []
-    for tag in with_inputs(ids):
+    for tag in with_inputs([*rows, *concerns]):
         known = rows.get(tag.pk, {})
         for flag in known.values():
             flag.tag = tag
         before = _listed(known.values())
-        for finding in findings(tag):
+        for finding in findings(tag, checks=[*known, *concerns.get(tag.pk, ())]):
             row = known.get(finding.check)
             if row is None:
                 if finding.severity.name != Flag.Severity.CLEAR.name:
@@ -173,8 +175,22 @@ def _recompute(ids: list[int], act: Act) -> None:
             elif _brought_up_to(row, finding, act):
                 altered.append(row)
         act.changed(tag, plant=tag.plant_id, before={"flags": before}, after={"flags": _listed(known.values())})
-    Flag.objects.bulk_create(added, batch_size=CHUNK)
+    columns = columns_of(Flag)
+    insert(Flag, columns, values_of(added, columns))
     Flag.objects.bulk_update(altered, [*COMPUTED, *ACCEPTANCE], batch_size=CHUNK)
+
+
+def _concerns(ids: list[int]) -> dict[int, list[str]]:
+    """The checks of each tag that are not clear, found over all tags at once; nothing where all are clear."""
+    from register.engineering.findings import CHECKS
+    from register.engineering.fleet import severities
+
+    keys = list(CHECKS)
+    ids, fleet = fleet_of(ids)
+    concerns: dict[int, list[str]] = {}
+    for row, column in zip(*severities(fleet).nonzero(), strict=True):
+        concerns.setdefault(ids[row], []).append(keys[column])
+    return concerns
 
 
 def _listed(flags: Iterable[Flag]) -> str:

@@ -7,7 +7,7 @@ temperature limit. A range that ends on a limit of its head is not narrow.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from functools import partial
 from types import MappingProxyType
 
@@ -60,6 +60,7 @@ __all__ = [
     "TypeLimits",
     "body_rating_at",
     "check_all",
+    "check_these",
     "worst",
 ]
 
@@ -85,7 +86,13 @@ def check_all(inputs: TagInputs) -> tuple[Finding, ...]:
     Nothing is guessed: gauge meets absolute only with a barometric pressure, a differential pressure meets
     neither, and a body rating holds only between the temperatures for which it is listed.
     """
-    return tuple(_made(key, inputs) for key in CHECKS)
+    return check_these(inputs, CHECKS)
+
+
+def check_these(inputs: TagInputs, checks: Iterable[str]) -> tuple[Finding, ...]:
+    """Make some limit checks of one tag; their keys are those of `CHECKS`, and so is their order."""
+    wanted = set(checks)
+    return tuple(_made(key, inputs) for key in CHECKS if key in wanted)
 
 
 def _made(check: str, inputs: TagInputs) -> Finding:
