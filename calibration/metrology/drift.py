@@ -168,6 +168,10 @@ def rates_from_differences(differences: ArrayLike, years: ArrayLike, covariance:
     plain = (a * z).sum(-1) / (a * a).sum(-1)
     # Were the tests free of error, this would be q.
     scatter = ((z - plain[..., None] * a) ** 2).sum(-1) / (n - 1)
+    # From here on in the unit in which the larger of walk and test errors is one, so that no unit is too small.
+    size = np.sqrt(np.maximum(scatter, values.max(-1)))
+    size = np.where(size > 0.0, size, 1.0)
+    z, values, scatter = z / size[..., None], values / (size**2)[..., None], scatter / size**2
     walk = np.where(values.max(-1) == 0.0, scatter, _greatest_likelihood(z, a, values, scatter, 0.0))
     off = ~np.eye(n, dtype=bool)
     linked = (r[..., off] != 0.0).any(-1)
@@ -184,16 +188,16 @@ def rates_from_differences(differences: ArrayLike, years: ArrayLike, covariance:
         differences=d,
         years=t,
         covariance=r,
-        rate=(a * z / weight).sum(-1) / information,
-        se=np.where(exact, 0.0, np.sqrt(spread) / information),
-        walk=walk,
+        rate=size * (a * z / weight).sum(-1) / information,
+        se=np.where(exact, 0.0, size * np.sqrt(spread) / information),
+        walk=size**2 * walk,
     )
 
 
 def _criterion(q: Floats, z: Floats, a: Floats, values: Floats, power: float) -> Floats:
     """-2 log (restricted likelihood · q^(power/2)), less a constant, for q of shape (…, m)."""
     weight = q[..., None] + values[..., None, :]
-    weight = np.where(weight > 0.0, weight, 1e-300)
+    weight = np.where(weight > 0.0, weight, 1e-30)
     information = (a[..., None, :] ** 2 / weight).sum(-1)
     mean = (a[..., None, :] * z[..., None, :] / weight).sum(-1) / information
     left = (z[..., None, :] - mean[..., None] * a[..., None, :]) ** 2 / weight

@@ -200,6 +200,15 @@ def test_differences_that_agree_to_the_last_digit_are_remarked_upon() -> None:
     assert (float(found.rate), float(found.se), float(found.walk)) == (0.25, 0.0, 0.0)
 
 
+@pytest.mark.parametrize("unit", [1e-145, 1e-9, 1e9])
+def test_no_unit_is_too_small_or_too_large(unit: float) -> None:
+    values = np.array([0.0, 0.0, 0.0, 0.0, 2.3])
+    plain = rates_from_differences(values, np.ones(5), covariance(5, 0.1, adjusted=False))
+    other = rates_from_differences(values * unit, np.ones(5), covariance(5, 0.1 * unit, adjusted=False))
+    assert float(other.rate) == pytest.approx(unit * float(plain.rate), rel=1e-6)
+    assert float(other.se) == pytest.approx(unit * float(plain.se), rel=1e-6)
+
+
 def test_the_same_history_in_another_unit_has_the_same_rate_in_it() -> None:
     here = history([0.0, 0.11, 0.19, 0.32, 0.38, 0.5], [1.0, 0.7, 1.2, 1.0, 2.0], u=0.02)
     there = history([7 * v for v in (0.0, 0.11, 0.19, 0.32, 0.38, 0.5)], [1.0, 0.7, 1.2, 1.0, 2.0], u=0.14)
