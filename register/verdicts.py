@@ -44,6 +44,8 @@ class Line:
     word: str
     sentence: str
     arithmetic: str
+    demanded_source: str
+    limit_source: str
     advice: str
 
 
@@ -166,7 +168,16 @@ def _verdict(made: Iterable[Finding], inputs: TagInputs) -> Verdict:
     order: Mapping[Severity, int] = {Severity.VIOLATION: 0, Severity.CAUTION: 1, Severity.CANNOT_CHECK: 2}
     told = sorted((finding for finding in made if finding.severity in order), key=lambda one: order[one.severity])
     lines = [
-        Line(*CLASSES[str(one.severity)], str(one.severity), one.sentence, one.arithmetic, one.advice) for one in told
+        Line(
+            *CLASSES[str(one.severity)],
+            word=str(one.severity),
+            sentence=one.sentence,
+            arithmetic=one.arithmetic,
+            demanded_source=one.demanded_source,
+            limit_source=one.limit_source,
+            advice=one.advice,
+        )
+        for one in told
     ]
     broken = sum(one.severity is Severity.VIOLATION for one in made)
     return Verdict(lines=lines, clear=len(made) - len(lines), strip=strip_of(inputs), broken=broken)

@@ -204,6 +204,7 @@ class ChangeForm(RegisterForm):
         self.latest = latest
         kwargs["initial"] = {**(kwargs.get("initial") or {}), "seen": latest}
         super().__init__(*args, **kwargs)
+        self.order_fields([name for name in self.fields if name != "reason"])
 
     def clean(self) -> dict[str, Any]:
         cleaned: dict[str, Any] = super().clean() or self.cleaned_data

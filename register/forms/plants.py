@@ -38,7 +38,7 @@ class PlantFields(RegisterForm):
         required=False,
         help_text="Usual at the site, absolute. Without it gauge and absolute are not compared.",
     )
-    barometric_unit = UnitField(PRESSURE, label="in", initial="kPa")
+    barometric_unit = UnitField(PRESSURE, label="Barometric pressure is in", initial="kPa")
     local_gravity = NumberField(
         label="Local gravity (m/s²)",
         required=False,
