@@ -98,7 +98,7 @@ def variables_are_known(**kwargs: Any) -> list[CheckMessage]:
     for name in sorted(os.environ):
         if not name.startswith("FOUNDLEFT_") or name in environment.VARIABLES:
             continue
-        near = difflib.get_close_matches(name, environment.VARIABLES, n=1)
+        near = difflib.get_close_matches(name, environment.VARIABLES, n=1, cutoff=0.8)
         found.append(
             Warning(
                 f"The variable {name} means nothing to the site.",

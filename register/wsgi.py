@@ -1,5 +1,6 @@
-"""WSGI entry; loads what the first page would otherwise wait for."""
+"""WSGI entry; loads what the first page with a chart or a unit would otherwise wait for."""
 
+import importlib
 import os
 
 from django.core.wsgi import get_wsgi_application
@@ -7,3 +8,10 @@ from django.core.wsgi import get_wsgi_application
 os.environ.setdefault("DJANGO_SETTINGS_MODULE", "register.settings")
 
 application = get_wsgi_application()
+
+for name in ("numpy", "scipy.stats", "scipy.optimize", "matplotlib.figure", "matplotlib.backends.backend_svg"):
+    importlib.import_module(name)
+
+from register.engineering.units import to_si  # noqa: E402 - after the settings are loaded
+
+to_si(1.0, "bar")

@@ -18,6 +18,8 @@ from register import access, beginning, entering, membership
 from register.auditing import Actor
 from register.forms.people import FirstAdministratorForm
 from register.models import User
+from register.queries import demonstration_people
+from register.serving import is_loopback
 
 
 @sensitive_post_parameters("password")
@@ -34,7 +36,11 @@ def sign_in(request: HttpRequest) -> HttpResponse:
     if request.method == "POST" and form.is_valid():
         login(request, form.get_user())
         return HttpResponseRedirect(heading)
-    context = {"form": form, "next": request.POST.get("next", request.GET.get("next", ""))}
+    context = {
+        "form": form,
+        "next": request.POST.get("next", request.GET.get("next", "")),
+        "demonstration": demonstration_people() if is_loopback(request.META.get("REMOTE_ADDR", "")) else [],
+    }
     return render(request, "register/sign_in.html", context)
 
 
