@@ -17,6 +17,7 @@ from django.db import transaction
 from calibration import standings
 from calibration.models import Deferral, Requirement, SearchWord, Standing, ToleranceForm
 from register.auditing import Act, Actor, snapshot
+from register.bulk import columns_of, insert, values_of
 from register.changes import object_to_backdating
 from register.models import Criticality, Plant, Tag
 
@@ -289,8 +290,15 @@ def refresh(tag_ids: Collection[int]) -> None:
     """Work out the standings and search words of some tags from their full history, and store them."""
     for chunk in chunks(tag_ids):
         history = standings.read(chunk)
+        found = standings.work_out(history)
+        known = set(Standing.objects.filter(tag__in=chunk).values_list("tag_id", flat=True))
+        columns = columns_of(Standing, key=True)
+        insert(Standing, columns, values_of((one for one in found if one.tag_id not in known), columns))
         Standing.objects.bulk_create(
-            standings.work_out(history), update_conflicts=True, unique_fields=["tag"], update_fields=_COLUMNS
+            [one for one in found if one.tag_id in known],
+            update_conflicts=True,
+            unique_fields=["tag"],
+            update_fields=_COLUMNS,
         )
         _store_words(standings.search_words(history), {tag.pk: tag.plant_id for tag in history.tags})
 
@@ -305,12 +313,10 @@ def _store_words(wanted: Mapping[int, set[str]], plants: Mapping[int, int]) -> N
             stale.append(pk)
     for chunk in chunks(stale):
         SearchWord.objects.filter(pk__in=chunk).delete()
-    SearchWord.objects.bulk_create(
-        [
-            SearchWord(plant_id=plants[tag_id], tag_id=tag_id, word=word)
-            for tag_id, words in missing.items()
-            for word in sorted(words)
-        ]
+    insert(
+        SearchWord,
+        ("plant_id", "tag_id", "word"),
+        ((plants[tag_id], tag_id, word) for tag_id, words in missing.items() for word in sorted(words)),
     )
 
 

@@ -5,19 +5,53 @@ from __future__ import annotations
 from django.urls import URLPattern, URLResolver, path
 
 from calibration.views import (
+    due_list,
     finished,
     guidance,
     lists_of_tests,
     point_lists,
+    register_list,
+    requirements,
     sheet,
     sheet_ends,
     sheet_entries,
     sheet_opening,
     standards,
+    tag,
+    transmitter,
 )
 from register.access import needs
 
 urlpatterns: list[URLPattern | URLResolver] = [
+    path("register/", needs("read")(register_list.register_list), name="register"),
+    path("register/export/", needs("read")(register_list.register_export), name="register-export"),
+    path("due/", needs("read")(due_list.due_list), name="due-list"),
+    path("due/export/", needs("read")(due_list.due_export), name="due-export"),
+    path("tags/<int:pk>/", needs("read")(tag.tag), name="tag"),
+    path("tags/<int:pk>/drift/export/", needs("read")(tag.tag_drift_export), name="tag-drift-export"),
+    path("tags/<int:pk>/requirement/", needs("set requirement")(requirements.tag_requirement), name="tag-requirement"),
+    path(
+        "requirements/<int:pk>/withdraw/",
+        needs("set requirement")(requirements.requirement_withdraw),
+        name="requirement-withdraw",
+    ),
+    path("tags/<int:pk>/defer/", needs("plan")(requirements.tag_defer), name="tag-defer"),
+    path(
+        "deferrals/<int:pk>/approve/",
+        needs("approve deferral")(requirements.deferral_approve),
+        name="deferral-approve",
+    ),
+    path(
+        "deferrals/<int:pk>/withdraw/",
+        needs("withdraw deferral")(requirements.deferral_withdraw),
+        name="deferral-withdraw",
+    ),
+    path("transmitters/<int:pk>/", needs("read")(transmitter.transmitter), name="transmitter"),
+    path(
+        "transmitters/<int:pk>/drift/export/",
+        needs("read")(transmitter.transmitter_drift_export),
+        name="transmitter-drift-export",
+    ),
     path("standards/", needs("read")(standards.standards), name="standards"),
     path("standards/new/", needs("edit standards")(standards.standard_new), name="standard-new"),
     path("standards/<int:pk>/", needs("read")(standards.standard), name="standard"),

@@ -59,9 +59,7 @@ def requirement_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     access.in_plant(request, held.tag.plant_id, "set requirement")
     form = WithdrawForm(typed(request))
     form.fields["reason"].label = "Why it was a mistake"
-    done = form.submit(
-        lambda: scheduling.withdraw_requirement(by=Actor.of(request), reason=form.why, requirement=held)
-    )
+    done = form.submit(lambda: scheduling.withdraw_requirement(by=Actor.of(request), reason=form.why, requirement=held))
     if done is not None:
         messages.success(request, f"The requirement from {held.effective_from} is withdrawn.")
         return redirect("tag", held.tag_id)
@@ -84,9 +82,7 @@ def tag_defer(request: HttpRequest, pk: int) -> HttpResponse:
 def deferral_approve(request: HttpRequest, pk: int) -> HttpResponse:
     held = _deferral(request, pk, "approve deferral")
     form = ApprovalForm(typed(request))
-    done = form.submit(
-        lambda: scheduling.approve_deferral(by=Actor.of(request), reason=form.why, deferral=held)
-    )
+    done = form.submit(lambda: scheduling.approve_deferral(by=Actor.of(request), reason=form.why, deferral=held))
     if done is not None:
         messages.success(request, f"{held.tag} is deferred until {held.until}.")
         return redirect("tag", held.tag_id)
@@ -95,11 +91,9 @@ def deferral_approve(request: HttpRequest, pk: int) -> HttpResponse:
 
 
 def deferral_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
-    held = _deferral(request, pk, "plan")
+    held = _deferral(request, pk, "withdraw deferral")
     form = WithdrawForm(typed(request))
-    done = form.submit(
-        lambda: scheduling.withdraw_deferral(by=Actor.of(request), reason=form.why, deferral=held)
-    )
+    done = form.submit(lambda: scheduling.withdraw_deferral(by=Actor.of(request), reason=form.why, deferral=held))
     if done is not None:
         messages.success(request, f"The deferral of {held.tag} until {held.until} is withdrawn.")
         return redirect("tag", held.tag_id)

@@ -1,0 +1,76 @@
+"""The page of a tag: what it is, how it stands, what happened, how its transmitter drifts."""
+
+from __future__ import annotations
+
+from functools import partial
+from typing import Any
+
+from django.http import HttpRequest, HttpResponse
+from django.http.response import HttpResponseBase
+from django.views.decorators.http import require_GET, require_POST
+
+from calibration import drift_page, drifting, tag_page
+from calibration.drift_page import DriftView
+from calibration.drifting import History
+from calibration.models import Standing
+from calibration.opening import current_requirement
+from register import access, exporting
+from register.auditing import Actor
+from register.fragments import answer, wants_part
+from register.models import Tag
+
+
+@require_GET
+def tag(request: HttpRequest, pk: int) -> HttpResponse:
+    access.get_tag(request, pk)
+    shown = tag_page.tag_with_related(pk)
+    history = drifting.of_tag(shown)
+    context: dict[str, Any] = {
+        "tag": shown,
+        "drift": _drift(shown, history, request.GET.get("channel", "")),
+    }
+    if not wants_part(request):
+        may = partial(access.allowed, request, shown.plant_id)
+        page = tag_page.page_of(shown, history.tests, shown.plant.today())
+        action = tag_page.next_action(page, may)
+        context |= {
+            "page": page,
+            "action": action,
+            "actions": tag_page.other_actions(page, may, action),
+            "may_accept": may("accept flag"),
+            "may_require": may("set requirement"),
+            "may_range": may("re-range"),
+            "may_approve": may("approve deferral"),
+            "may_withdraw_deferral": may("withdraw deferral"),
+        }
+    return answer(request, "calibration/tag.html", "drift", context)
+
+
+@require_POST
+def tag_drift_export(request: HttpRequest, pk: int) -> HttpResponseBase:
+    """The numbers behind the drift chart as a CSV file."""
+    held = access.get_tag(request, pk)
+    history = drifting.of_tag(held)
+    view = _drift(held, history, request.POST.get("channel", ""))
+    channel = view.drift.channel.label if view.drift else "drift"
+    exporting.note_export(
+        by=Actor.of(request), thing=held, plant=held.plant, remark=f"drift of {held} as CSV ({channel})"
+    )
+    return exporting.csv_response(
+        f"drift-{held.number}-{held.plant.today()}.csv",
+        drift_page.FILE_HEAD,
+        drift_page.file_lines(view.drift, history),
+    )
+
+
+def _drift(held: Tag, history: History, channel: str) -> DriftView:
+    fitting = held.current_fitting
+    due = Standing.objects.filter(pk=held.pk).values_list("due_on", flat=True).first()
+    return drift_page.view_of(
+        history,
+        channel,
+        whose=held.number,
+        transmitter_id=fitting.transmitter_id if fitting else None,
+        terms=drifting.terms_now(held, current_requirement(held), fitting.transmitter.head if fitting else None),
+        due=due,
+    )
