@@ -13,9 +13,10 @@ from django.db import transaction
 from django.utils import timezone
 
 from calibration import demonstration_data, scheduling, standards
+from calibration.demonstration_sheet import open_half_filled
 from calibration.demonstration_tests import Told
 from calibration.models import PointList, Requirement, Standard
-from calibration.recording import write_records
+from calibration.recording import write_record, write_records
 from fixtures.demonstration.people import PASSWORD, PEOPLE
 from register import editing, fitting, flagging, intervening, membership, reranging
 from register.auditing import Act, Actor
@@ -79,6 +80,9 @@ def load() -> Loaded:
         _life(loaded, site, today)
     _tests(loaded, tests)
     _decisions(loaded, site, today)
+    for row in site["sheets"]:
+        tag = loaded.tags[row["plant"], row["tag"]]
+        open_half_filled(by=loaded.by(row["by"], row["plant"]), tag=tag, row=row)
     return loaded
 
 
@@ -296,11 +300,14 @@ def _out_of_service(loaded: Loaded, row: Mapping[str, Any]) -> Turn:
 def _tests(loaded: Loaded, rows: list[dict[str, Any]]) -> None:
     for plant in loaded.plants.values():
         told = Told.read(plant, loaded.people)
-        contents = [told.content(row) for row in rows if row["plant"] == plant.code]
+        made_here = [row for row in rows if row["plant"] == plant.code]
         act = Act(by=Actor(None), reason=WHY)
-        write_records(contents, act=act)
+        records = write_records([told.content(row) for row in made_here], act=act)
+        for row, record in zip(made_here, records, strict=True):
+            if "correction" in row:
+                write_record(told.corrected(row, record.test_id), act=act)
         act.write()
-        loaded.tests += len(contents)
+        loaded.tests += len(records)
 
 
 def _decisions(loaded: Loaded, site: Mapping[str, Any], today: datetime.date) -> None:

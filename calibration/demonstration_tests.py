@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import datetime
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 from zoneinfo import ZoneInfo
 
@@ -72,7 +72,23 @@ class Told:
         )
 
     def content(self, row: Mapping[str, Any]) -> RecordContent:
-        """The content of the record of one test."""
+        """The content of the record of one test, as it was first signed."""
+        return self._content(_as_first_typed(row) if "correction" in row else row)
+
+    def corrected(self, row: Mapping[str, Any], test_id: int) -> RecordContent:
+        """The content of the second version of a test that was sent back."""
+        first = self._content(row)
+        person, correction = self.people[row["by"]], row["correction"]
+        made = self._at(correction["on"], row["start"])
+        return replace(
+            first,
+            made_at=made,
+            signatures=tuple(self._signatures(row, person, made)),
+            test_id=test_id,
+            correction_reason=correction["reason"],
+        )
+
+    def _content(self, row: Mapping[str, Any]) -> RecordContent:
         on: datetime.date = row["on"]
         tag = self.tags[row["tag"]] if row["tag"] else None
         transmitter = self.transmitters[row["serial"]]
@@ -244,6 +260,17 @@ class Told:
             time_zone=self.plant.time_zone,
             remarks=remarks,
         )
+
+
+def _as_first_typed(row: Mapping[str, Any]) -> dict[str, Any]:
+    """The row with the mistyped reading, sent back instead of reviewed."""
+    correction = row["correction"]
+    found, *others = row["runs"]
+    measured = found["measured"].split()
+    measured[correction["place"]] = correction["first"]
+    kept = {name: value for name, value in row.items() if name != "reviewed"}
+    sent_back = {name: correction[name] for name in ("sent_back", "sent_back_remarks")}
+    return kept | sent_back | {"runs": [found | {"measured": " ".join(measured)}, *others]}
 
 
 def _grouped(rows: Any, name: str) -> dict[int, list[Any]]:
