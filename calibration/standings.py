@@ -16,6 +16,7 @@ from zoneinfo import ZoneInfo
 
 from calibration.models import Deferral, Requirement, Standing, Test
 from calibration.models.standing import NO_ERROR
+from register.checking import with_inputs
 from register.models import Fitting, Flag, Intervention, Range, Tag, TransmitterType
 
 if TYPE_CHECKING:
@@ -24,6 +25,7 @@ if TYPE_CHECKING:
 #: Interventions after which the transmitter must prove itself again before it counts as tested.
 RESTARTS = (Intervention.Kind.REPAIR, Intervention.Kind.NEW_HEAD)
 Phase = Standing.Phase
+_OF_A_RANGE = ("effective_from", "lrv_si", "urv_si", "reference", "transfer", "low_cut_percent", "below_cut")
 _PIECES = re.compile(r"[^\W\d_]+|\d+")
 _EDGES = re.compile(r"^\W+|\W+$")
 _DIGITS = re.compile(r"\d+")
@@ -36,7 +38,7 @@ class History:
 
     tags: list[Tag]
     requirements: dict[int, Requirement] = field(default_factory=dict)
-    ranges: dict[int, list[Range]] = field(default_factory=lambda: defaultdict(list))
+    ranges: dict[int, list[Any]] = field(default_factory=lambda: defaultdict(list))
     restarts: dict[int, list[datetime.date]] = field(default_factory=lambda: defaultdict(list))
     tests: dict[int, list[Mapping[str, Any]]] = field(default_factory=lambda: defaultdict(list))
     deferrals: dict[int, list[Deferral]] = field(default_factory=lambda: defaultdict(list))
@@ -45,24 +47,12 @@ class History:
 
 def read(tag_ids: Collection[int]) -> History:
     """Read everything that decides how the tags stand."""
-    history = History(
-        list(
-            Tag.objects.filter(pk__in=tag_ids)
-            .order_by("pk")
-            .select_related(
-                "plant",
-                "area",
-                "current_range",
-                "current_fitting__transmitter__maker",
-                "current_fitting__transmitter__type__maker",
-                "current_fitting__transmitter__head",
-            )
-        )
-    )
+    history = History(list(with_inputs(tag_ids)))
     in_force = {"tag_id__in": tag_ids, "applied_at__isnull": False, "withdrawn_at__isnull": True}
     for requirement in Requirement.objects.filter(**in_force).order_by("tag_id", "effective_from", "id"):
         history.requirements[requirement.tag_id] = requirement
-    for row in Range.objects.filter(**in_force).order_by("tag_id", "effective_from", "id"):
+    ranges = Range.objects.filter(**in_force).order_by("tag_id", "effective_from", "id")
+    for row in ranges.values_list("tag_id", *_OF_A_RANGE, named=True):
         history.ranges[row.tag_id].append(row)
     fitted = {tag.current_fitting.transmitter_id for tag in history.tags if tag.current_fitting}
     for transmitter_id, done_on in (
@@ -192,7 +182,7 @@ def _tested(standing: Standing, tag: Tag, fitting: Fitting, history: History) ->
 def restarted_on(tag: Tag, fitting: Fitting, history: History) -> datetime.date:
     """The day from which the fitted transmitter must have been tested at the tag: fitted, repaired or re-ranged."""
     days = [fitting.fitted_on, *history.restarts.get(fitting.transmitter_id, [])]
-    earlier: Range | None = None
+    earlier: Any = None
     for row in history.ranges.get(tag.pk, []):
         if earlier is not None and not _same_range(earlier, row):
             days.append(row.effective_from)
@@ -200,7 +190,8 @@ def restarted_on(tag: Tag, fitting: Fitting, history: History) -> datetime.date:
     return max(days)
 
 
-def _same_range(one: Range, other: Range) -> bool:
+def _same_range(one: Any, other: Any) -> bool:
+    """Whether two ranges, given as rows of `_OF_A_RANGE`, set the transmitter in the same way."""
     if (one.reference, one.transfer) != (other.reference, other.transfer):
         return False
     cuts = [(row.low_cut_percent, row.below_cut) for row in (one, other)]
