@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import datetime
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from django.contrib import messages
 from django.db import IntegrityError, transaction
@@ -13,7 +13,7 @@ from django.urls import reverse
 
 from calibration import standards as acts
 from calibration.forms.standards import CertificateForm, StandardForm, WithdrawForm
-from calibration.models import Certificate, Standard
+from calibration.models import Certificate, Standard, StandardUse
 from register import access
 from register.auditing import Actor
 from register.models import User
@@ -43,6 +43,46 @@ def reliance(standard: Standard, until: datetime.date | None, today: datetime.da
     return Reliance("in date", "ok", until)
 
 
+@dataclass(frozen=True)
+class Use:
+    """One test made with a standard."""
+
+    test_id: int
+    tested_on: datetime.date
+    instrument: str
+    runs: str
+    part: str
+    certificate: str
+    exception: str
+
+
+def recent_uses(standard: Standard, most: int = 50) -> list[Use]:
+    """The newest tests of the counting versions made with a standard, one line each, newest first."""
+    rows = (
+        standard.uses.filter(run__record__superseded_by__isnull=True)
+        .order_by("-run__tested_on", "-run__record__test_id", "run__kind")
+        .values_list(
+            "run__record__test_id",
+            "run__tested_on",
+            "run__record__test__tag__number",
+            "run__record__test__transmitter__serial",
+            "run__kind",
+            "part",
+            "certificate__number",
+            "exception",
+        )[: 2 * most + 1]
+    )
+    found: dict[tuple[int, str, str | None], Use] = {}
+    for test_id, day, number, serial, kind, part, certificate, exception in rows:
+        key = (test_id, part, certificate)
+        if held := found.get(key):
+            found[key] = replace(held, runs=f"{held.runs}, {kind}", exception=held.exception or exception)
+        else:
+            words = StandardUse.Part(part).label
+            found[key] = Use(test_id, day, number or serial, kind, words, certificate or "none", exception)
+    return list(found.values())[:most]
+
+
 def standards(request: HttpRequest) -> HttpResponse:
     plant = access.chosen_plant(request)
     today = plant.today()
@@ -62,14 +102,13 @@ def standard(request: HttpRequest, pk: int) -> HttpResponse:
     today = held.plant.today()
     certificates = list(held.certificates.all())
     until = max((c.valid_until for c in certificates if not c.withdrawn_at), default=None)
-    uses = held.uses.select_related("run__record__test__tag", "run__record__test__transmitter__maker", "certificate")
     return render(
         request,
         "calibration/standard.html",
         {
             "standard": held,
             "certificates": certificates,
-            "uses": uses.order_by("-run__tested_on", "-pk")[:50],
+            "uses": recent_uses(held),
             "reliance": reliance(held, until, today),
             "may_edit": _may_edit(request, held.plant_id),
         },
