@@ -29,9 +29,14 @@ def note_export(*, by: Actor, thing: models.Model, plant: Plant, remark: str) ->
 def cell(value: Any) -> str:
     """A value as text that no spreadsheet runs; numbers, negative ones too, stay numbers."""
     text = "" if value is None else str(value)
-    if text.lstrip(" ").startswith(ACTIVE) and not NUMBER.fullmatch(text.strip(" ")):
+    if text.lstrip(" '").startswith(ACTIVE) and not NUMBER.fullmatch(text.strip(" ")):
         return f"'{text}"
     return text
+
+
+def unguarded(text: str) -> str:
+    """A cell as it was before `cell` guarded it."""
+    return text[1:] if text.startswith("'") and text.lstrip(" '").startswith(ACTIVE) else text
 
 
 def csv_response(name: str, head: Sequence[str], rows: Iterable[Sequence[Any]]) -> StreamingHttpResponse:
