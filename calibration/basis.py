@@ -10,10 +10,10 @@ from typing import TYPE_CHECKING, Any, Self
 from calibration.canonical import plain
 
 if TYPE_CHECKING:
-    from calibration.metrology.verdicts import DecisionRule
     from calibration.metrology.pointlist import PointList
     from calibration.metrology.signal import Signal
     from calibration.metrology.tolerance import Tolerance
+    from calibration.metrology.verdicts import DecisionRule
     from calibration.models import Record, Requirement, Sheet
     from register.models import MeasuringHead, Range
 
@@ -45,17 +45,15 @@ class StatedTolerance:
                 from register.engineering.units import convert_difference
 
                 amount = float(convert_difference(amount, self.unit, unit))
-        return Tolerance.stated(
-            self.form, percent=parse_number(self.percent) if self.percent else 0.0, amount=amount
-        )
+        return Tolerance.stated(self.form, percent=parse_number(self.percent) if self.percent else 0.0, amount=amount)
 
 
 @dataclass(frozen=True, slots=True)
 class Basis:
     """The terms of one test, as they stood.
 
-    `decimal_comma` says how readings are typed: "1,234" is then 1.234. `notes` holds whatever else is kept with the test (identification, cautions, checklist …): texts, whole numbers,
-    lists and objects of them.
+    `decimal_comma` says how readings are typed: "1,234" is then 1.234. `notes` holds whatever else is kept with the
+    test (identification, cautions, checklist …): texts, whole numbers, lists and objects of them.
     """
 
     head_id: int

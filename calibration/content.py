@@ -154,9 +154,7 @@ def record_object(
     return result
 
 
-def signature_object(
-    signature: SignatureContent, *, plant: str, position: int, record: str
-) -> dict[str, Any]:
+def signature_object(signature: SignatureContent, *, plant: str, position: int, record: str) -> dict[str, Any]:
     """The object whose canonical form is hashed for a signature; `record` is the hash of what is signed."""
     result: dict[str, Any] = plain(
         {
@@ -187,9 +185,7 @@ def _run_object(run: RunContent, unit: str) -> dict[str, Any]:
                 "order": order,
                 "cycle": reading.cycle,
                 "direction": reading.direction,
-                "nominal_percent": None
-                if reading.nominal_percent is None
-                else float(reading.nominal_percent),
+                "nominal_percent": None if reading.nominal_percent is None else float(reading.nominal_percent),
                 "applied": reading.applied,
                 "applied_unit": reading.applied_unit or unit,
                 "measured": reading.measured,

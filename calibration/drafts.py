@@ -7,6 +7,7 @@ import math
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
+from typing import Final
 from zoneinfo import ZoneInfo
 
 from calibration.basis import Basis
@@ -15,6 +16,9 @@ from calibration.entries import Field, standing, when
 from calibration.judging import JudgedRun, Point, applied_in_range_unit, judge, measured_in_ma
 from calibration.models import Run, Sheet
 from calibration.sheet_fields import PARTS, reading, reading_of
+
+#: Beyond this distance from its point [% of input range] an applied input is probably mistyped.
+FAR_PERCENT: Final = 5.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -31,6 +35,7 @@ class DraftReading:
     digital: str
     point: Point | None
     problems: Mapping[str, str] = field(default_factory=dict)
+    caution: str = ""
 
     @property
     def repeated(self) -> bool:
@@ -59,11 +64,7 @@ class DraftRun:
 
     @property
     def problems(self) -> list[str]:
-        return [
-            f"{row.label}: {words}"
-            for row in self.readings
-            for words in row.problems.values()
-        ]
+        return [f"{row.label}: {words}" for row in self.readings for words in row.problems.values()]
 
     def index_of(self, key: str) -> int | None:
         """Place of a reading in the judged arrays."""
@@ -104,7 +105,11 @@ class Draft:
         return len(asked) if asked else 0
 
     def run_content(
-        self, kind: str, standards: tuple[UseContent, ...], *, on: datetime.date | None = None,
+        self,
+        kind: str,
+        standards: tuple[UseContent, ...],
+        *,
+        on: datetime.date | None = None,
         entered: Mapping[str, datetime.datetime | None] | None = None,
     ) -> RunContent:
         """The run for the record, with its readings as typed.
@@ -133,11 +138,14 @@ class Draft:
     def unit_of(self, kind: str, condition: str) -> str:
         """Unit of a condition ("ambient", "height", "static"): the one chosen, else the usual one of the tag."""
         usual = self.sheet.basis.get("units", {})
-        return self.text(f"{kind}.{condition}-unit") or {
-            "ambient": usual.get("temperature", "degC"),
-            "height": "mm",
-            "static": usual.get("static", "bar"),
-        }[condition]
+        return (
+            self.text(f"{kind}.{condition}-unit")
+            or {
+                "ambient": usual.get("temperature", "degC"),
+                "height": "mm",
+                "static": usual.get("static", "bar"),
+            }[condition]
+        )
 
     def _conditions(self, kind: str) -> dict[str, str]:
         columns: dict[str, str] = {}
@@ -206,12 +214,11 @@ class Draft:
         point = None
         if figures is not None and not any(name in problems for name in PARTS):
             point = Point(*figures, direction=direction, nominal_percent=percent, cycle=cycle)
-        return DraftReading(key, percent, direction, cycle, label, applied, measured, digital, point, problems)
+        caution = far_from(self.basis, percent, point.applied) if point is not None else ""
+        return DraftReading(key, percent, direction, cycle, label, applied, measured, digital, point, problems, caution)
 
 
-def readable(
-    basis: Basis, applied: str, unit: str, measured: str
-) -> tuple[tuple[float, float] | None, dict[str, str]]:
+def readable(basis: Basis, applied: str, unit: str, measured: str) -> tuple[tuple[float, float] | None, dict[str, str]]:
     """Input [unit of the range] and output [mA] where both texts are numbers, and what is wrong with which."""
     problems: dict[str, str] = {}
     figures = [math.nan, math.nan]
@@ -228,6 +235,14 @@ def readable(
     if any(math.isnan(figure) for figure in figures):
         return None, problems
     return (figures[0], figures[1]), problems
+
+
+def far_from(basis: Basis, percent: float, applied: float) -> str:
+    """A caution where the input applied is not the one that the point asks for; a slip of the thumb, most likely."""
+    at = float(basis.signal().percent_of_input(applied))
+    if abs(at - percent) <= FAR_PERCENT:
+        return ""
+    return f"{at:.4g} % of range was applied where the list asks for {percent:g} %."
 
 
 def _digital_problem(text: str, basis: Basis) -> dict[str, str]:

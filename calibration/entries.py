@@ -1,7 +1,7 @@
 """What the entries of a sheet say: the version of each field that counts, and versions that disagree.
 
-An entry names the entry it replaces (`base`). Entries that nobody replaced are the heads of a field; heads with different
-texts are a clash, shown side by side until somebody settles it. Nothing is decided by which arrived last.
+An entry names the entry it replaces (`base`). Entries that nobody replaced are the heads of a field; heads with
+different texts are a clash, shown side by side until somebody settles it. Nothing is decided by which arrived last.
 """
 
 from __future__ import annotations
@@ -17,7 +17,7 @@ from calibration.models import Entry
 
 @dataclass(frozen=True, slots=True)
 class NewEntry:
-    """One field as it was left, as it comes from a device; `seen` names the versions a settling entry decides between."""
+    """One field as it was left on a device; `seen` names the versions that a settling entry decides between."""
 
     id: uuid.UUID
     field: str
@@ -87,13 +87,9 @@ def _heads(entries: list[Entry]) -> tuple[Entry, ...]:
     return tuple(by_text.values())
 
 
-def _replaced_by(
-    entry: Entry, entries: list[Entry], place: int, known: Mapping[uuid.UUID, Entry]
-) -> set[uuid.UUID]:
+def _replaced_by(entry: Entry, entries: list[Entry], place: int, known: Mapping[uuid.UUID, Entry]) -> set[uuid.UUID]:
     base = known.get(entry.base) if entry.base else None
-    replaced = {
-        other.id for other in entries if other.device == entry.device and other.sequence < entry.sequence
-    }
+    replaced = {other.id for other in entries if other.device == entry.device and other.sequence < entry.sequence}
     if base is not None:
         replaced.add(base.id)
         # Two people who typed the same agree: who replaces one of them replaces both.

@@ -69,7 +69,7 @@ def _shifts(run: RunEvaluation) -> Iterator[Figure]:
         ("Fitted span shift", fit.span_shift, fit.span_se, "b"),
     ):
         known = "" if math.isnan(error) else f"; standard error {error:.{DIGITS}f}"
-        yield Figure(name, _said(value, unit=unit if fit.input_referred else ""), f"{letter}: {how}{known}", unit)
+        yield Figure(name, _said(value), f"{letter}: {how}{known}", f"{letter} in {unit}")
 
 
 def _hysteresis(run: RunEvaluation) -> Figure:
@@ -145,9 +145,7 @@ def _mean(errors: Sequence[tuple[float, int]]) -> str:
 def _average(errors: Sequence[float]) -> str:
     if len(errors) == 1:
         return signed(errors[0], DIGITS)
-    terms = " ".join(
-        f"{signed(error, DIGITS)}" if place == 0 else _added(error) for place, error in enumerate(errors)
-    )
+    terms = " ".join(f"{signed(error, DIGITS)}" if place == 0 else _added(error) for place, error in enumerate(errors))
     return f"({terms})/{len(errors)}"
 
 
@@ -159,10 +157,8 @@ def _point(run: RunEvaluation, index: int) -> str:
     return f"{run.points[index]:g} % {'up' if run.directions[index] > 0 else 'down'}"
 
 
-def _said(value: float, unit: str = "") -> str:
-    if math.isnan(value):
-        return "–"
-    return f"{signed(value, DIGITS)} {unit}".strip()
+def _said(value: float) -> str:
+    return "–" if math.isnan(value) else signed(value, DIGITS)
 
 
 def _size(value: float) -> str:

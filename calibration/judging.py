@@ -128,9 +128,7 @@ def _missing(basis: Basis, points: Sequence[Point]) -> list[Point]:
     if asked is None:
         return []
     taken = Counter(
-        (point.cycle, point.nominal_percent, point.direction)
-        for point in points
-        if not math.isnan(point.measured)
+        (point.cycle, point.nominal_percent, point.direction) for point in points if not math.isnan(point.measured)
     )
     signal = basis.signal()
     missing = []

@@ -83,16 +83,12 @@ def figures_row(judged: JudgedRun, run: Run, test: Test, *, current: bool = True
         repeatability=_known(evaluation.repeatability),
         non_linearity=_known(evaluation.nonlinearity_independent),
         point_errors=[
-            [float(level.point), float(level.mean)]
-            for level in evaluation.levels
-            if not math.isnan(level.mean)
+            [float(level.point), float(level.mean)] for level in evaluation.levels if not math.isnan(level.mean)
         ],
     )
 
 
-def summarise(
-    test: Test, *, outcome: str, adjusted: bool, runs: Mapping[str, JudgedRun], counts: bool = True
-) -> None:
+def summarise(test: Test, *, outcome: str, adjusted: bool, runs: Mapping[str, JudgedRun], counts: bool = True) -> None:
     """Set the summary columns of a test from its judged runs; `counts` is false while it is sent back."""
     verdicts = {kind: str(judged.judgement.verdict) for kind, judged in runs.items()}
     test.outcome = outcome

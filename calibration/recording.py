@@ -57,6 +57,8 @@ FOLLOWS: Final = (
 )
 #: … and all that a new version changes.
 _SUMMARY: Final = ("state", "outcome", "tested_on", *FOLLOWS)
+
+
 def write_record(content: RecordContent, *, act: Act) -> Record:
     """Write one test; see `write_records`."""
     return write_records([content], act=act)[0]
@@ -95,9 +97,7 @@ def write_records(contents: Sequence[RecordContent], *, act: Act) -> list[Record
     judged = [_judged(content, place) for place, content in enumerate(contents, start=1)]
     tag_ids = sorted({content.tag_id for content in contents if content.tag_id is not None})
     with transaction.atomic():
-        list(
-            Tag.objects.select_for_update().filter(pk__in=tag_ids).order_by("pk").values_list("pk", flat=True)
-        )
+        list(Tag.objects.select_for_update().filter(pk__in=tag_ids).order_by("pk").values_list("pk", flat=True))
         plant = Plant.objects.get(pk=plants.pop())
         chain = _locked_chain(plant)
         written: list[Record] = []
@@ -164,9 +164,7 @@ def _write_batch(batch: Sequence[_Judged], *, plant: Plant, chain: ChainHead) ->
     named = Names.of([judged.content for judged in batch])
     earlier = {
         test.pk: test
-        for test in Test.objects.filter(
-            pk__in=[j.content.test_id for j in batch if j.content.test_id is not None]
-        )
+        for test in Test.objects.filter(pk__in=[j.content.test_id for j in batch if j.content.test_id is not None])
         .select_for_update(of=("self",))
         .select_related("current_record")
     }
@@ -190,11 +188,7 @@ def _write_batch(batch: Sequence[_Judged], *, plant: Plant, chain: ChainHead) ->
     StandardUse.objects.bulk_create([use for run, judged, _ in runs for use in _uses(run, judged.content)])
     RunFigures.objects.filter(test__in=list(earlier)).update(current=False)
     RunFigures.objects.bulk_create(
-        [
-            figures_row(judged.runs[run.kind], run, test)
-            for run, judged, test in runs
-            if run.kind in judged.runs
-        ]
+        [figures_row(judged.runs[run.kind], run, test) for run, judged, test in runs if run.kind in judged.runs]
     )
     for record, signature in signatures:
         signature.record = record
@@ -221,9 +215,7 @@ def _test(judged: _Judged, earlier: Mapping[int, Test]) -> Test:
             sheet_id=content.sheet_id,
         )
     test.tested_on = content.tested_on
-    test.state = state_of(
-        {signature.meaning for signature in content.signatures}, transcribed=content.transcribed
-    )
+    test.state = state_of({signature.meaning for signature in content.signatures}, transcribed=content.transcribed)
     summarise(
         test,
         outcome=content.outcome,
@@ -313,9 +305,7 @@ def _uses(run: Run, content: RecordContent) -> Iterator[StandardUse]:
 
 
 def _signature(record: Record, signed: SignatureContent, chain: ChainHead, plant: Plant) -> Signature:
-    written = canonical(
-        signature_object(signed, plant=plant.code, position=chain.position + 1, record=record.hash)
-    )
+    written = canonical(signature_object(signed, plant=plant.code, position=chain.position + 1, record=record.hash))
     previous = chain.hash
     _lengthen(chain, written)
     return Signature(

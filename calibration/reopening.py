@@ -31,9 +31,9 @@ def entries_of(record: Record, sheet: Sheet, *, by: User, at: datetime.datetime,
             received_at=at,
             person=use.exception_by,
         )
-        for use in StandardUse.objects.filter(
-            run__record=record, exception_by__isnull=False
-        ).select_related("exception_by")
+        for use in StandardUse.objects.filter(run__record=record, exception_by__isnull=False).select_related(
+            "exception_by"
+        )
     ]
     return allowed + [
         Entry(

@@ -34,9 +34,9 @@ class Result:
 
     error: str
     in_input: str
-    input_unit: str
     expected: str
     limit: str
+    limit_unit: str
     word: str
     css: str
     bar: SafeString
@@ -62,14 +62,14 @@ def result_of(judged: ReadingJudgement, index: int, *, up: bool | None = None) -
     in_input = float(judged.judged_error[index]) if by_input else math.nan
     unit = judged.unit
     stated = f"{signed(in_input, DECIMALS_ERROR)} {unit}" if by_input and not math.isnan(in_input) else ""
-    limit_words = f"±{limit:.4g} {unit}"
-    words = f"error {stated or signed(error, DECIMALS_ERROR) + ' % of span'}, limit {limit_words}: {word}"
+    limit_words = f"±{limit:.4g}"
+    words = f"error {stated or signed(error, DECIMALS_ERROR) + ' % of span'}, limit {limit_words} {unit}: {word}"
     return Result(
         error=signed(error, DECIMALS_ERROR),
         in_input=stated,
-        input_unit=unit if by_input else "",
         expected=f"{float(judged.limits.ideal_ma[index]):.{DECIMALS_MA}f}",
         limit=limit_words,
+        limit_unit=unit,
         word=word,
         css=css,
         bar=error_bar(None if math.isnan(ratio) else ratio, words, up=up),

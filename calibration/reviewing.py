@@ -48,9 +48,7 @@ def send_back(*, by: Actor, test: Test, record_id: int, remarks: str) -> Signatu
 
 def took_part(person: User, test: Test) -> bool:
     """Whether a person signed any version of a test or entered any of its fields."""
-    if Signature.objects.filter(
-        record__test=test, meaning=Signature.Meaning.PERFORMED, person=person
-    ).exists():
+    if Signature.objects.filter(record__test=test, meaning=Signature.Meaning.PERFORMED, person=person).exists():
         return True
     return (
         (Entry.objects.filter(sheet=test.sheet_id) | Entry.objects.filter(sheet__corrects=test))

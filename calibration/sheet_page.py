@@ -75,6 +75,7 @@ class ReadingView:
     repeated: bool
     next_repeat: str
     state: str
+    caution: str
 
     @property
     def fields(self) -> tuple[FieldView, ...]:
@@ -166,8 +167,10 @@ def field_view(draft: Draft, name: str, viewer: Viewer, error: str = "") -> Fiel
     if kept is None:
         return FieldView(name, ident, "", "", told)
     entry = kept.entry
-    note = "" if entry.person_id == viewer.person.pk or not entry.text else (
-        f"{entry.person}, {clock(entry.received_at, draft.zone)}"
+    note = (
+        ""
+        if entry.person_id == viewer.person.pk or not entry.text
+        else (f"{entry.person}, {clock(entry.received_at, draft.zone)}")
     )
     return FieldView(name, ident, kept.text, str(entry.id), told, note, _versions(draft, kept, viewer.person))
 
@@ -275,9 +278,7 @@ def _versions(draft: Draft, kept: Field, person: User) -> tuple[Version, ...]:
     )
 
 
-def _reading_view(
-    draft: Draft, kind: str, row: DraftReading, viewer: Viewer, result: Result | None
-) -> ReadingView:
+def _reading_view(draft: Draft, kind: str, row: DraftReading, viewer: Viewer, result: Result | None) -> ReadingView:
     ident = f"r-{kind}-{row.key}"
     fields = {
         what: field_view(draft, reading(kind, row.key, what), viewer, row.problems.get(what, ""))
@@ -301,6 +302,7 @@ def _reading_view(
         repeated=row.repeated,
         next_repeat="" if row.repeated or not result else _next_repeat(draft, kind, row.key),
         state="problem" if wrong and not clashes else state,
+        caution=row.caution,
         **fields,
     )
 

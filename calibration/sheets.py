@@ -74,8 +74,10 @@ def choose_standards(*, by: Actor, sheet_id: uuid.UUID, kind: str) -> Sheet:
     """
     draft = _live(sheet_id)
     sheet = draft.sheet
-    stages = {Stage.CORRECT} if sheet.corrects_id else (
-        {Stage.STANDARDS, Stage.AS_FOUND} if kind == Run.Kind.AS_FOUND else {Stage.AS_LEFT}
+    stages = (
+        {Stage.CORRECT}
+        if sheet.corrects_id
+        else ({Stage.STANDARDS, Stage.AS_FOUND} if kind == Run.Kind.AS_FOUND else {Stage.AS_LEFT})
     )
     if sheet.stage not in stages:
         raise ValidationError(f"The standards of the {kind} run can no longer be chosen in this stage.")

@@ -16,7 +16,7 @@ from django.db import transaction
 from django.utils import timezone
 
 from calibration.choosing import exception_field
-from calibration.content import RecordContent, RunContent, SignatureContent, UseContent
+from calibration.content import RecordContent, SignatureContent, UseContent
 from calibration.drafts import Draft
 from calibration.entries import when
 from calibration.models import Record, Run, Sheet, Signature, Standard, Test
@@ -92,7 +92,9 @@ def changes_since(sheet: Sheet) -> list[Change]:
         found += _changes_of_tag(sheet, tag)
     if transmitter.head_id != int(sheet.basis["head_id"]):
         found.append(
-            Change(f"head {transmitter.head_id}", f"The transmitter has another measuring head now: {transmitter.head}.")
+            Change(
+                f"head {transmitter.head_id}", f"The transmitter has another measuring head now: {transmitter.head}."
+            )
         )
     return found
 
@@ -130,18 +132,18 @@ def _corrected(draft: Draft, test: Test, *, signer: User, at: datetime.datetime)
     runs = []
     for kind in _kinds(draft):
         run = recorded.get(kind)
-        entered = {
-            key: row.entered_at
-            for key, row in placed(list(run.readings.all()), draft.basis)
-            if _unchanged(draft, kind, key, row.applied, row.measured)
-        } if run else {}
+        entered = (
+            {
+                key: row.entered_at
+                for key, row in placed(list(run.readings.all()), draft.basis)
+                if _unchanged(draft, kind, key, row.applied, row.measured)
+            }
+            if run
+            else {}
+        )
         on = run.tested_on if run else test.tested_on
         runs.append(draft.run_content(kind, _uses(draft, kind), on=on, entered=entered))
-    kept = {
-        name: before.answers[name]
-        for name in ("confirmed", "cautions", "acknowledged")
-        if name in before.answers
-    }
+    kept = {name: before.answers[name] for name in ("confirmed", "cautions", "acknowledged") if name in before.answers}
     return RecordContent(
         plant_id=sheet.plant_id,
         tag_id=sheet.tag_id,
@@ -318,8 +320,8 @@ def _changes_of_tag(sheet: Sheet, tag: Tag) -> list[Change]:
         found.append(
             Change(
                 f"requirement {requirement.pk}",
-                f"{tag} has another requirement since {requirement.effective_from}. The record is judged by the tolerance "
-                "with which the sheet was opened.",
+                f"{tag} has another requirement since {requirement.effective_from}. The record is judged by the "
+                "tolerance with which the sheet was opened.",
             )
         )
     return found

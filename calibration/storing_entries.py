@@ -69,6 +69,10 @@ def add_entries(*, by: Actor, sheet_id: uuid.UUID, entries: Sequence[NewEntry]) 
             _told_again(stored, sheet, old, new)
             continue
         why = _refusal(draft, new, used)
+        if why and draft.text(new.field) == new.text.strip() and new.field in draft.fields:
+            # It came another way before the stage was closed: nothing is lost, nothing needs to be told.
+            stored.saved.append(new.id)
+            continue
         if why:
             stored.refused.append((new.id, why))
             continue

@@ -54,6 +54,7 @@ class RunView:
     tolerance_words: str
     why: str
     limit: str
+    limit_unit: str
     unit: str
     rows: tuple[Row, ...]
     figures: tuple[Figure, ...]
@@ -115,7 +116,7 @@ def plot_of(record: Record) -> SafeString | None:
 
     basis = Basis.read(record, record.head_id)
     series: dict[str, list[ErrorPoint]] = {}
-    limits: dict[str, list[tuple[float, float]]] = {}
+    applied: list[float] = []
     for run in record.runs.all():
         judged = judged_run(run, basis, complete=False).judged
         if judged is None:
@@ -132,17 +133,18 @@ def plot_of(record: Record) -> SafeString | None:
             for place in range(len(judged.points))
             if not math.isnan(float(readings.error[place]))
         ]
-        limits[run.kind] = _limits(basis, run.kind)
+        applied += [point.input for point in series[run.kind]]
     if not any(series.values()):
         return None
-    left = limits.get(Run.Kind.AS_LEFT, []) if basis.as_left is not None else []
+    ends = (min(applied), max(applied))
+    shows_left = basis.as_left is not None and Run.Kind.AS_LEFT in series
     return error_plot(
         title=f"Errors of the test of {record.test.tested_on}",
         description="Error of each reading against the input applied, between the limits of the tolerance.",
         found=series.get(Run.Kind.AS_FOUND, []),
         left=series.get(Run.Kind.AS_LEFT, []),
-        limits=_limits(basis, Run.Kind.AS_FOUND),
-        left_limits=left,
+        limits=_limits(basis, Run.Kind.AS_FOUND, ends),
+        left_limits=_limits(basis, Run.Kind.AS_LEFT, ends) if shows_left else [],
         input_unit=label(basis.unit),
     )
 
@@ -197,12 +199,12 @@ CSV_HEAD = (
 )  # fmt: skip
 
 
-def _limits(basis: Basis, kind: str) -> list[tuple[float, float]]:
-    """Half-width of the tolerance [% of span] over the range, close enough that the lines between look right."""
+def _limits(basis: Basis, kind: str, ends: tuple[float, float]) -> list[tuple[float, float]]:
+    """Half-width of the tolerance [% of span] between two inputs, close enough that the lines between look right."""
     import numpy as np
 
     signal = basis.signal()
-    inputs = np.asarray(signal.input_of_percent(np.linspace(0.0, 100.0, 41)))
+    inputs = np.linspace(*ends, 41)
     limits = basis.tolerance(kind).limits(inputs, signal)
     return [(float(p), float(upper)) for p, upper in zip(inputs, limits.upper, strict=True)]
 
@@ -224,6 +226,7 @@ def _run_view(read: ReadRun, basis: Basis, zone: ZoneInfo) -> RunView:
         tolerance_words=judged.judgement.tolerance_words if judged else "",
         why=figures.why if figures else "",
         limit=tolerance.words(label(basis.unit)),
+        limit_unit=label(basis.unit) if tolerance.quantity is Quantity.INPUT else "% of span",
         unit=label(read.readings[0].applied_unit if read.readings else basis.unit),
         rows=rows,
         figures=tuple(figures_of(judged)) if judged else (),

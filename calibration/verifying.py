@@ -70,9 +70,7 @@ def verify(plant: Plant, checked: Checked) -> Iterator[Finding]:
         previous, position = link.hash, link.position
     head = ChainHead.objects.filter(plant=plant).first()
     if head is not None and (head.position, head.hash) != (position, previous):
-        yield Finding(
-            plant.code, position, f"the chain ends here, but its end is kept as number {head.position}", True
-        )
+        yield Finding(plant.code, position, f"the chain ends here, but its end is kept as number {head.position}", True)
 
 
 def _records(plant: Plant) -> Iterator[Record | Signature]:
@@ -168,9 +166,7 @@ def _verdicts(plant: Plant, record: Record, kept: dict[str, Any], *, current: bo
     if current:
         fresh = Test(state=record.test.state)
         sent_back = record.test.state == Test.State.SENT_BACK
-        summarise(
-            fresh, outcome=record.test.outcome, adjusted=record.test.adjusted, runs=judged, counts=not sent_back
-        )
+        summarise(fresh, outcome=record.test.outcome, adjusted=record.test.adjusted, runs=judged, counts=not sent_back)
         if any(not _close(getattr(fresh, name), getattr(record.test, name)) for name in FOLLOWS):
             yield Finding(plant.code, record.position, "the summary kept on the test differs", False)
         state = state_of({signature.meaning for signature in record.signatures.all()}, transcribed=record.transcribed)
@@ -239,4 +235,3 @@ def _differing_runs(kept: list[dict[str, Any]], rebuilt: list[dict[str, Any]]) -
             else:
                 names.append(f"{one['kind']} {name}")
     return names
-

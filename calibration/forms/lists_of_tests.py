@@ -11,7 +11,9 @@ from register.forms.fields import DateField
 class TestsFilter(forms.Form):
     """Which tests are shown."""
 
-    text = forms.CharField(required=False, label="Tag or serial number", widget=forms.TextInput(attrs={"type": "search"}))
+    text = forms.CharField(
+        required=False, label="Tag or serial number", widget=forms.TextInput(attrs={"type": "search"})
+    )
     state = forms.ChoiceField(required=False, choices=[("", "any"), *Test.State.choices])
     verdict = forms.ChoiceField(
         required=False, label="As-found", choices=[("", "any"), *Verdict.choices, ("none", "could not be tested")]
@@ -23,7 +25,10 @@ class TestsFilter(forms.Form):
 class SheetsFilter(forms.Form):
     """Which sheets are shown."""
 
-    text = forms.CharField(required=False, label="Tag or serial number", widget=forms.TextInput(attrs={"type": "search"}))
+    text = forms.CharField(
+        required=False, label="Tag or serial number", widget=forms.TextInput(attrs={"type": "search"})
+    )
     show = forms.ChoiceField(
-        required=False, choices=[("", "open"), ("mine", "opened by me"), ("abandoned", "abandoned"), ("signed", "signed")]
+        required=False,
+        choices=[("", "open"), ("mine", "opened by me"), ("abandoned", "abandoned"), ("signed", "signed")],
     )

@@ -94,9 +94,7 @@ class SignForm(RegisterForm):
 class ReviewForm(RegisterForm):
     """The reviewer's password and remarks."""
 
-    remarks = forms.CharField(
-        max_length=300, required=False, widget=forms.Textarea(attrs={"rows": 2}), label="Remarks"
-    )
+    remarks = forms.CharField(max_length=300, required=False, widget=forms.Textarea(attrs={"rows": 2}), label="Remarks")
     password = PasswordField()
 
 

@@ -73,14 +73,12 @@ def _signed(request: HttpRequest, pk: int, *, back: bool) -> HttpResponse:
     return _shown(request, held, form=form, back=back)
 
 
-def _shown(
-    request: HttpRequest, held: Test, *, form: ReviewForm | None = None, back: bool = False
-) -> HttpResponse:
+def _shown(request: HttpRequest, held: Test, *, form: ReviewForm | None = None, back: bool = False) -> HttpResponse:
     record = _record(held, request.GET.get("version", ""))
     versions = list(
-        Record.objects.filter(test=held).order_by("-version").values(
-            "pk", "version", "position", "made_at", "made_by__printed_name", "correction_reason"
-        )
+        Record.objects.filter(test=held)
+        .order_by("-version")
+        .values("pk", "version", "position", "made_at", "made_by__printed_name", "correction_reason")
     )
     zone = ZoneInfo(held.plant.time_zone)
     for version in versions:
@@ -138,5 +136,3 @@ def _changes(record: Record) -> list[tuple[str, str, str]]:
     if record.supersedes is None:
         return []
     return test_page.changes_between(json.loads(record.supersedes.content), json.loads(record.content))
-
-

@@ -12,6 +12,7 @@ from django.utils import timezone
 from django.views.decorators.http import require_POST
 
 from calibration import sheet_page, sheets, signing
+from calibration.arriving import entries_from_json
 from calibration.drafts import Draft
 from calibration.forms.sheets import SignForm
 from calibration.models import Run, Sheet, Test
@@ -92,9 +93,7 @@ def sign(request: HttpRequest, pk: object) -> HttpResponse:
         if not form.is_valid():
             raise ValidationError({name: [str(e) for e in errors] for name, errors in form.errors.items()})
         confirmed(request, access.person(request), form.cleaned_data["password"])
-        record = signing.sign(
-            by=Actor.of(request), sheet_id=held.pk, acknowledged=request.POST.getlist("acknowledged")
-        )
+        record = signing.sign(by=Actor.of(request), sheet_id=held.pk, acknowledged=request.POST.getlist("acknowledged"))
     except ValidationError as error:
         return shown(request, access.get(request, SHEETS, "test", pk=pk), error=error, refused=refused)
     return redirect("test", record.test_id)
@@ -102,15 +101,29 @@ def sign(request: HttpRequest, pk: object) -> HttpResponse:
 
 def keep_form(request: HttpRequest, held: Sheet) -> list[str]:
     """Store the fields of a posted form that its reader changed; says which were not taken."""
+    refused = _keep_queue(request, held)
     seen = {name.removeprefix("seen."): request.POST[name] for name in request.POST if name.startswith("seen.")}
     if not seen or held.stage in ENDED:
-        return []
+        return refused
     session = request.session.session_key or "none"
     values = {name: str(request.POST.get(name, "")) for name in seen}
     new = typed_in_form(Draft(held), values, seen, device=f"form-{session[:12]}")
     if not new:
-        return []
+        return refused
     stored = add_entries(by=Actor.of(request), sheet_id=held.pk, entries=new)
+    return refused + [why for _, why in stored.refused]
+
+
+def _keep_queue(request: HttpRequest, held: Sheet) -> list[str]:
+    """Store what the device had not handed over when the form was sent."""
+    queue = request.POST.get("queue", "")
+    if not queue:
+        return []
+    try:
+        entries = entries_from_json(queue)
+    except ValidationError as error:
+        return error.messages
+    stored = add_entries(by=Actor.of(request), sheet_id=held.pk, entries=entries)
     return [why for _, why in stored.refused]
 
 

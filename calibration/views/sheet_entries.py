@@ -2,10 +2,7 @@
 
 from __future__ import annotations
 
-import datetime
 import json
-import uuid
-from collections.abc import Mapping
 from typing import Any
 
 from django.core.exceptions import ValidationError
@@ -16,7 +13,8 @@ from django.utils.dateparse import parse_datetime
 from django.views.decorators.http import require_GET
 
 from calibration import sheet_page
-from calibration.drafts import Draft, readable
+from calibration.arriving import entries_from_json, entry_from_form
+from calibration.drafts import Draft, far_from, readable
 from calibration.entries import NewEntry
 from calibration.models import Sheet
 from calibration.results import result_now
@@ -27,8 +25,6 @@ from calibration.views.sheet_contexts import run_context
 from register import access
 from register.auditing import Actor
 
-MOST_AT_ONCE = 2000
-
 
 def sheet_entries(request: HttpRequest, pk: object) -> HttpResponse:
     """Take entries (POST), or show all that were ever made (GET)."""
@@ -37,7 +33,7 @@ def sheet_entries(request: HttpRequest, pk: object) -> HttpResponse:
     held = access.get(request, SHEETS, "test", pk=pk)
     as_json = request.content_type == "application/json"
     try:
-        entries = _from_json(request.body) if as_json else [_from_form(request.POST)]
+        entries = entries_from_json(request.body) if as_json else [entry_from_form(request.POST)]
     except ValidationError as error:
         return JsonResponse({"error": error.messages[0]}, status=400)
     stored = add_entries(by=Actor.of(request), sheet_id=held.pk, entries=entries)
@@ -61,7 +57,15 @@ def sheet_judge(request: HttpRequest, pk: object) -> HttpResponse:
     figures, problems = readable(draft.basis, applied, draft.runs[kind].unit, measured)
     row = next((row for row in draft.runs[kind].readings if row.key.partition("-")[0] == key.partition("-")[0]), None)
     result = result_now(draft.basis, kind, *figures, up=row is None or row.direction > 0) if figures else None
-    context = {"reading": view, "result": result, "problems": list(problems.values()), "sheet": held}
+    context = {
+        "reading": view,
+        "result": result,
+        "problems": list(problems.values()),
+        "caution": far_from(draft.basis, row.percent, figures[0]) if figures and row else "",
+        "live": True,
+        "sheet": held,
+        "may_test": True,
+    }
     return render(request, "calibration/sheet_run.html#result", context)
 
 
@@ -123,6 +127,10 @@ def _fragment(request: HttpRequest, stored: Stored, new: NewEntry) -> HttpRespon
         context |= {"reading": view, "result": view.result, "oob": True}
         context |= {"run": run_context(draft, belongs[0], viewer)}
         response = render(request, "calibration/sheet_run.html#saved", context)
+    elif new.field.endswith("-with") and not refused:
+        views = sheet_page.standard_views(draft, new.field.partition(".")[0], viewer)
+        context["choice"] = next(view for view in views if view.field.name == new.field)
+        response = render(request, "calibration/sheet.html#choice", context)
     else:
         context["field"] = sheet_page.field_view(draft, new.field, viewer, "; ".join(refused))
         response = render(request, "calibration/sheet.html#note", context)
@@ -138,48 +146,3 @@ def _told(stored: Stored) -> dict[str, Any]:
         "stage": stored.draft.sheet.stage,
         "at": sheet_page.clock(timezone.now(), stored.draft.zone),
     }
-
-
-def _from_json(body: bytes) -> list[NewEntry]:
-    try:
-        sent = json.loads(body)
-    except ValueError as error:
-        raise ValidationError("The entries are not readable JSON.") from error
-    rows = sent.get("entries") if isinstance(sent, dict) else None
-    if not isinstance(rows, list) or not all(isinstance(row, dict) for row in rows):
-        raise ValidationError("Entries come as a list under “entries”.")
-    if len(rows) > MOST_AT_ONCE:
-        raise ValidationError(f"At most {MOST_AT_ONCE} entries are taken at once.")
-    return [_entry(row) for row in rows]
-
-
-def _from_form(sent: Mapping[str, Any]) -> NewEntry:
-    row = {name: sent[name] for name in sent if name != "seen"}
-    row["settles"] = sent.get("settles") == "yes"
-    row["seen"] = [part for part in sent.get("seen", "").split(" ") if part]
-    return _entry(row)
-
-
-def _entry(row: Mapping[str, Any]) -> NewEntry:
-    try:
-        typed_at = parse_datetime(str(row["typed_at"]))
-        if typed_at is None or typed_at.tzinfo is None:
-            raise ValueError("a time with its zone is wanted")
-        sequence = int(row["sequence"])
-        device = str(row["device"])
-        if not 0 <= sequence < 2**53 or not 0 < len(device) <= 60:
-            raise ValueError("device or sequence is out of bounds")
-        return NewEntry(
-            id=uuid.UUID(str(row["uuid"])),
-            field=str(row["field"])[:80],
-            text=str(row.get("text", "")).replace("\0", ""),
-            device=device,
-            sequence=sequence,
-            base=uuid.UUID(str(row["base"])) if row.get("base") else None,
-            typed_at=typed_at.astimezone(datetime.UTC),
-            schema_version=int(row.get("schema_version", 1)),
-            settles=row.get("settles") is True,
-            seen=tuple(uuid.UUID(str(number)) for number in row.get("seen", ())),
-        )
-    except (KeyError, ValueError, TypeError, OverflowError) as error:
-        raise ValidationError(f"An entry is incomplete or unreadable: {error}.") from error

@@ -11,9 +11,11 @@
   const device = `${deviceId()}.${Math.random().toString(36).slice(2, 10)}`;
   let sequence = 0;
   let failing = "";
+  let signedOut = false;
   let timer = 0;
   let flushing = false;
   const typing = new Set();
+  const waiting = new Map();
 
   function deviceId() {
     let id = localStorage.getItem("foundleft.device");
@@ -53,9 +55,10 @@
   }
 
   function show(at) {
-    const waiting = queue().length;
-    if (failing && waiting) say("failed", `${failing} ${waiting} kept on this device`);
-    else if (waiting || typing.size) say("pending", "Saving…");
+    const kept = queue().length;
+    if (failing && (kept || signedOut)) say("failed", kept ? `${failing} ${kept} kept on this device` : failing);
+    else if (kept) say("pending", "Saving…");
+    else if (typing.size) say("pending", "Not saved yet");
     else say("", at ? `All saved ${at}` : state.textContent);
   }
 
@@ -90,6 +93,7 @@
     const gone = new Set([...answer.saved, ...answer.refused.map((one) => one.id)]);
     keep(queue().filter((entry) => !gone.has(entry.uuid)));
     failing = "";
+    signedOut = false;
     if (answer.refused.length) {
       refusedBox.hidden = false;
       for (const one of answer.refused) {
@@ -103,7 +107,8 @@
   }
 
   function failed(status) {
-    if (status === 401) failing = "Signed out: sign in again in another window.";
+    signedOut = status === 401;
+    if (signedOut) failing = "Signed out: sign in again in another window.";
     else if (status === 403) failing = "Not allowed any more: load the page again.";
     else if (status) failing = "The server did not take it.";
     else failing = "No connection.";
@@ -137,10 +142,30 @@
     }
   }
 
+  // The entry is kept before htmx hears of the change: its request may have to wait, the entry may not.
+  document.addEventListener(
+    "change",
+    (event) => {
+      const field = event.target;
+      if (!field.matches("[data-field]")) return;
+      typing.delete(field.name);
+      if (!waiting.has(field)) waiting.set(field, []);
+      waiting.get(field).push(entryOf(field));
+      show();
+    },
+    true,
+  );
+
   document.addEventListener("input", (event) => {
     if (!event.target.matches("[data-field]")) return;
     typing.add(event.target.name);
     show();
+  });
+
+  // One reading in focus: the screen keyboard takes the lower half, so the reading goes to the middle of what is left.
+  document.addEventListener("focusin", (event) => {
+    const reading = event.target.closest("[data-reading]");
+    if (reading && event.target.matches("[data-field]")) reading.scrollIntoView({ block: "center" });
   });
 
   // "change" does not come when a page is hidden with the field still open.
@@ -159,14 +184,20 @@
   window.addEventListener("online", flush);
 
   document.addEventListener("htmx:configRequest", (event) => {
-    const { elt, detail } = { elt: event.detail.elt, detail: event.detail };
+    const detail = event.detail;
+    const elt = detail.elt;
     detail.headers["X-CSRFToken"] = token();
     if (elt.id === "news") detail.parameters.device = device;
     if (!elt.matches("[data-field]")) return;
-    typing.delete(elt.name);
-    const entry = entryOf(elt);
+    const entry = (waiting.get(elt) || []).shift();
+    if (!entry) return event.preventDefault();
     for (const name of Object.keys(entry)) detail.parameters[name] = entry[name];
-    show();
+  });
+  // Signed out: the page must stay, with what is typed in it.
+  document.addEventListener("htmx:beforeOnLoad", (event) => {
+    if (event.detail.xhr.status !== 401) return;
+    event.preventDefault();
+    failed(401);
   });
   document.addEventListener("entries-told", (event) => {
     told(event.detail);
@@ -177,6 +208,20 @@
   });
   document.addEventListener("htmx:responseError", (event) => {
     if (event.detail.elt.matches("[data-field]")) failed(event.detail.xhr.status);
+  });
+
+  // What still waits goes with the form, under the same numbers: sent twice, stored once.
+  document.addEventListener("submit", (event) => {
+    const form = event.target;
+    if (!form.matches(".sheet-form")) return;
+    let field = form.elements.queue;
+    if (!field) {
+      field = document.createElement("input");
+      field.type = "hidden";
+      field.name = "queue";
+      form.append(field);
+    }
+    field.value = JSON.stringify({ entries: queue() });
   });
 
   // Enter on the pad goes to the next field instead of closing the run.
@@ -212,6 +257,12 @@
     const entry = { uuid: newId(), field: "present", text: "", device, sequence, base: "" };
     keep([...queue(), { ...entry, typed_at: new Date().toISOString(), schema_version: 1 }]);
   }
+
+  // An answer that never came leaves its entry in the queue; nothing stays there for long.
+  setInterval(() => {
+    const oldest = queue()[0];
+    if (oldest && Date.now() - Date.parse(oldest.typed_at) > 2 * RETRY_MS) flush();
+  }, RETRY_MS);
 
   announce();
   takeUp();

@@ -94,9 +94,7 @@ def to_as_found(device: Device) -> None:
     device.type({f"caution.{line['key']}": "yes" for line in sheet.basis["cautions"]})
     sheets.pass_cautions(by=device.by, sheet_id=sheet.pk)
     pressure, meter = (
-        standards_of(sheet.tag)
-        if sheet.tag
-        else (people.make_standard(sheet.plant), people.make_meter(sheet.plant))
+        standards_of(sheet.tag) if sheet.tag else (people.make_standard(sheet.plant), people.make_meter(sheet.plant))
     )
     device.type({"as-found.applied-with": str(pressure.pk), "as-found.measured-with": str(meter.pk)})
     sheets.choose_standards(by=device.by, sheet_id=sheet.pk, kind="as-found")

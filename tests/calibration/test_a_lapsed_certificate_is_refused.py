@@ -15,8 +15,6 @@ from tests import cast as people
 from tests.calibration.at_work import Device, answer_checklist, run_texts
 
 
-
-
 @pytest.fixture
 def lapsed(tablet: Device, tag: people.Tag) -> Standard:
     """A pressure standard whose certificate lapsed; the sheet stands where standards are chosen."""
@@ -53,7 +51,9 @@ def test_it_is_refused_with_the_date_it_lapsed(tablet: Device, lapsed: Standard)
 
 
 def test_the_last_day_still_counts(tablet: Device, lapsed: Standard, tag: people.Tag) -> None:
-    people.make_certificate(lapsed, valid_until=tag.plant.today(), calibrated_on=tag.plant.today() - datetime.timedelta(days=30))
+    people.make_certificate(
+        lapsed, valid_until=tag.plant.today(), calibrated_on=tag.plant.today() - datetime.timedelta(days=30)
+    )
     assert choose(tablet).stage == "as-found"
 
 
@@ -70,9 +70,7 @@ def test_a_standard_away_at_the_laboratory_is_refused_and_cannot_be_excepted(
     tablet.type({"as-found.applied-with": str(away.pk)})
     assert "is at the laboratory" in refusal(tablet)["as-found.applied-with"][0]
     with pytest.raises(ValidationError, match="needs no exception"):
-        sheets.allow_exception(
-            by=Actor(person=cast.engineer), reason="urgent", sheet_id=tablet.sheet.pk, standard=away
-        )
+        sheets.allow_exception(by=Actor(person=cast.engineer), reason="urgent", sheet_id=tablet.sheet.pk, standard=away)
 
 
 def test_a_meter_does_not_apply_pressure(tablet: Device, lapsed: Standard) -> None:
@@ -81,9 +79,7 @@ def test_a_meter_does_not_apply_pressure(tablet: Device, lapsed: Standard) -> No
     assert "is no standard that applied the input" in refusal(tablet)["as-found.applied-with"][0]
 
 
-def test_an_allowed_exception_is_recorded_with_who_and_why(
-    tablet: Device, lapsed: Standard, cast: people.Cast
-) -> None:
+def test_an_allowed_exception_is_recorded_with_who_and_why(tablet: Device, lapsed: Standard, cast: people.Cast) -> None:
     reason = "Checked against RS-9 this morning, within 0.01 % at five points."
     sheets.allow_exception(by=Actor(person=cast.engineer), reason=reason, sheet_id=tablet.sheet.pk, standard=lapsed)
     choose(tablet)
@@ -103,9 +99,7 @@ def test_an_allowed_exception_is_recorded_with_who_and_why(
 def test_only_who_may_allow_it_can(tablet: Device, lapsed: Standard, cast: people.Cast) -> None:
     for person in (cast.technician, cast.planner, cast.auditor, cast.stranger):
         with pytest.raises(ValidationError, match="no role in this plant that allows an exception"):
-            sheets.allow_exception(
-                by=Actor(person=person), reason="why not", sheet_id=tablet.sheet.pk, standard=lapsed
-            )
+            sheets.allow_exception(by=Actor(person=person), reason="why not", sheet_id=tablet.sheet.pk, standard=lapsed)
     assert refusal(tablet)
 
 

@@ -1,4 +1,4 @@
-"""Entries are only added: sent again they change nothing, out of order they find their place, after a reload all is there."""
+"""Entries are only added: sent again they change nothing, out of order they find their place."""
 
 from __future__ import annotations
 

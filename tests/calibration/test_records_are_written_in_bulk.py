@@ -45,9 +45,7 @@ def test_a_record_carries_runs_readings_figures_and_summaries(tag: people.Tag, c
 def test_the_order_given_is_the_order_of_the_chain(tag: people.Tag, cast: people.Cast) -> None:
     days = [datetime.date(2020 + n, 5, 1) for n in range(4)]
     write_records([described(tag, on=day, signer=cast.technician) for day in days], act=act())
-    links = sorted(
-        [*Record.objects.all(), *Signature.objects.all()], key=lambda link: link.position
-    )
+    links = sorted([*Record.objects.all(), *Signature.objects.all()], key=lambda link: link.position)
     assert [link.position for link in links] == list(range(1, 9))
     previous = "0" * 64
     for link in links:

@@ -1,4 +1,4 @@
-"""`manage.py verify_records` recomputes every hash and verdict; what was altered is named, verdicts apart from hashes."""
+"""`manage.py verify_records` recomputes every hash and verdict and names what was altered."""
 
 from __future__ import annotations
 
