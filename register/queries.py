@@ -223,7 +223,7 @@ def fields_called(words: str) -> list[str]:
 def field_in_words(thing_type: str, field: str) -> str:
     """What people call a field of the trail."""
     try:
-        return str(apps.get_model(thing_type)._meta.get_field(field).verbose_name)  # type: ignore[union-attr]
+        return str(apps.get_model(thing_type)._meta.get_field(field).verbose_name)
     except (LookupError, FieldDoesNotExist, AttributeError):
         return field.replace("_", " ")
 

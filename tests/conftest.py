@@ -19,6 +19,16 @@ settings.register_profile("any machine", deadline=None, suppress_health_check=[H
 settings.load_profile("any machine")
 
 
+def pytest_collection_modifyitems(config: pytest.Config, items: list[pytest.Item]) -> None:
+    """Tests of what only PostgreSQL does run there only."""
+    if connections["default"].vendor == "postgresql":
+        return
+    elsewhere = [item for item in items if item.get_closest_marker("postgresql")]
+    if elsewhere:
+        config.hook.pytest_deselected(items=elsewhere)
+        items[:] = [item for item in items if item not in elsewhere]
+
+
 @pytest.fixture(scope="session", autouse=True)
 def flush_despite_guards() -> Iterator[None]:
     """Transactional tests end with a flush, which the triggers refuse: take them off for just that long."""
