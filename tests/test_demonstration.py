@@ -378,6 +378,10 @@ def test_the_chain_and_every_verdict_agree(loaded: Loaded) -> None:
     assert "Every hash and every verdict agrees." in said.getvalue()
 
 
+def test_what_is_kept_agrees_with_the_full_history(loaded: Loaded) -> None:
+    call_command("recompute", "--check", stdout=StringIO())
+
+
 def test_a_second_loading_is_refused(loaded: Loaded) -> None:
     with pytest.raises(NotEmptyError, match="in the database already"):
         load()
