@@ -7,6 +7,7 @@ from typing import Any
 
 from django.http import HttpRequest, HttpResponse
 from django.http.response import HttpResponseBase
+from django.urls import reverse
 from django.views.decorators.http import require_GET, require_POST
 
 from calibration import drift_page, drifting, tag_page
@@ -28,6 +29,7 @@ def tag(request: HttpRequest, pk: int) -> HttpResponse:
     context: dict[str, Any] = {
         "tag": shown,
         "drift": _drift(shown, history, request.GET.get("channel", "")),
+        "export_url": reverse("tag-drift-export", args=[pk]),
     }
     if not wants_part(request):
         may = partial(access.allowed, request, shown.plant_id)

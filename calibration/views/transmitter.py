@@ -7,6 +7,7 @@ from typing import Any
 
 from django.http import HttpRequest, HttpResponse
 from django.http.response import HttpResponseBase
+from django.urls import reverse
 from django.views.decorators.http import require_GET, require_POST
 
 from calibration import drift_page, drifting, transmitter_page
@@ -26,6 +27,7 @@ def transmitter(request: HttpRequest, pk: int) -> HttpResponse:
     context: dict[str, Any] = {
         "transmitter": shown,
         "drift": _drift(shown, history, request.GET.get("channel", "")),
+        "export_url": reverse("transmitter-drift-export", args=[pk]),
     }
     if not wants_part(request):
         may = partial(access.allowed, request, shown.plant_id)

@@ -32,13 +32,14 @@ def fleet(tag: Tag) -> list[Tag]:
     second = people.make_area(tag.plant, "30")
     tags = [tag, *(people.make_ready_tag(second, f"PT-10{number}") for number in (1, 2, 3))]
     tags.append(people.make_tag(second, "PT-104", service="Acid to the reactor"))
-    for row, ago, values in (
-        (tags[0], 600, {}),
-        (tags[1], 400, {}),
-        (tags[2], 0, {}),
-        (tags[3], 10, {"found": OUTSIDE}),
+    inside = (0.0,) * 9
+    for row, ago, found in (
+        (tags[0], 600, inside),
+        (tags[1], 400, inside),
+        (tags[2], 0, inside),
+        (tags[3], 10, OUTSIDE),
     ):
-        a_test(row, today - days(days=ago), **values)
+        a_test(row, today - days(days=ago), found=found)
     flagging.recompute([row.pk for row in tags])
     scheduling.refresh([row.pk for row in tags])
     return tags
