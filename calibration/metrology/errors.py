@@ -151,11 +151,16 @@ def curve_figures(layout: Layout, curve_x: Floats, mean: Floats) -> dict[str, Fl
     if len(layout.levels) >= 3:
         in_order = ~(np.diff(curve_x, axis=0) <= 0.0).any(axis=0)
         x = np.where(in_order, curve_x, np.nan) if not in_order.all() else curve_x
-        slope = (mean[-1] - mean[0]) / (x[-1] - x[0])
-        off = mean[1:-1] - mean[0] - slope * (x[1:-1] - x[0])
-        figures["nonlinearity_terminal"] = np.fmax.reduce(np.abs(off), axis=0)
-        figures["nonlinearity_zero_based"] = greatest_from_first(x, mean)
-        figures["nonlinearity_independent"] = greatest_bow(x, mean)
+        # Two points left of a curve with gaps may have been read at the same input: no line goes through them.
+        with np.errstate(divide="ignore", invalid="ignore"):
+            slope = (mean[-1] - mean[0]) / (x[-1] - x[0])
+            off = mean[1:-1] - mean[0] - slope * (x[1:-1] - x[0])
+            bows = {
+                "nonlinearity_terminal": np.fmax.reduce(np.abs(off), axis=0),
+                "nonlinearity_zero_based": greatest_from_first(x, mean),
+                "nonlinearity_independent": greatest_bow(x, mean),
+            }
+        figures |= {name: np.where(np.isfinite(bow), bow, np.nan) for name, bow in bows.items()}
     return figures
 
 

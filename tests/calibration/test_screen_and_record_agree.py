@@ -1,0 +1,91 @@
+"""The verdict beside a field, that of the run on the page and that of the record come from one arithmetic."""
+
+from __future__ import annotations
+
+import dataclasses
+import random
+
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from calibration.basis import Basis, StatedTolerance
+from calibration.drafts import Draft
+from calibration.judging import Point, judge, judge_one
+from calibration.models import RunFigures, Sheet
+from calibration.results import result_now, result_of
+from calibration.sheet_page import Viewer, reading_views, verdict_words
+from tests.calibration.at_work import Device, run_texts, to_as_found, to_signature
+
+BASIS = Basis(
+    head_id=1,
+    lrv="0",
+    urv="10",
+    unit="bar",
+    reference="gauge",
+    mpe=StatedTolerance("percent of span", percent="0.25"),
+    points="0 25 50 75 100 75 50 25 0",
+)
+BASES = [
+    BASIS,
+    dataclasses.replace(BASIS, lrv="10", urv="-2"),
+    dataclasses.replace(BASIS, mpe=StatedTolerance("absolute", amount="30", unit="mbar")),
+    dataclasses.replace(BASIS, mpe=StatedTolerance("larger", percent="0.2", amount="0.03", unit="bar")),
+    dataclasses.replace(BASIS, transfer="square root", low_cut_percent=1.0),
+]
+
+
+@settings(max_examples=200)
+@given(
+    st.sampled_from(BASES),
+    st.lists(st.floats(-2, 12, allow_nan=False), min_size=9, max_size=9),
+    st.lists(st.floats(3.2, 23, allow_nan=False), min_size=9, max_size=9),
+)
+def test_a_reading_judged_alone_equals_the_same_reading_in_its_run(
+    basis: Basis, applied: list[float], measured: list[float]
+) -> None:
+    asked = basis.point_list()
+    assert asked is not None
+    points = [
+        Point(p, i, int(direction), float(percent))
+        for p, i, direction, percent in zip(applied, measured, asked.directions, asked.points, strict=True)
+    ]
+    whole = judge(basis, "as-found", points).judgement
+    for place, point in enumerate(points):
+        alone = judge_one(basis, "as-found", point.applied, point.measured)
+        assert alone.verdicts[0] == whole.readings.verdicts[place]
+        assert alone.error[0] == whole.readings.error[place]
+        up = point.direction > 0
+        assert result_now(basis, "as-found", point.applied, point.measured, up=up) == result_of(
+            whole.readings, place, up=up
+        )
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_the_verdict_on_the_page_is_the_verdict_on_the_record(tablet: Device, seed: int) -> None:
+    errors = [random.Random(seed).choice([0.0, 0.3, 0.5, 0.51, -0.5, -0.7]) for _ in range(9)]
+    to_as_found(tablet)
+    tablet.type(run_texts("as-found", errors))
+    draft = Draft(Sheet.objects.get())
+    shown, _, why = verdict_words(draft, "as-found")
+    outside = [view.result.outside for view in reading_views(draft, "as-found", Viewer(tablet.person)) if view.result]
+    from calibration import sheets, signing
+    from tests.calibration.at_work import answer_checklist
+
+    sheets.close_as_found(by=tablet.by, sheet_id=tablet.sheet.pk)
+    tablet.type({"adjust.choice": "not adjusted"})
+    sheets.record_adjustment(by=tablet.by, sheet_id=tablet.sheet.pk)
+    answer_checklist(tablet)
+    signing.sign(by=tablet.by, sheet_id=tablet.sheet.pk)
+    figures = RunFigures.objects.get()
+    assert shown.startswith(figures.verdict)
+    assert why == figures.why
+    assert any(outside) == (figures.verdict == "fail")
+
+
+def test_an_error_on_the_limit_is_inside_everywhere(tablet: Device) -> None:
+    to_signature(tablet, (0.5,) * 9)
+    draft = Draft(Sheet.objects.get())
+    assert verdict_words(draft, "as-found")[0] == "pass, in tolerance"
+    views = reading_views(draft, "as-found", Viewer(tablet.person))
+    assert not any(view.result.outside for view in views if view.result)
