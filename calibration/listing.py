@@ -52,6 +52,7 @@ NO_TEST: Final = "none"
 class Asked:
     """What a person asked a list for; every part stands in the address."""
 
+    plant: str = ""
     area: str = ""
     service: str = ""
     flag: str = ""
@@ -70,6 +71,7 @@ class Asked:
         order = given.get("sort", "")
         return cls(
             **chosen,
+            plant=given.get("plant", ""),
             text=given.get("text", "").strip()[:100],
             sort=order if order.removeprefix("-") in ORDERS else sort,
             after=given.get("after", ""),

@@ -70,7 +70,7 @@ def due_export(request: HttpRequest) -> HttpResponseBase:
 
 def _counts(asked: Asked, counted: dict[ScheduleState, int]) -> list[Count]:
     """A link per state, which keeps sort but drops the other filters: the number is that of the whole plant."""
-    plain = Asked(sort=asked.sort)
+    plain = Asked(plant=asked.plant, sort=asked.sort)
     made = [
         Count(
             words=f"{listing.total_text(counted[state])} {state.value}",

@@ -197,6 +197,8 @@ def test_a_requirement_is_set_on_its_page_and_what_was_typed_stays_on_error(
     client = client_as(cast.engineer)
     address = reverse("tag-requirement", args=[tag.pk])
     assert 'value="0.5"' in client.get(address).content.decode()
+    points = tag.plant.point_lists.first()
+    assert points is not None
     typed = {
         "mpe_form": "percent of span",
         "mpe_percent": "a quarter",
@@ -205,7 +207,7 @@ def test_a_requirement_is_set_on_its_page_and_what_was_typed_stays_on_error(
         "interval_months": "6",
         "anchor": "last test",
         "lead_days": "30",
-        "point_list": str(tag.plant.point_lists.first().pk),
+        "point_list": str(points.pk),
         "effective_from": str(tag.plant.today()),
         "reason": "drifts more than thought",
     }
