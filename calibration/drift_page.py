@@ -164,8 +164,14 @@ def _chart(drift: Drift, whose: str) -> SafeString:
         ],
         band=[BandPoint(*point) for point in drift.band],
         due=drift.due if drift.band else None,
-        meets=drift.meeting.on if drift.meeting and drift.band and drift.meeting.on else None,
+        meets=_met_within(drift),
     )
+
+
+def _met_within(drift: Drift) -> datetime.date | None:
+    """The day on which the band meets the MPE, where the band is drawn that far."""
+    on = drift.meeting.on if drift.meeting else None
+    return on if on is not None and drift.band and on <= drift.band[-1][0] else None
 
 
 def file_lines(drift: Drift | None, history: History) -> Iterator[tuple[Any, ...]]:

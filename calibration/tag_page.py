@@ -17,7 +17,7 @@ from calibration.models import Deferral, Requirement, ScheduleState, Sheet, Stan
 from calibration.sheet_fields import ENDED
 from register.checking import RELATED
 from register.figures import ago
-from register.models import Fitting, Flag, Intervention, Range, Tag
+from register.models import Fitting, Flag, Intervention, Measurand, Range, RootExtraction, Tag
 from register.models.typed import as_shown, in_words
 
 #: Lines of the time line, and tests of the table; the lists of tests hold the rest.
@@ -198,11 +198,11 @@ def due_words(standing: Standing, state: ScheduleState, today: datetime.date) ->
         return f"until {standing.deferred_until}; was due {due}"
     if state is ScheduleState.IN_GRACE:
         return f"until {limit}; was due {due}, {ago(due, today)}"
-    if state is ScheduleState.OVERDUE:
-        return f"was due {due}, grace ended {limit}, {ago(limit, today)}"
+    if state is ScheduleState.OVERDUE and limit is not None:
+        return f"since {limit + datetime.timedelta(days=1)}, {ago(limit, today)}; was due {due}"
     if state is ScheduleState.DUE:
         return f"on {due}, {ago(due, today)}"
-    return f"next on {due}, {ago(due, today)}"
+    return f"until {due}, {ago(due, today)}"
 
 
 def next_action(page: TagPage, may: May) -> Link | None:
@@ -343,12 +343,17 @@ def _signal(tag: Tag) -> list[Fact]:
         facts.append(Fact("Low cut", f"{used.low_cut_percent:g}", "% of input", note=used.get_below_cut_display()))
     scale = _span_words(tag.scale_low, tag.scale_high)
     facts += [
-        Fact("Square root taken", tag.get_root_extraction_display()),
+        Fact("Square root taken", tag.get_root_extraction_display() if _may_take_root(tag) else ""),
         Fact("Control-system scale", scale, tag.scale_unit),
         Fact("Loop supply", "" if tag.supply_v is None else f"{tag.supply_v:g}", "V"),
         Fact("Loop resistance", "" if tag.loop_ohm is None else f"{tag.loop_ohm:g}", "Ω"),
     ]
     return [fact for fact in facts if fact.value]
+
+
+def _may_take_root(tag: Tag) -> bool:
+    """Where a square root is out of the question, saying that none is taken is noise."""
+    return tag.root_extraction != RootExtraction.NONE or tag.measurand in (Measurand.FLOW, Measurand.DIFFERENTIAL)
 
 
 def _span_words(low: str, high: str) -> str:
