@@ -3,16 +3,19 @@
 from __future__ import annotations
 
 import datetime
+from collections.abc import Callable
 
 import pytest
 from django.core.exceptions import ValidationError
+from django.test import Client
+from django.urls import reverse
 
 from calibration import sheets, signing
 from calibration.models import Sheet, Standard, StandardUse
 from register.auditing import Actor
 from register.models import AuditEntry
 from tests import cast as people
-from tests.calibration.at_work import Device, answer_checklist, run_texts
+from tests.calibration.at_work import Device, answer_checklist, run_texts, to_as_found
 
 
 @pytest.fixture
@@ -115,3 +118,36 @@ def test_an_exception_needs_a_reason(tablet: Device, lapsed: Standard, cast: peo
     with pytest.raises(ValidationError) as error:
         sheets.allow_exception(by=Actor(person=cast.engineer), reason=" ", sheet_id=tablet.sheet.pk, standard=lapsed)
     assert set(error.value.message_dict) == {"reason"}
+
+
+def test_the_authorised_person_gives_his_password_on_the_technicians_tablet(
+    tablet: Device, lapsed: Standard, cast: people.Cast, client_as: Callable[[people.User], Client]
+) -> None:
+    client = client_as(cast.technician)
+    page = client.get(reverse("sheet", args=[tablet.sheet.pk])).content.decode()
+    url = reverse("sheet-exception", args=[tablet.sheet.pk, lapsed.pk])
+    assert url in page
+    values = {"username": "engineer", "password": "wrong", "reason": "Checked this morning."}
+    refused = client.post(url, values).content.decode()
+    assert "do not belong together" in refused
+    assert "Checked this morning." in refused
+    own = {"username": "technician", "password": people.PASSWORD, "reason": "I want to."}
+    assert "no role in this plant that allows an exception" in client.post(url, own).content.decode()
+    assert client.post(url, values | {"password": people.PASSWORD}).status_code == 302
+    assert (
+        "Engineer allowed it: Checked this morning."
+        in client.get(reverse("sheet", args=[tablet.sheet.pk])).content.decode()
+    )
+    assert choose(tablet).stage == "as-found"
+
+
+def test_a_certificate_that_lapses_between_choosing_and_the_last_reading_is_refused_at_closing(
+    tablet: Device, tag: people.Tag
+) -> None:
+    to_as_found(tablet)
+    tablet.type(run_texts("as-found"))
+    standard = Standard.objects.get(kind="pressure")
+    standard.certificates.update(valid_until=tag.plant.today() - datetime.timedelta(days=1))
+    with pytest.raises(ValidationError) as error:
+        sheets.close_as_found(by=tablet.by, sheet_id=tablet.sheet.pk)
+    assert "1 day ago" in error.value.message_dict["as-found.applied-with"][0]

@@ -10,7 +10,7 @@ import threading
 from pathlib import Path
 
 import pytest
-from django.db import connection, connections
+from django.db import connections
 
 from calibration.models import ChainHead, Record
 from calibration.verifying import Checked, verify
@@ -57,7 +57,6 @@ def test_processes_on_one_sqlite_file(tmp_path: Path) -> None:
 
 
 @pytest.mark.postgresql
-@pytest.mark.skipif(connection.vendor != "postgresql", reason="several writers at once need PostgreSQL here")
 @pytest.mark.django_db(transaction=True)
 def test_threads_on_postgresql() -> None:
     cast = people.make_cast()
