@@ -19,7 +19,9 @@ from calibration.metrology.signal import MEASURING_HIGH_MA, MEASURING_LOW_MA, SP
 
 Floats = NDArray[np.float64]
 
-BLOCK = 16384
+#: Multiplications of one matrix product in a block: beyond, BLAS calls in further threads, which wait for each other
+#: longer than they work, and much longer on a machine that is busy.
+PRODUCT = 2**18
 
 
 @dataclass(frozen=True, eq=False)
@@ -126,7 +128,7 @@ def evaluate_runs(
     square_root: ArrayLike = False,
     low_cut: ArrayLike = 0.0,
     hold: ArrayLike = False,
-    block: int = BLOCK,
+    block: int | None = None,
 ) -> FleetFigures:
     """Evaluate many runs over one point list.
 
@@ -144,8 +146,9 @@ def evaluate_runs(
         +1 up, -1 down; else they follow from the points.
     square_root, low_cut, hold : scalar or array, shape (runs,)
         Transfer of each run, as for `signal.output_fraction`.
-    block : int
-        Runs evaluated at a time; beside its results the work takes memory for one block only.
+    block : int, optional
+        Runs evaluated at a time, else as many as suit the machine; beside its results the work takes memory for one
+        block only.
 
     Returns
     -------
@@ -178,7 +181,7 @@ def evaluate_runs(
     holds = np.broadcast_to(np.asarray(hold, dtype=bool), runs)
     out = {name: np.empty(runs) for name in FIGURES}
 
-    for rows in _blocks(runs, block):
+    for rows in _blocks(runs, block or max(1, PRODUCT // clean.middle.size)):
         current = np.ascontiguousarray(i[rows].T)
         fraction = _fractions(given, p, rows, lows[rows], highs[rows])
         rough = _rough(current, fraction) | roots[rows]
@@ -245,7 +248,7 @@ def evaluate_ragged(
     square_root: ArrayLike = False,
     low_cut: ArrayLike = 0.0,
     hold: ArrayLike = False,
-    block: int = BLOCK,
+    block: int | None = None,
 ) -> FleetFigures:
     """Evaluate runs of different length and point list, given end to end.
 
@@ -258,8 +261,8 @@ def evaluate_ragged(
         Index of the first reading of each run; a run reaches to the start of the next.
     lrv, urv, square_root, low_cut, hold : scalar or array, shape (runs,)
         As for `evaluate_runs`.
-    block : int
-        Runs evaluated at a time.
+    block : int, optional
+        Runs evaluated at a time, else as many as suit the machine.
 
     Returns
     -------
