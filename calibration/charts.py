@@ -21,6 +21,7 @@ if TYPE_CHECKING:
 
 INK, FAINT, HAIR, RULE = COLOURS["ink"], COLOURS["faint"], COLOURS["hair"], COLOURS["rule"]
 PAPER, OUTSIDE, NEAR, ACTION = COLOURS["paper"], COLOURS["outside"], COLOURS["near"], COLOURS["action"]
+BAND = COLOURS["band"]
 #: As in `calibration.marks`: the picture must not call outside what the verdict allows by rounding.
 SLACK = 1e-7
 
@@ -333,11 +334,11 @@ def _draw_band(axes: Axes, band: Sequence[BandPoint]) -> list[Line2D]:
         return []
     days = _days([point.on for point in band])
     low, high = [point.low for point in band], [point.high for point in band]
-    axes.fill_between(days, low, high, color=HAIR, linewidth=0, zorder=1)
+    axes.fill_between(days, low, high, color=BAND, linewidth=0, zorder=1)
     for edge in (low, high):
         axes.plot(days, edge, color=RULE, linewidth=0.8, zorder=2)
     axes.plot(days, [point.centre for point in band], color=FAINT, linewidth=1.1, linestyle=(0, (4, 2)), zorder=3)
-    return [_key("prediction, 95 %", marker="s", markersize=9, markerfacecolor=HAIR, markeredgecolor=RULE)]
+    return [_key("prediction, 95 %", marker="s", markersize=9, markerfacecolor=BAND, markeredgecolor=RULE)]
 
 
 def _scale_drift(

@@ -22,6 +22,7 @@ ROLES = {
     "#131b2a": "ink",
     "#525a69": "faint",
     "#d9d5c7": "hair",
+    "#dcd8ca": "band",
     "#8d8a7f": "rule",
     "#fcfbf7": "paper",
     "#b8290d": "outside",

@@ -35,6 +35,7 @@ NOT_ADJUSTED: Final = "not adjusted"
 _READING = re.compile(r"(as-found|as-left)\.([1-9][0-9]{0,2})(?:-([1-9]))?\.(applied|measured|digital)")
 _CONDITION = re.compile(rf"(as-found|as-left)\.({'|'.join(CONDITIONS)})")
 _STANDARD = re.compile(r"(as-found|as-left)\.(applied|measured)-with")
+_CERTIFICATE = re.compile(r"(as-found|as-left)\.(applied|measured)-certificate")
 _ANSWER = re.compile(r"(caution|checklist)\.([-a-z0-9_]{1,60})")
 _PLAIN: Final = {
     "confirm-tag": (Stage.CONFIRM,),
@@ -124,12 +125,15 @@ def label(name: str) -> str:
     if match := _CONDITION.fullmatch(name):
         return f"{match[1]}, {_CONDITION_WORDS[match[2]]}"
     if match := _STANDARD.fullmatch(name):
-        return f"{match[1]}, standard that {'applied the input' if match[2] == 'applied' else 'measured the output'}"
+        return f"{match[1]}, standard that {_PART_WORDS[match[2]]}"
+    if match := _CERTIFICATE.fullmatch(name):
+        return f"{match[1]}, certificate of the standard that {_PART_WORDS[match[2]]}"
     if match := _ANSWER.fullmatch(name):
         return f"{'caution' if match[1] == 'caution' else 'return to service'}, {match[2].replace('-', ' ')}"
     return _WORDS.get(name, name)
 
 
+_PART_WORDS: Final = {"applied": "applied the input", "measured": "measured the output"}
 _CONDITION_WORDS: Final = {
     "unit": "unit of the applied input",
     "ambient": "ambient temperature",

@@ -189,7 +189,7 @@ def due_words(standing: Standing, state: ScheduleState, today: datetime.date) ->
     """The due date in a sentence, with how far it lies from today."""
     due, limit = standing.due_on, standing.grace_until
     if state is ScheduleState.NOT_IN_SERVICE:
-        return "nothing is due"
+        return "so nothing is due"
     if state is ScheduleState.NO_REQUIREMENT or due is None:
         return "no interval is set, so no date follows"
     if state is ScheduleState.NEVER_TESTED:

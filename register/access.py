@@ -10,6 +10,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from typing import Any, Final, TypeVar
 
+from django.conf import settings
 from django.contrib.auth.views import redirect_to_login
 from django.core.exceptions import PermissionDenied
 from django.db import models
@@ -20,6 +21,7 @@ from django.shortcuts import get_object_or_404, redirect, resolve_url
 from register.models import Area, Flag, Membership, Plant, Role, Tag, Transmitter, User
 
 READ: Final = "read"
+YEAR: Final = 365 * 24 * 3600
 PERMISSIONS: Final[dict[str, frozenset[str]]] = {
     "read": frozenset(Role.values),
     "edit register": frozenset({Role.ENGINEER, Role.ADMINISTRATOR}),
@@ -77,7 +79,13 @@ class PermissionMiddleware:
         self.get_response = get_response
 
     def __call__(self, request: HttpRequest) -> HttpResponse:
-        return self.get_response(request)
+        response = self.get_response(request)
+        # Lists go on in the plant of the thing last looked at.
+        if getattr(request, "plant_of_page", None) is not None and len(roles(person(request))) > 1:
+            plant = shown_plant(request)
+            if plant and request.COOKIES.get("plant") != plant.code:
+                keep_plant(response, plant.code)
+        return response
 
     def process_view(
         self, request: HttpRequest, view: View, args: tuple[Any, ...], kwargs: dict[str, Any]
@@ -151,6 +159,7 @@ def in_plant(request: HttpRequest, plant_id: int, permission: str) -> None:
     user = person(request)
     if not may(user, READ, plant_id):
         raise Http404
+    request.plant_of_page = plant_id  # type: ignore[attr-defined]
     if not may(user, permission, plant_id):
         raise PermissionDenied(f"Your roles in this plant do not let you {permission}.")
 
@@ -209,10 +218,23 @@ def readable_plants(user: User) -> list[Plant]:
 
 
 def shown_plant(request: HttpRequest) -> Plant | None:
-    """The plant named by `?plant=CODE`, else the one last chosen, else the first by name; None without any role."""
+    """The plant of the thing shown, else the one named by `?plant=CODE`, the one last chosen, the first by name.
+
+    None without any role.
+    """
     available = readable_plants(person(request))
+    of_page = getattr(request, "plant_of_page", None)
+    if of_page is not None:
+        return next((plant for plant in available if plant.pk == of_page), None)
     wanted = request.GET.get("plant") or request.COOKIES.get("plant", "")
     return next((plant for plant in available if plant.code == wanted), available[0] if available else None)
+
+
+def keep_plant(response: HttpResponse, code: str) -> None:
+    """Keep the plant that lists show in a cookie; it grants nothing."""
+    response.set_cookie(
+        "plant", code, max_age=YEAR, httponly=True, samesite="Lax", secure=settings.SESSION_COOKIE_SECURE
+    )
 
 
 def chosen_plant(request: HttpRequest) -> Plant:

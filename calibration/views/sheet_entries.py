@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 from typing import Any
 
 from django.core.exceptions import ValidationError
@@ -16,7 +17,7 @@ from calibration import sheet_page
 from calibration.arriving import entries_from_json, entry_from_form
 from calibration.drafts import Draft, far_from, readable
 from calibration.entries import NewEntry
-from calibration.models import Sheet
+from calibration.models import Sheet, Standard
 from calibration.results import result_now
 from calibration.sheet_fields import KINDS, PRESENT, label, reading, reading_of
 from calibration.storing_entries import Stored, add_entries
@@ -24,6 +25,7 @@ from calibration.views.sheet import SHEETS
 from calibration.views.sheet_contexts import run_context
 from register import access
 from register.auditing import Actor
+from register.engineering.units import LENGTH, PRESSURE, TEMPERATURE, choices
 
 
 def sheet_entries(request: HttpRequest, pk: object) -> HttpResponse:
@@ -102,18 +104,30 @@ def sheet_news(request: HttpRequest, pk: object) -> HttpResponse:
 
 def _history(request: HttpRequest, held: Sheet) -> HttpResponse:
     draft = Draft(held)
+    entries = held.entries.select_related("person").exclude(field=PRESENT).order_by("received_at", "device", "sequence")
+    names = _names(held.plant_id)
     rows = [
         {
             "at": sheet_page.clock(entry.received_at, draft.zone),
             "who": str(entry.person),
             "field": label(entry.field),
-            "text": entry.text,
+            "text": names.get(re.split("[-.]", entry.field)[-1], {}).get(entry.text, entry.text),
             "device": entry.device,
             "settles": entry.settles,
         }
-        for entry in held.entries.select_related("person").order_by("received_at", "device", "sequence")
+        for entry in entries
     ]
     return render(request, "calibration/sheet_entries.html", {"sheet": held, "rows": rows})
+
+
+def _names(plant_id: int) -> dict[str, dict[str, str]]:
+    """What the ids chosen in a sheet are called: standards in fields that end in "with", certificates, units."""
+    standards = Standard.objects.filter(plant=plant_id).prefetch_related("certificates")
+    return {
+        "with": {str(standard.pk): standard.name for standard in standards},
+        "certificate": {str(one.pk): one.number for standard in standards for one in standard.certificates.all()},
+        "unit": dict(choices(PRESSURE, TEMPERATURE, LENGTH)),
+    }
 
 
 def _fragment(request: HttpRequest, stored: Stored, new: NewEntry) -> HttpResponse:

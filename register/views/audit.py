@@ -81,6 +81,7 @@ def act(request: HttpRequest, pk: uuid.UUID) -> HttpResponse:
     for plant in access.readable_plants(access.person(request)):
         found = [entry for entries in Trail(plant).entries() for entry in entries.filter(act=pk).order_by("id")]
         if found:
+            access.in_plant(request, plant.pk, "read")
             context = {"plant": plant, "lines": [_line(entry, plant) for entry in found], "first": found[0]}
             return render(request, "register/audit_act.html", context)
     raise Http404
@@ -135,10 +136,11 @@ def _line(entry: AuditEntry, plant: Plant) -> Line:
             url = reverse(PAGES[entry.thing_type], args=[entry.thing_id])
         except NoReverseMatch:
             url = ""
+    kind = type_in_words(entry.thing_type)
     return Line(
         entry=entry,
         at=entry.at.astimezone(ZoneInfo(plant.time_zone)).strftime("%Y-%m-%d %H:%M:%S"),
-        kind_of_thing=type_in_words(entry.thing_type),
+        kind_of_thing="" if entry.thing_label.startswith(f"{kind} ") else kind,
         field=field_in_words(entry.thing_type, entry.field) if entry.field else "",
         url=url,
     )

@@ -2,15 +2,12 @@
 
 from __future__ import annotations
 
-from django.conf import settings
 from django.http import Http404, HttpRequest, HttpResponse, HttpResponseRedirect
 from django.shortcuts import redirect, render
 
 from register import access
 from register.models import Role
 from register.views.signing_in import onward
-
-YEAR = 365 * 24 * 3600
 
 
 def home(request: HttpRequest) -> HttpResponse:
@@ -24,11 +21,9 @@ def home(request: HttpRequest) -> HttpResponse:
 
 
 def choose_plant(request: HttpRequest, code: str) -> HttpResponse:
-    """Keep the plant that lists show in a cookie, and go on; it grants nothing."""
+    """Show lists of that plant from now on, and go on."""
     if code not in {plant.code for plant in access.readable_plants(access.person(request))}:
         raise Http404
     response = HttpResponseRedirect(onward(request))
-    response.set_cookie(
-        "plant", code, max_age=YEAR, httponly=True, samesite="Lax", secure=settings.SESSION_COOKIE_SECURE
-    )
+    access.keep_plant(response, code)
     return response

@@ -41,7 +41,12 @@ def intervention_new(request: HttpRequest, pk: int) -> HttpResponse:
     if done is not None:
         messages.success(request, f"Noted: {done}.")
         return redirect("transmitter", transmitter.pk)
-    return render(request, "register/intervention_new.html", {"form": form, "transmitter": transmitter})
+    context = {
+        "form": form,
+        "transmitter": transmitter,
+        "may_change_head": access.allowed(request, transmitter.plant_id, "edit register"),
+    }
+    return render(request, "register/intervention_new.html", context)
 
 
 def intervention_withdraw(request: HttpRequest, pk: int) -> HttpResponse:

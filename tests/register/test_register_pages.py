@@ -53,8 +53,8 @@ def test_a_range_is_judged_before_it_is_set(client: Client, tag: people.Tag) -> 
     broken = client.get(asked + "20", headers=HTMX).content.decode()
     assert "URV 20 bar is 4 bar (25.0 %) above the head&#x27;s upper limit of 16" in broken
     assert '<svg class="m strip"' in broken
-    assert "All 6 checks pass" in client.get(asked + "12", headers=HTMX).content.decode()
-    assert "All 6 checks pass" not in client.get(asked + "12,5,0", headers=HTMX).content.decode()
+    assert "all 6 checks pass" in client.get(asked + "12", headers=HTMX).content.decode()
+    assert "all 6 checks pass" not in client.get(asked + "12,5,0", headers=HTMX).content.decode()
     assert not Flag.objects.filter(tag=tag, check_key="range_upper").exists()
 
 
