@@ -2,9 +2,7 @@
 
 from __future__ import annotations
 
-import contextlib
 import datetime
-import os
 import sqlite3
 import tempfile
 from collections.abc import Iterator
@@ -47,12 +45,18 @@ def back_up(path: Path) -> Manifest:
         _add_files(writer, manifest)
         writer.finish(manifest)
         written = verified(unfinished)
-        # A hard link refuses an existing name, where renaming would overwrite a backup made meanwhile.
-        with contextlib.suppress(NotImplementedError, PermissionError):
-            os.link(unfinished, path)
-        if not path.exists():
-            unfinished.rename(path)
+        _name(unfinished, path)
     return written
+
+
+def _name(unfinished: Path, path: Path) -> None:
+    """Give a file its name; a hard link refuses one that a backup made meanwhile has, where renaming overwrites it."""
+    try:
+        path.hardlink_to(unfinished)
+    except FileExistsError:
+        raise
+    except OSError:  # a file system without hard links
+        unfinished.rename(path)
 
 
 def table_names(database: BaseDatabaseWrapper) -> list[str]:

@@ -5,12 +5,13 @@ from __future__ import annotations
 from collections.abc import Callable
 
 import pytest
-from django.db import transaction
+from django.db import connection, transaction
 from django.http import HttpResponse
 from django.test import Client
 from django.urls import URLPattern, reverse
 
 from register.access import OPEN, PERMISSIONS
+from register.backing_up import table_names
 from register.models import Role, User
 from tests.access_samples import MARK, SAMPLES, Sample, World, build, every_url
 from tests.cast import Cast, make_person
@@ -49,6 +50,17 @@ def ask(client: Client, path: str) -> HttpResponse:
 def text(answer: HttpResponse) -> str:
     content = b"".join(answer.streaming_content) if answer.streaming else answer.content  # type: ignore[attr-defined]
     return content.decode()
+
+
+def content() -> dict[str, list[tuple[str, ...]]]:
+    """Every row of every table but sessions."""
+    found = {}
+    with connection.cursor() as cursor:
+        for table in table_names(connection):
+            if table != "django_session":
+                cursor.execute(f'SELECT * FROM "{table}"')
+                found[table] = sorted(tuple(map(repr, row)) for row in cursor.fetchall())
+    return found
 
 
 def test_every_url_has_a_name_a_permission_and_a_sample() -> None:
@@ -101,6 +113,26 @@ def test_a_role_reaches_what_its_permissions_name_and_nothing_else(world: World,
         ):
             wrong[url.name] = (answer.status_code, "allowed" if allowed else "refused")
     assert wrong == {}
+
+
+def test_an_auditor_changes_nothing_whatever_he_sends(world: World, client_as: SignIn) -> None:
+    """Nor does anybody else by looking: only that something was taken out is noted."""
+    client = client_as(world.cast.auditor)
+    before = content()
+    wrong = {}
+    for url in URLS:
+        if url.name in DOORS:
+            continue
+        for send in (client.get, client.post):
+            answer = send(address(url, world))
+            if answer.status_code >= 500:
+                wrong[url.name] = answer.status_code
+    assert wrong == {}
+    after = content()
+    assert [name for name in before if before[name] != after[name]] == ["register_auditentry"]
+    added = [row for row in after["register_auditentry"] if row not in before["register_auditentry"]]
+    assert added
+    assert all("'exported'" in row for row in added)
 
 
 @pytest.mark.parametrize("who", ["stranger", "elsewhere"])
