@@ -17,7 +17,7 @@ from django.db import transaction
 from calibration import standings
 from calibration.models import Deferral, Requirement, SearchWord, Standing, ToleranceForm
 from register.auditing import Act, Actor, snapshot
-from register.bulk import columns_of, insert, values_of
+from register.bulk import among, columns_of, insert, values_of
 from register.changes import object_to_backdating
 from register.models import Criticality, Plant, Tag
 
@@ -291,7 +291,7 @@ def refresh(tag_ids: Collection[int]) -> None:
     for chunk in chunks(tag_ids):
         history = standings.read(chunk)
         found = standings.work_out(history)
-        known = set(Standing.objects.filter(tag__in=chunk).values_list("tag_id", flat=True))
+        known = set(Standing.objects.filter(**among("tag", chunk)).values_list("tag_id", flat=True))
         columns = columns_of(Standing, key=True)
         insert(Standing, columns, values_of((one for one in found if one.tag_id not in known), columns))
         Standing.objects.bulk_create(
@@ -306,7 +306,8 @@ def refresh(tag_ids: Collection[int]) -> None:
 def _store_words(wanted: Mapping[int, set[str]], plants: Mapping[int, int]) -> None:
     missing = {tag_id: set(words) for tag_id, words in wanted.items()}
     stale = []
-    for pk, tag_id, word in SearchWord.objects.filter(tag_id__in=wanted).values_list("pk", "tag_id", "word"):
+    there = SearchWord.objects.filter(**among("tag_id", sorted(wanted)))
+    for pk, tag_id, word in there.values_list("pk", "tag_id", "word"):
         if word in missing[tag_id]:
             missing[tag_id].discard(word)
         else:

@@ -9,13 +9,14 @@ from __future__ import annotations
 import datetime
 import re
 from collections import defaultdict
-from collections.abc import Collection, Iterable, Mapping
+from collections.abc import Collection, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 from zoneinfo import ZoneInfo
 
 from calibration.models import Deferral, Requirement, Standing, Test
 from calibration.models.standing import NO_ERROR
+from register.bulk import among
 from register.checking import with_inputs
 from register.models import Fitting, Flag, Intervention, Range, Tag, TransmitterType
 
@@ -29,7 +30,8 @@ _OF_A_RANGE = ("effective_from", "lrv_si", "urv_si", "reference", "transfer", "l
 _PIECES = re.compile(r"[^\W\d_]+|\d+")
 _EDGES = re.compile(r"^\W+|\W+$")
 _DIGITS = re.compile(r"\d+")
-_WORD = 60
+#: Words are kept up to here.
+WORD_LENGTH = 60
 
 
 @dataclass(slots=True)
@@ -48,27 +50,28 @@ class History:
 def read(tag_ids: Collection[int]) -> History:
     """Read everything that decides how the tags stand."""
     history = History(list(with_inputs(tag_ids)))
-    in_force = {"tag_id__in": tag_ids, "applied_at__isnull": False, "withdrawn_at__isnull": True}
+    ids = sorted(set(tag_ids))
+    in_force = {**among("tag_id", ids), "applied_at__isnull": False, "withdrawn_at__isnull": True}
     for requirement in Requirement.objects.filter(**in_force).order_by("tag_id", "effective_from", "id"):
         history.requirements[requirement.tag_id] = requirement
     ranges = Range.objects.filter(**in_force).order_by("tag_id", "effective_from", "id")
     for row in ranges.values_list("tag_id", *_OF_A_RANGE, named=True):
         history.ranges[row.tag_id].append(row)
-    fitted = {tag.current_fitting.transmitter_id for tag in history.tags if tag.current_fitting}
+    fitted = sorted({tag.current_fitting.transmitter_id for tag in history.tags if tag.current_fitting})
     for transmitter_id, done_on in (
-        Intervention.objects.filter(transmitter_id__in=fitted, kind__in=RESTARTS, withdrawn_at__isnull=True)
+        Intervention.objects.filter(**among("transmitter_id", fitted), kind__in=RESTARTS, withdrawn_at__isnull=True)
         .order_by()
         .values_list("transmitter_id", "done_on")
     ):
         history.restarts[transmitter_id].append(done_on)
-    for test in _tests(tag_ids):
+    for test in _tests(ids):
         history.tests[test["tag_id"]].append(test)
     for deferral in Deferral.objects.filter(
-        tag_id__in=tag_ids, approved_at__isnull=False, withdrawn_at__isnull=True
+        **among("tag_id", ids), approved_at__isnull=False, withdrawn_at__isnull=True
     ).order_by():
         history.deferrals[deferral.tag_id].append(deferral)
     for tag_id, severity, accepted_at in (
-        Flag.objects.filter(tag_id__in=tag_ids, closed_at__isnull=True)
+        Flag.objects.filter(**among("tag_id", ids), closed_at__isnull=True)
         .order_by()
         .values_list("tag_id", "severity", "accepted_at")
     ):
@@ -76,9 +79,9 @@ def read(tag_ids: Collection[int]) -> History:
     return history
 
 
-def _tests(tag_ids: Collection[int]) -> Iterable[Mapping[str, Any]]:
+def _tests(ids: Sequence[int]) -> Iterable[Mapping[str, Any]]:
     return (
-        Test.objects.filter(tag_id__in=tag_ids, outcome=Test.Outcome.DONE)
+        Test.objects.filter(**among("tag_id", ids), outcome=Test.Outcome.DONE)
         .order_by("tag_id", "tested_on", "id")
         .values(
             "id",
@@ -324,10 +327,10 @@ def words_of(text: str) -> set[str]:
     """Words by which a text is found: its parts between spaces, and the letters and digits inside each."""
     found: set[str] = set()
     for part in text.casefold().split():
-        whole = _EDGES.sub("", part)[:_WORD]
+        whole = _EDGES.sub("", part)[:WORD_LENGTH]
         if whole:
             found.add(whole)
-            found.update(piece[:_WORD] for piece in _PIECES.findall(whole))
+            found.update(piece[:WORD_LENGTH] for piece in _PIECES.findall(whole))
     return found
 
 

@@ -6,7 +6,9 @@ column but the key, in the form in which the model would hold it.
 
 from __future__ import annotations
 
+import gc
 from collections.abc import Callable, Iterable, Iterator, Sequence
+from contextlib import contextmanager
 from typing import Any, Final
 
 from django.db import connection, models
@@ -59,6 +61,31 @@ def columns_of(model: type[models.Model], *, key: bool = False) -> list[str]:
     return [field.attname for field in model._meta.concrete_fields if key or not field.primary_key]
 
 
+def among(name: str, ids: Sequence[int]) -> dict[str, Any]:
+    """A lookup for rows whose `name` is one of the ids, which ascend; a stretch without gaps is asked for by its ends.
+
+    A thousand ids in one query take longer to hand over than their rows take to read.
+    """
+    if ids and ids[-1] - ids[0] == len(ids) - 1:
+        return {f"{name}__gte": ids[0], f"{name}__lte": ids[-1]}
+    return {f"{name}__in": ids}
+
+
+@contextmanager
+def many_objects_alive() -> Iterator[None]:
+    """Keep the collector of unreachable objects from looking again and again through rows that are all in use.
+
+    With ten thousand rows in hand it takes a fifth of the time and finds nothing.
+    """
+    paused = gc.isenabled()
+    gc.disable()
+    try:
+        yield
+    finally:
+        if paused:
+            gc.enable()
+
+
 def _field(model: type[models.Model], name: str) -> models.Field[Any, Any]:
     return next(field for field in model._meta.concrete_fields if field.attname == name)
 
@@ -82,6 +109,9 @@ def _adapter(field: models.Field[Any, Any]) -> Adapter | None:
 
 def _adapted(rows: Iterable[Sequence[Any]], adapters: list[Adapter | None]) -> Iterator[Sequence[Any]]:
     changed = [(place, adapter) for place, adapter in enumerate(adapters) if adapter is not None]
+    if not changed:
+        yield from rows
+        return
     for row in rows:
         values = list(row)
         for place, adapter in changed:

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any, Final, TypeVar
 
 from django.db.models import Model, QuerySet
 
+from register.bulk import among
 from register.models import Area, MeasuringHead, Plant, Range, Tag, Transmitter, TransmitterType
 
 if TYPE_CHECKING:
@@ -73,7 +74,8 @@ def with_inputs(tag_ids: Iterable[int]) -> Iterator[Tag]:
     ids = sorted(set(tag_ids))
     shared = Shared()
     for start in range(0, len(ids), CHUNK):
-        tags = list(Tag.objects.filter(pk__in=ids[start : start + CHUNK]).select_related(*RELATED).order_by("pk"))
+        chosen = among("pk", ids[start : start + CHUNK])
+        tags = list(Tag.objects.filter(**chosen).select_related(*RELATED).order_by("pk"))
         shared.attach(tags)
         yield from tags
 
@@ -114,7 +116,8 @@ def fleet_of(tag_ids: Iterable[int]) -> tuple[list[int], Fleet]:
 
     from register.engineering.fleet import PLACES, REFERENCES, Fleet
 
-    rows = list(Tag.objects.filter(pk__in=set(tag_ids)).order_by("pk").values_list(*OTHERS, *NUMBERS))
+    chosen = among("pk", sorted(set(tag_ids)))
+    rows = list(Tag.objects.filter(**chosen).order_by("pk").values_list(*OTHERS, *NUMBERS))
     columns = list(zip(*rows, strict=True)) if rows else [()] * (len(OTHERS) + len(NUMBERS))
     ids, references, places, range_references, transfers, head_ids, type_ids = columns[: len(OTHERS)]
     number = dict(zip(NUMBERS, np.array(columns[len(OTHERS) :], dtype=float), strict=True))

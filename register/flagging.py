@@ -17,7 +17,7 @@ from django.core.exceptions import ValidationError
 from django.db import transaction
 
 from register.auditing import Act, Actor, snapshot
-from register.bulk import columns_of, insert, values_of
+from register.bulk import among, columns_of, insert, values_of
 from register.changes import announce
 from register.checking import CHUNK, findings, fleet_of, with_inputs
 from register.models import Flag, Plant, Tag
@@ -145,7 +145,8 @@ def _end_lapsed(by: Actor, plant: Plant, today: datetime.date) -> int:
 
 def _lock(tag_ids: Iterable[int]) -> list[int]:
     """Lock the rows of tags in the order of their ids, so that two acts never wait for each other."""
-    return list(Tag.objects.select_for_update().filter(pk__in=set(tag_ids)).order_by("pk").values_list("pk", flat=True))
+    chosen = among("pk", sorted(set(tag_ids)))
+    return list(Tag.objects.select_for_update().filter(**chosen).order_by("pk").values_list("pk", flat=True))
 
 
 def _locked(flag: Flag) -> Flag:
@@ -156,7 +157,7 @@ def _locked(flag: Flag) -> Flag:
 def _recompute(ids: list[int], act: Act) -> None:
     _lock(ids)
     rows: dict[int, dict[str, Flag]] = {}
-    for flag in Flag.objects.filter(tag__in=ids).select_related("accepted_by"):
+    for flag in Flag.objects.filter(**among("tag", ids)).select_related("accepted_by"):
         rows.setdefault(flag.tag_id, {})[flag.check_key] = flag
     concerns = _concerns(ids)
     added: list[Flag] = []
