@@ -59,7 +59,7 @@ def data_folder_is_writable(**kwargs: Any) -> list[CheckMessage]:
 
 @register(Tags.database)
 def guards_are_in_place(databases: Sequence[str] | None = None, **kwargs: Any) -> list[CheckMessage]:
-    """register.E003: frozen rows are guarded; register.E004: on this connection too; register.E005: it can be asked."""
+    """register.E003: frozen rows are guarded; register.E004: here too; register.E005: the database can be asked."""
     found: list[CheckMessage] = []
     for name in databases or ():
         connection = connections[name]
@@ -72,8 +72,8 @@ def guards_are_in_place(databases: Sequence[str] | None = None, **kwargs: Any) -
             found.append(
                 Error(
                     f"The guards of frozen tables are missing: {', '.join(weakened)}.",
-                    hint="Somebody took them off, and rows may have been changed. Look into it, then put them back with "
-                    "`manage.py guards --put-back REASON`.",
+                    hint="Somebody took them off, and rows may have been changed. Look into it, "
+                    "then put them back with `manage.py guards --put-back REASON`.",
                     id="register.E003",
                 )
             )

@@ -14,7 +14,7 @@ from typing import Any, Final, TypeVar
 from urllib.parse import urlencode
 
 from django.http import HttpRequest
-from django.urls import NoReverseMatch, reverse
+from django.urls import reverse
 
 from register import access
 from register.models import Plant, User
@@ -48,7 +48,7 @@ class Section:
 
 
 SECTIONS: Final = (
-    Section("Register", "register", "read", ("tag", "range", "flag")),
+    Section("Register", "register", "read", ("tag", "range", "flag", "import")),
     Section("Due", "due-list", "read", ("requirement", "deferral")),
     Section("Sheets", "sheets", "read", ("sheet",)),
     Section("Tests", "tests", "read", ("test",)),
@@ -75,9 +75,9 @@ def page(request: HttpRequest) -> dict[str, Any]:
         "plants": _once(lambda: _plants(request, person)),
         "plant": _once(lambda: access.shown_plant(request)),
         "today": _once(lambda: _today(request)),
-        "search_url": _url("find"),
-        "sign_out_url": _url("sign-out"),
-        "account_url": _url("password"),
+        "search_url": reverse("find"),
+        "sign_out_url": reverse("sign-out"),
+        "account_url": reverse("password"),
     }
 
 
@@ -89,9 +89,9 @@ def _sections(request: HttpRequest, person: User) -> list[Link]:
     match = request.resolver_match
     here = (match.url_name if match else "") or ""
     return [
-        Link(section.label, url, section.holds(here))
+        Link(section.label, reverse(section.url_name), section.holds(here))
         for section in SECTIONS
-        if access.may_anywhere(person, section.permission) and (url := _url(section.url_name))
+        if access.may_anywhere(person, section.permission)
     ]
 
 
@@ -109,10 +109,3 @@ def _plants(request: HttpRequest, person: User) -> list[Link]:
 def _today(request: HttpRequest) -> datetime.date:
     shown: Plant | None = access.shown_plant(request)
     return shown.today() if shown else datetime.datetime.now(datetime.UTC).date()
-
-
-def _url(name: str) -> str:
-    try:
-        return reverse(name)
-    except NoReverseMatch:
-        return ""

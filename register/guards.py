@@ -11,7 +11,6 @@ from django.apps import apps
 from django.db import connections
 from django.db.backends.base.base import BaseDatabaseWrapper
 
-
 EVENTS: Final = {"sqlite": ("update", "delete"), "postgresql": ("update", "delete", "truncate")}
 #: Body of the trigger function on PostgreSQL.
 REFUSAL: Final = (
@@ -53,7 +52,8 @@ def missing(connection: BaseDatabaseWrapper) -> list[str]:
             effective = {name for name, sql in cursor.fetchall() if sql in statements("sqlite", frozen_tables())}
         else:
             cursor.execute(
-                "SELECT t.tgname FROM pg_trigger t JOIN pg_proc p ON p.oid = t.tgfoid JOIN pg_class c ON c.oid = t.tgrelid"
+                "SELECT t.tgname FROM pg_trigger t"
+                " JOIN pg_proc p ON p.oid = t.tgfoid JOIN pg_class c ON c.oid = t.tgrelid"
                 " WHERE NOT t.tgisinternal AND t.tgenabled IN ('O', 'A') AND p.proname = 'foundleft_refuse'"
                 " AND p.prosrc = %s AND c.relnamespace = current_schema()::regnamespace",
                 [REFUSAL],

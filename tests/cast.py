@@ -9,7 +9,9 @@ from __future__ import annotations
 import datetime
 import itertools
 from dataclasses import dataclass, field
-from typing import Any
+from typing import Any, TypeVar
+
+from django.db.models import Model
 
 from calibration.models import (
     Certificate,
@@ -41,10 +43,12 @@ from register.models import (
     Tag,
     Transmitter,
     TransmitterType,
+    TypedQuantities,
     User,
 )
 
 PASSWORD = "well-kept secret 7"
+R = TypeVar("R", bound=Model)
 LONG_AGO = datetime.date(2020, 1, 6)
 _numbers = itertools.count(1)
 
@@ -286,7 +290,7 @@ def make_entry(sheet: Sheet, person: User, field: str = "remarks", text: str = "
 
 
 def make_record(tag: Tag, person: User, **values: Any) -> Record:
-    """A signed record of one as-found run with one reading, written row by row: not a link that the chain would take."""
+    """A signed record of one as-found run with one reading, row by row: not a link that the chain would take."""
     fitting = tag.current_fitting
     assert fitting is not None
     test = Test(
@@ -364,8 +368,8 @@ def _noon(day: datetime.date) -> datetime.datetime:
     return datetime.datetime.combine(day, datetime.time(12), tzinfo=datetime.UTC)
 
 
-def _stored(row: Any) -> Any:
-    if hasattr(row, "set_si"):
+def _stored(row: R) -> R:
+    if isinstance(row, TypedQuantities):
         row.set_si()
     row.save()
     return row

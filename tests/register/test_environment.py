@@ -75,7 +75,7 @@ def test_a_data_folder_that_is_a_file_is_said(monkeypatch: pytest.MonkeyPatch, t
     taken = tmp_path / "taken"
     taken.write_text("")
     monkeypatch.setenv("FOUNDLEFT_DATA", str(taken))
-    with pytest.raises(ImproperlyConfigured, match="FOUNDLEFT_DATA is .*taken, which cannot be made"):
+    with pytest.raises(ImproperlyConfigured, match=r"FOUNDLEFT_DATA is .*taken, which cannot be made"):
         environment.data_folder(tmp_path)
 
 

@@ -98,7 +98,7 @@ def test_no_queryset_changes_a_frozen_row(frozen: Cast) -> None:
 
 def test_the_row_itself_refuses_early_in_words(frozen: Cast) -> None:
     entry = AuditEntry.objects.get()
-    with pytest.raises(TypeError, match="audit entry .* is frozen and cannot be changed"):
+    with pytest.raises(TypeError, match=r"audit entry .* is frozen and cannot be changed"):
         entry.save()
     with pytest.raises(TypeError, match="is frozen and cannot be deleted"):
         entry.delete()
@@ -139,7 +139,8 @@ def test_a_guard_that_does_nothing_any_more_is_noticed(frozen: Cast) -> None:
         run('ALTER TABLE "calibration_run" DISABLE TRIGGER "calibration_run_no_delete"')
         assert guards.missing(connection) == ["calibration_run_no_delete"]
         run(
-            "CREATE OR REPLACE FUNCTION foundleft_refuse() RETURNS trigger LANGUAGE plpgsql AS $$ BEGIN RETURN OLD; END $$"
+            "CREATE OR REPLACE FUNCTION foundleft_refuse() RETURNS trigger LANGUAGE plpgsql"
+            " AS $$ BEGIN RETURN OLD; END $$"
         )
         assert len(guards.missing(connection)) == 3 * len(TABLES)
 
