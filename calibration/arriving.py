@@ -50,19 +50,24 @@ def entry_from_form(sent: Mapping[str, Any]) -> NewEntry:
     return _entry(row)
 
 
+def readable(text: str) -> str:
+    """The text without what no database keeps: zero characters and halves of surrogate pairs."""
+    return text.replace("\0", "").encode("utf-8", "replace").decode()
+
+
 def _entry(row: Mapping[str, Any]) -> NewEntry:
     try:
         typed_at = parse_datetime(str(row["typed_at"]))
         if typed_at is None or typed_at.tzinfo is None:
             raise ValueError("a time with its zone is wanted")
         sequence = int(row["sequence"])
-        device = str(row["device"])
+        device = readable(str(row["device"]))
         if not 0 <= sequence < 2**53 or not 0 < len(device) <= 60:
             raise ValueError("device or sequence is out of bounds")
         return NewEntry(
             id=uuid.UUID(str(row["uuid"])),
-            field=str(row["field"])[:80],
-            text=str(row.get("text", "")).replace("\0", ""),
+            field=readable(str(row["field"]))[:80],
+            text=readable(str(row.get("text", ""))),
             device=device,
             sequence=sequence,
             base=uuid.UUID(str(row["base"])) if row.get("base") else None,

@@ -43,11 +43,11 @@ class Candidate:
         return f"{held} – certificate relied on until {self.certificate.valid_until}"
 
 
-def candidates(plant: Plant, on: datetime.date, *, also: Iterable[int] = ()) -> list[Candidate]:
+def candidates(plant: Plant, on: datetime.date, *, also: Iterable[int | None] = ()) -> list[Candidate]:
     """Pressure and current standards of a plant that are in use, and those named in `also` whatever their state."""
     rows = Standard.objects.filter(plant=plant, kind__in=APPLIES | MEASURES).exclude(
         state__in=[Standard.State.WITHDRAWN, Standard.State.LOST]
-    ) | Standard.objects.filter(plant=plant, pk__in=list(also))
+    ) | Standard.objects.filter(plant=plant, pk__in=[pk for pk in also if pk is not None])
     found = list(rows.distinct().order_by("name"))
     newest: dict[int, Certificate] = {}
     for certificate in Certificate.objects.filter(
@@ -55,6 +55,11 @@ def candidates(plant: Plant, on: datetime.date, *, also: Iterable[int] = ()) -> 
     ).order_by("calibrated_on", "id"):
         newest[certificate.standard_id] = certificate
     return [_candidate(standard, newest.get(standard.pk), on) for standard in found]
+
+
+def number_of(text: str) -> int | None:
+    """The id that a field names; None where it names none."""
+    return int(text) if text.isascii() and text.isdigit() and len(text) < 19 else None
 
 
 def exception_field(standard_id: int | str) -> str:

@@ -9,7 +9,7 @@ from zoneinfo import ZoneInfo
 
 from django.utils.safestring import SafeString
 
-from calibration.choosing import Candidate, candidates, covers
+from calibration.choosing import Candidate, candidates, covers, number_of
 from calibration.drafts import Draft, DraftReading
 from calibration.entries import Field
 from calibration.marks import error_bar
@@ -235,7 +235,7 @@ def standard_views(draft: Draft, kind: str, viewer: Viewer) -> list[ChoiceView]:
     on = last.astimezone(draft.zone).date() if last else sheet.plant.today()
     if sheet.corrects is not None:
         on = sheet.corrects.tested_on
-    offered = candidates(sheet.plant, on, also=[int(text) for text in texts.values() if text.isdigit()])
+    offered = candidates(sheet.plant, on, also=map(number_of, texts.values()))
     views = []
     for part in PARTS:
         fitting = tuple(candidate for candidate in offered if candidate.fits(part))

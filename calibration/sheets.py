@@ -12,7 +12,7 @@ from django.core.exceptions import ValidationError
 from django.db import transaction
 from django.utils import timezone
 
-from calibration.choosing import candidates, exception_field, part_words, unfit
+from calibration.choosing import candidates, exception_field, number_of, part_words, unfit
 from calibration.drafts import Draft
 from calibration.models import Run, Sheet, Standard
 from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, ENDED, KINDS, NOT_ADJUSTED, ORDER, PARTS, label
@@ -311,7 +311,7 @@ def _checked_standards(draft: Draft, kind: str) -> dict[str, str]:
     sheet = draft.sheet
     chosen = {part: draft.text(f"{kind}.{part}-with") for part in PARTS}
     on = _day_of_use(draft)
-    offered = {c.id: c for c in candidates(sheet.plant, on, also=[int(c) for c in chosen.values() if c.isdigit()])}
+    offered = {c.id: c for c in candidates(sheet.plant, on, also=map(number_of, chosen.values()))}
     fixed, errors = {}, {}
     for part, standard_id in chosen.items():
         name = f"{kind}.{part}-with"

@@ -15,7 +15,7 @@ from django.core.exceptions import ValidationError
 from django.db import transaction
 from django.utils import timezone
 
-from calibration.choosing import exception_field
+from calibration.choosing import exception_field, number_of
 from calibration.content import RecordContent, SignatureContent, UseContent
 from calibration.drafts import Draft
 from calibration.entries import when
@@ -205,15 +205,16 @@ def _uses(draft: Draft, kind: str) -> tuple[UseContent, ...]:
     uses = []
     for part in PARTS:
         standard_id = draft.text(f"{kind}.{part}-with")
-        if not standard_id.isdigit():
+        number = number_of(standard_id)
+        if number is None:
             continue
         certificate = draft.text(f"{kind}.{part}-certificate")
         allowed = draft.fields.get(exception_field(standard_id))
         uses.append(
             UseContent(
                 part=part,
-                standard_id=int(standard_id),
-                certificate_id=int(certificate) if certificate else None,
+                standard_id=number,
+                certificate_id=number_of(certificate),
                 exception=allowed.text[:300] if allowed else "",
                 exception_by_id=allowed.entry.person_id if allowed else None,
             )

@@ -19,6 +19,7 @@ from register.models import User
 
 SCHEMA_VERSION = 1
 LONGEST = 2000
+UNITS = frozenset({"unit", "digital-unit", "ambient-unit", "height-unit", "static-unit"})
 
 
 @dataclass(slots=True)
@@ -144,11 +145,19 @@ def typed_in_form(draft: Draft, values: Mapping[str, str], seen: Mapping[str, st
                 text=text,
                 device=device,
                 sequence=last,
-                base=uuid.UUID(base) if base else None,
+                base=uuid_of(base),
                 typed_at=timezone.now(),
             )
         )
     return new
+
+
+def uuid_of(text: str) -> uuid.UUID | None:
+    """The number in a hidden field of a page; None where it is none."""
+    try:
+        return uuid.UUID(text)
+    except ValueError:
+        return None
 
 
 def _told_again(stored: Stored, sheet: Sheet, old: Entry, new: NewEntry) -> None:
@@ -168,7 +177,7 @@ def _refusal(draft: Draft, new: NewEntry, used: Iterable[tuple[str, int]]) -> st
         return "This device has used this number before; load the page again."
     if why := refusal(sheet, new.field, points=draft.points):
         return why
-    if why := _unit_change(draft, new):
+    if why := _unknown_unit(new) or _unit_change(draft, new):
         return why
     if new.settles:
         standing = draft.fields.get(new.field)
@@ -176,6 +185,17 @@ def _refusal(draft: Draft, new: NewEntry, used: Iterable[tuple[str, int]]) -> st
         if unseen:
             return f"{label(new.field)}: another version came in meanwhile; look at all of them first."
     return ""
+
+
+def _unknown_unit(new: NewEntry) -> str:
+    """A unit is chosen, not typed: another text than a unit of its kind is no entry but a mistake of the device."""
+    from register.engineering.units import LENGTH, PRESSURE, TEMPERATURE, choices
+
+    kinds = {"ambient-unit": TEMPERATURE, "height-unit": LENGTH}
+    what = new.field.partition(".")[2]
+    if what not in UNITS or new.text in {key for key, _ in choices(kinds.get(what, PRESSURE))}:
+        return ""
+    return f"{label(new.field)}: “{new.text[:40]}” is no unit offered here."
 
 
 def _unit_change(draft: Draft, new: NewEntry) -> str:

@@ -149,18 +149,15 @@ def curve_figures(layout: Layout, curve_x: Floats, mean: Floats) -> dict[str, Fl
         "nonlinearity_independent": unknown,
     }
     if len(layout.levels) >= 3:
-        in_order = ~(np.diff(curve_x, axis=0) <= 0.0).any(axis=0)
+        # Inputs read in disorder make no curve; gaps are passed over, so that 0, –, 0 is disorder too.
+        there = np.where(np.isnan(mean), np.nan, curve_x)
+        in_order = ~(there[1:] <= np.fmax.accumulate(there, axis=0)[:-1]).any(axis=0)
         x = np.where(in_order, curve_x, np.nan) if not in_order.all() else curve_x
-        # Two points left of a curve with gaps may have been read at the same input: no line goes through them.
-        with np.errstate(divide="ignore", invalid="ignore"):
-            slope = (mean[-1] - mean[0]) / (x[-1] - x[0])
-            off = mean[1:-1] - mean[0] - slope * (x[1:-1] - x[0])
-            bows = {
-                "nonlinearity_terminal": np.fmax.reduce(np.abs(off), axis=0),
-                "nonlinearity_zero_based": greatest_from_first(x, mean),
-                "nonlinearity_independent": greatest_bow(x, mean),
-            }
-        figures |= {name: np.where(np.isfinite(bow), bow, np.nan) for name, bow in bows.items()}
+        slope = (mean[-1] - mean[0]) / (x[-1] - x[0])
+        off = mean[1:-1] - mean[0] - slope * (x[1:-1] - x[0])
+        figures["nonlinearity_terminal"] = np.fmax.reduce(np.abs(off), axis=0)
+        figures["nonlinearity_zero_based"] = greatest_from_first(x, mean)
+        figures["nonlinearity_independent"] = greatest_bow(x, mean)
     return figures
 
 

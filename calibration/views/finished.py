@@ -2,23 +2,27 @@
 
 from __future__ import annotations
 
+import datetime
 import json
 from zoneinfo import ZoneInfo
 
 from django.contrib import messages
 from django.core.exceptions import ValidationError
+from django.db.models import F
 from django.http import Http404, HttpRequest, HttpResponse
 from django.http.response import HttpResponseBase
 from django.shortcuts import redirect, render
 from django.views.decorators.http import require_GET
 
 from calibration import reviewing, test_page
+from calibration.choosing import number_of
 from calibration.forms.sheets import ReviewForm, SendBackForm
 from calibration.models import Record, Sheet, Test
 from calibration.passwords import confirmed
 from register import access, exporting
 from register.auditing import Actor
 
+MOST_VERSIONS = 1000
 TESTS = Test.objects.select_related("plant", "tag__area", "transmitter__maker", "transmitter__type")
 
 
@@ -62,7 +66,7 @@ def _signed(request: HttpRequest, pk: int, *, back: bool) -> HttpResponse:
             act(
                 by=Actor.of(request),
                 test=held,
-                record_id=int(version) if version.isdigit() else 0,
+                record_id=number_of(version) or 0,
                 remarks=form.cleaned_data["remarks"],
             )
         except ValidationError as error:
@@ -75,14 +79,7 @@ def _signed(request: HttpRequest, pk: int, *, back: bool) -> HttpResponse:
 
 def _shown(request: HttpRequest, held: Test, *, form: ReviewForm | None = None, back: bool = False) -> HttpResponse:
     record = _record(held, request.GET.get("version", ""))
-    versions = list(
-        Record.objects.filter(test=held)
-        .order_by("-version")
-        .values("pk", "version", "position", "made_at", "made_by__printed_name", "correction_reason")
-    )
     zone = ZoneInfo(held.plant.time_zone)
-    for version in versions:
-        version["made"] = version["made_at"].astimezone(zone)
     person = access.person(request)
     newest = record.pk == held.current_record_id
     open_states = {Test.State.SIGNED, Test.State.REVIEWED}
@@ -91,7 +88,7 @@ def _shown(request: HttpRequest, held: Test, *, form: ReviewForm | None = None, 
         "test": held,
         "view": test_page.view_of(record),
         "plot": test_page.plot_of(record),
-        "versions": versions,
+        "versions": _versions(held, zone),
         "newest": newest,
         "changes": _changes(record),
         "made": record.made_at.astimezone(zone),
@@ -121,15 +118,22 @@ def _record(held: Test, version: str) -> Record:
         )
     )
     if version:
-        if not version.isdigit():
+        number = number_of(version)
+        if number is None or number > MOST_VERSIONS:
             raise Http404
-        record = records.filter(version=int(version)).first()
+        record = records.filter(version=number).first()
     else:
-        record = records.filter(pk=held.current_record_id).first()
+        record = records.filter(test__current_record=F("pk")).first()
     if record is None:
         raise Http404
     record.test = held
     return record
+
+
+def _versions(held: Test, zone: ZoneInfo) -> list[tuple[Record, datetime.datetime]]:
+    """All versions, newest first, each with its time at the plant."""
+    rows = Record.objects.filter(test=held).select_related("made_by").defer("content", "basis", "answers")
+    return [(row, row.made_at.astimezone(zone)) for row in rows.order_by("-version")]
 
 
 def _changes(record: Record) -> list[tuple[str, str, str]]:

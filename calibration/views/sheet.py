@@ -12,7 +12,7 @@ from django.utils import timezone
 from django.views.decorators.http import require_POST
 
 from calibration import sheet_page, sheets, signing
-from calibration.arriving import entries_from_json
+from calibration.arriving import entries_from_json, readable
 from calibration.drafts import Draft
 from calibration.forms.sheets import SignForm
 from calibration.models import Run, Sheet, Test
@@ -106,7 +106,7 @@ def keep_form(request: HttpRequest, held: Sheet) -> list[str]:
     if not seen or held.stage in ENDED:
         return refused
     session = request.session.session_key or "none"
-    values = {name: str(request.POST.get(name, "")) for name in seen}
+    values = {name: readable(str(request.POST.get(name, ""))) for name in seen}
     new = typed_in_form(Draft(held), values, seen, device=f"form-{session[:12]}")
     if not new:
         return refused

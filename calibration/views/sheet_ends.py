@@ -20,7 +20,7 @@ from calibration.forms.sheets import ExceptionForm, ReasonForm
 from calibration.models import Standard
 from calibration.passwords import named
 from calibration.sheet_fields import label
-from calibration.storing_entries import add_entries
+from calibration.storing_entries import add_entries, uuid_of
 from calibration.views.sheet import SHEETS, keep_form
 from register import access
 from register.auditing import Actor
@@ -106,7 +106,7 @@ def sheet_settle(request: HttpRequest, pk: object) -> HttpResponse:
                         base=version.id,
                         typed_at=timezone.now(),
                         settles=True,
-                        seen=tuple(uuid.UUID(part) for part in request.POST.getlist(f"versions.{name}")),
+                        seen=tuple(filter(None, map(uuid_of, request.POST.getlist(f"versions.{name}")))),
                     )
                 ],
             )

@@ -336,3 +336,30 @@ def test_what_the_device_had_not_sent_goes_with_the_form_and_is_no_clash(client:
     again = client.post(url, {"entries": queue}, content_type="application/json").json()
     assert again["refused"] == []
     assert Entry.objects.filter(field="as-found.9.measured", text="4.02").count() == 1
+
+
+@pytest.mark.parametrize("text", ["4\x00.01", "4.01\ud800", "9" * 5000, "²", "1e999", "−1,5", " 4.01 ", "=1+1"])
+def test_any_text_at_all_is_answered(client: Client, tablet: Device, text: str) -> None:
+    to_as_found(tablet)
+    rows = [
+        {
+            "uuid": str(uuid.uuid4()),
+            "field": field,
+            "text": text,
+            "device": "tablet-x",
+            "sequence": number,
+            "typed_at": timezone.now().isoformat(),
+        }
+        for number, field in enumerate(["as-found.1.measured", "as-found.applied-with", "as-found.unit"])
+    ]
+    url = reverse("sheet-entries", args=[tablet.sheet.pk])
+    response = client.post(url, json.dumps({"entries": rows}), content_type="application/json")
+    assert response.status_code == 200
+    assert client.get(reverse("sheet", args=[tablet.sheet.pk])).status_code == 200
+
+
+def test_a_form_with_broken_hidden_fields_is_answered(client: Client, tablet: Device) -> None:
+    values = {"confirm-tag": "PT-100", "seen.confirm-tag": "no number", "queue": "{", "seen.": ""}
+    assert client.post(reverse("sheet-step", args=[tablet.sheet.pk, "confirm"]), values).status_code == 200
+    assert client.post(reverse("sheet-settle", args=[tablet.sheet.pk]), {"settle": "x y"}).status_code == 302
+    assert client.post(reverse("sheet-step", args=[tablet.sheet.pk, "nowhere"])).status_code == 404
