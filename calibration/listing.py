@@ -23,6 +23,7 @@ from django.db import connection
 
 from calibration.models import ScheduleState, SearchWord, Standing
 from calibration.models.standing import NO_DATE
+from calibration.standings import WORD_LENGTH
 from register.models import Plant
 
 PAGE: Final = 50
@@ -72,7 +73,7 @@ class Asked:
         return cls(
             **chosen,
             plant=given.get("plant", ""),
-            text=given.get("text", "").strip()[:100],
+            text=given.get("text", "").replace("\0", "").strip()[:100],
             sort=order if order.removeprefix("-") in ORDERS else sort,
             after=given.get("after", ""),
             before=given.get("before", ""),
@@ -221,7 +222,7 @@ def _conditions(plant: Plant, asked: Asked, today: datetime.date) -> list[Condit
         conditions.append(_in_service(asked.service))
     if asked.state:
         conditions.append(_in_state(ScheduleState(asked.state), today, _spans(plant)))
-    return conditions + [_worded(plant, word) for word in asked.text.casefold().split()]
+    return conditions + [_worded(plant, word[:WORD_LENGTH]) for word in asked.text.casefold().split()]
 
 
 def _equal(column: str, value: str | int) -> Condition:
@@ -423,7 +424,9 @@ def _read_cursor(text: str, order: Sequence[str]) -> list[Any]:
         values = json.loads(base64.urlsafe_b64decode(text + "=" * (-len(text) % 4)))
         known = {field.attname: field for field in Standing._meta.concrete_fields}
         fields = [known[column] for column in order]
-        if not isinstance(values, list) or len(values) != len(fields):
+        if not isinstance(values, list) or len(values) != len(fields) or "\0" in str(values[0]):
+            return []
+        if not 0 < int(values[-1]) < 2**63:
             return []
         return [field.to_python(value) for field, value in zip(fields, values, strict=True)]
     except (ValueError, TypeError, ValidationError):

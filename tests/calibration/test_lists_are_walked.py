@@ -6,8 +6,10 @@ so low that every way a page can be found is taken: gathered by a rare filter, w
 
 from __future__ import annotations
 
+import base64
 import datetime
 import itertools
+import json
 import random
 from collections.abc import Callable
 from typing import Any
@@ -181,10 +183,37 @@ def test_a_total_above_the_ceiling_only_says_so(plant: Plant, monkeypatch: pytes
     assert listing.page(plant, Asked(), TODAY, COLUMNS).total == "20+"
 
 
-@pytest.mark.parametrize("text", ["", "x", "AAAA", "eyJhIjogMX0", "WzEsIDIsIDMsIDRd", "W251bGwsIG51bGxd"])
+def place(*values: Any) -> str:
+    return base64.urlsafe_b64encode(json.dumps(values).encode()).decode().rstrip("=")
+
+
+@pytest.mark.parametrize(
+    "text",
+    [
+        "",
+        "x",
+        "AAAA",
+        place(1, 2, 3, 4),
+        place("2026-13-01", "pt-1", 7),
+        place("2026-01-01", "pt-1", None),
+        place("2026-01-01", "pt-1", 10**30),
+        place("2026-01-01\0", "pt-1", 7),
+        place(None, None, "seven"),
+    ],
+)
 def test_a_place_that_cannot_be_read_gives_the_first_page(plant: Plant, text: str) -> None:
     first = listing.page(plant, Asked(sort="due"), TODAY, COLUMNS)
     assert listing.page(plant, Asked(sort="due", after=text), TODAY, COLUMNS).rows == first.rows
+
+
+def test_a_word_longer_than_any_kept_is_compared_by_its_beginning(plant: Plant) -> None:
+    tag = people.make_tag(plant.areas.first(), "PT-9999", service="x" * 90)  # type: ignore[arg-type]
+    draw = random.Random(1)
+    SearchWord.objects.create(
+        plant=plant, tag=made(plant, tag.area, 5000, draw), word=("x" * 90)[: standings.WORD_LENGTH]
+    )
+    assert listing.page(plant, Asked(text="x" * 80), TODAY, COLUMNS).total == "1"
+    assert Asked.read({"text": "a\0b"}, {}).text == "ab"
 
 
 def test_a_tag_without_a_date_sorts_behind_all_that_have_one(plant: Plant) -> None:

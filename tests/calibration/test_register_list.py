@@ -190,6 +190,18 @@ def test_a_stranger_sees_his_own_plant_only(fleet: list[Tag], cast: people.Cast,
         assert client.get(reverse(name) + f"?plant={cast.plant.code}").status_code == 404
 
 
+def test_what_people_typed_is_shown_as_text(cast: people.Cast, client_as: SignIn) -> None:
+    area = people.make_area(cast.plant, "<i>")
+    tag = people.make_ready_tag(area, "<b>1</b>", service="<script>alert(1)</script>")
+    tag.ranges.update(lrv='0"><b>', urv="9<i>")
+    scheduling.refresh([tag.pk])
+    for name in ("register", "due-list"):
+        html = client_as(cast.planner).get(reverse(name)).content.decode()
+        rows = html[html.index("<tbody>") : html.index("</tbody>")]
+        assert "<script>" not in rows and "<b>" not in rows and "<i>" not in rows
+        assert "&lt;script&gt;alert(1)" in rows
+
+
 def test_an_empty_register_says_what_to_do_first(cast: people.Cast, client_as: SignIn) -> None:
     assert b"No tag yet." in client_as(cast.planner).get(reverse("register")).content
     assert b"No tag yet." in client_as(cast.planner).get(reverse("due-list")).content
