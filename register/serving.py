@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import ipaddress
+import logging
 import multiprocessing
 import os
 import socket
@@ -17,6 +18,8 @@ from pathlib import Path
 from register import environment
 
 DEFAULT_PORT = 8000
+HOUR = 3600.0
+logger = logging.getLogger(__name__)
 
 
 class RefusedError(Exception):
@@ -113,7 +116,7 @@ def variables(place: Place, environ: MutableMapping[str, str]) -> None:
         environ.setdefault("FOUNDLEFT_HSTS_SECONDS", "0")
 
 
-def serve(place: Place, *, workers: int, ready: Callable[[], None]) -> None:
+def serve(place: Place, *, workers: int, ready: Callable[[], None], hourly: Callable[[], None] | None = None) -> None:
     """Serve until interrupted; Ctrl-C and SIGTERM let running requests end.
 
     Parameters
@@ -122,6 +125,8 @@ def serve(place: Place, *, workers: int, ready: Callable[[], None]) -> None:
         Processes that answer.
     ready : callable
         Called once the first of them listens.
+    hourly : callable
+        Called then, and every hour after, in a thread of this process; what it raises is logged.
     """
     from granian import Granian
     from granian.constants import Interfaces, SSLProtocols
@@ -129,7 +134,7 @@ def serve(place: Place, *, workers: int, ready: Callable[[], None]) -> None:
 
     # Fresh processes on every system: a forked one would keep settings read before `variables` had its say.
     multiprocessing.set_start_method("spawn", force=True)
-    threading.Thread(target=_wait, args=(place, ready), daemon=True).start()
+    threading.Thread(target=_wait, args=(place, ready, hourly), daemon=True).start()
     Granian(
         "register.wsgi:application",
         address=place.bound,
@@ -153,7 +158,7 @@ def default_workers(vendor: str) -> int:
     return environment.whole_number("FOUNDLEFT_WORKERS", max(2, many), least=1)
 
 
-def _wait(place: Place, ready: Callable[[], None]) -> None:
+def _wait(place: Place, ready: Callable[[], None], hourly: Callable[[], None] | None) -> None:
     address = {"0.0.0.0": "127.0.0.1", "::": "::1"}.get(place.bound, place.bound)
     while True:
         try:
@@ -161,7 +166,15 @@ def _wait(place: Place, ready: Callable[[], None]) -> None:
         except OSError:
             time.sleep(0.1)
         else:
-            return ready()
+            break
+    ready()
+    while hourly is not None:
+        try:
+            hourly()
+        except Exception:
+            # A locked database now is no reason to miss midnight.
+            logger.exception("What is due each day was not done; it is tried again in an hour.")
+        time.sleep(HOUR)
 
 
 def _take(place: Place) -> None:

@@ -25,7 +25,7 @@ from register import guards, serving
 from register.auditing import Act, Actor
 from register.models import Plant, User
 from register.serving import Place, RefusedError
-from tests.cast import Cast, make_plant
+from tests.cast import Cast, make_area, make_plant, make_range, make_tag
 
 HERE = Path(__file__).resolve().parent
 TOP = HERE.parents[1]
@@ -124,7 +124,7 @@ def test_with_a_certificate_it_serves_https_with_secure_cookies(tmp_path: Path) 
 def served(monkeypatch: pytest.MonkeyPatch, tmp_path: Path, settings: Any) -> list[Place]:
     places: list[Place] = []
 
-    def serve(place: Place, *, workers: int, ready: Callable[[], None]) -> None:
+    def serve(place: Place, *, workers: int, ready: Callable[[], None], hourly: Callable[[], None]) -> None:
         places.append(place)
         ready()
 
@@ -269,3 +269,32 @@ def test_the_serving_processes_learn_their_names_and_https(monkeypatch: pytest.M
 def test_the_address_is_printed_so_that_it_can_be_opened() -> None:
     assert Place(address="::1", port=8001).url == "http://[::1]:8001/"
     assert Place(address="0.0.0.0", certificate=CERTIFICATE, key=KEY).url == "https://localhost:8000/"
+
+
+def test_what_the_day_brings_is_done_at_once_and_tried_again_after_a_failure(monkeypatch: pytest.MonkeyPatch) -> None:
+    done: list[str] = []
+
+    def hourly() -> None:
+        done.append("tried")
+        if len(done) == 1:
+            raise OSError("the database is locked")
+        if len(done) == 3:
+            raise KeyboardInterrupt
+
+    monkeypatch.setattr(serving, "HOUR", 0.0)
+    with socket.create_server(("127.0.0.1", 0)) as listening, pytest.raises(KeyboardInterrupt):
+        serving._wait(Place(port=listening.getsockname()[1]), lambda: done.clear(), hourly)
+    assert done == ["tried"] * 3
+
+
+def test_starting_names_the_command_that_puts_planned_changes_in_force(
+    cast: Cast, served: list[Place], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    called: list[str] = []
+    monkeypatch.setattr("register.management.commands.start.connections.close_all", lambda: None)
+    monkeypatch.setattr(serving, "serve", lambda place, *, workers, ready, hourly: (called.append("served"), hourly()))
+    tag = make_tag(area=make_area(plant=cast.plant))
+    planned = make_range(tag=tag, effective_from=cast.plant.today(), applied_at=None)
+    start()
+    planned.refresh_from_db()
+    assert called == ["served"] and planned.applied_at is not None

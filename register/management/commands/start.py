@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+from io import StringIO
 from pathlib import Path
 from typing import Any
 
@@ -45,7 +46,14 @@ class Command(BaseCommand):
         connections.close_all()
         self.stdout.write("Starting …")
         self.stdout.flush()
-        serving.serve(place, workers=workers, ready=lambda: self._say(words))
+        serving.serve(place, workers=workers, ready=lambda: self._say(words), hourly=self._do_what_the_day_brings)
+
+    def _do_what_the_day_brings(self) -> None:
+        """Put planned changes in force after midnight at the plants, without a timer of the machine's own."""
+        try:
+            call_command("apply_planned", stdout=StringIO())
+        finally:
+            connections.close_all()
 
     def _words(self, place: serving.Place) -> list[str]:
         """What a person needs to know to begin."""
