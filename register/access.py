@@ -132,7 +132,7 @@ def roles(user: User) -> dict[int, set[str]]:
     cached: dict[int, set[str]] | None = getattr(user, "_roles_by_plant", None)
     if cached is None:
         cached = {}
-        for plant_id, role in Membership.objects.filter(user=user).values_list("plant_id", "role"):
+        for plant_id, role in Membership.objects.filter(user=user).order_by("pk").values_list("plant_id", "role"):
             cached.setdefault(plant_id, set()).add(role)
         user._roles_by_plant = cached  # type: ignore[attr-defined]
     return cached
@@ -218,16 +218,21 @@ def readable_plants(user: User) -> list[Plant]:
 
 
 def shown_plant(request: HttpRequest) -> Plant | None:
-    """The plant of the thing shown, else the one named by `?plant=CODE`, the one last chosen, the first by name.
+    """The plant of the thing shown, else the one named by `?plant=CODE`, the one last chosen, that of the first role.
 
     None without any role.
     """
-    available = readable_plants(person(request))
+    user = person(request)
+    available = readable_plants(user)
     of_page = getattr(request, "plant_of_page", None)
     if of_page is not None:
         return next((plant for plant in available if plant.pk == of_page), None)
     wanted = request.GET.get("plant") or request.COOKIES.get("plant", "")
-    return next((plant for plant in available if plant.code == wanted), available[0] if available else None)
+    first = next(iter(roles(user)), None)
+    return next(
+        (plant for plant in available if plant.code == wanted),
+        next((plant for plant in available if plant.pk == first), None),
+    )
 
 
 def keep_plant(response: HttpResponse, code: str) -> None:

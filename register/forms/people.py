@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from django import forms
+from django.contrib.auth.forms import AuthenticationForm
 from django.core.exceptions import ValidationError
 
 from register.forms.fields import ReasonField, RegisterForm
@@ -14,10 +15,30 @@ from register.models.plant import known_time_zone
 PASSWORD = forms.PasswordInput(attrs={"autocomplete": "new-password"})
 
 
-def _roles() -> forms.MultipleChoiceField:
+NO_ROLE = "Choose at least one role: without any a person sees nothing."
+
+
+def _roles(*, required: bool = True) -> forms.MultipleChoiceField:
     return forms.MultipleChoiceField(
-        label="Roles", choices=Role.choices, widget=forms.CheckboxSelectMultiple, required=False
+        label="Roles",
+        choices=Role.choices,
+        widget=forms.CheckboxSelectMultiple,
+        required=required,
+        error_messages={"required": NO_ROLE},
     )
+
+
+class SignInForm(AuthenticationForm):
+    """Name and password, in the site's words."""
+
+    error_messages = {
+        "invalid_login": "Name and password do not fit together. Small and capital letters differ in both.",
+        "inactive": "Name and password do not fit together. Small and capital letters differ in both.",
+    }
+
+    def __init__(self, *args: Any, **kwargs: Any) -> None:
+        super().__init__(*args, label_suffix="", **kwargs)
+        self.fields["username"].label = "Sign-in name"
 
 
 class PersonForm(RegisterForm):
@@ -51,12 +72,6 @@ class NewPersonForm(PersonForm):
 
     field_order = ("username", "printed_name", "email", "roles", "password", "reason")
 
-    def clean_roles(self) -> list[str]:
-        roles: list[str] = self.cleaned_data["roles"]
-        if not roles:
-            raise ValidationError("Choose at least one role: without any a person sees nothing.")
-        return roles
-
 
 class JoiningForm(RegisterForm):
     """Roles in one plant for somebody who signs in already, at another plant."""
@@ -77,17 +92,11 @@ class JoiningForm(RegisterForm):
             raise ValidationError(f"Nobody signs in as “{name}”. Make a new person instead.")
         return person
 
-    def clean_roles(self) -> list[str]:
-        roles: list[str] = self.cleaned_data["roles"]
-        if not roles:
-            raise ValidationError("Choose at least one role.")
-        return roles
-
 
 class RolesForm(RegisterForm):
     """The roles of a person in one plant; none takes him off the plant."""
 
-    roles = _roles()
+    roles = _roles(required=False)
     reason = ReasonField()
 
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 from django.conf import settings
 from django.contrib import messages
 from django.contrib.auth import login, logout, update_session_auth_hash
-from django.contrib.auth.forms import AuthenticationForm, PasswordChangeForm
+from django.contrib.auth.forms import PasswordChangeForm
 from django.core.exceptions import ValidationError
 from django.http import Http404, HttpRequest, HttpResponse, HttpResponseRedirect
 from django.shortcuts import redirect, render, resolve_url
@@ -16,7 +16,7 @@ from django.views.decorators.http import require_http_methods, require_POST
 
 from register import access, beginning, entering, membership
 from register.auditing import Actor
-from register.forms.people import FirstAdministratorForm
+from register.forms.people import FirstAdministratorForm, SignInForm
 from register.models import User
 from register.queries import demonstration_people
 from register.serving import is_loopback
@@ -32,7 +32,7 @@ def sign_in(request: HttpRequest) -> HttpResponse:
         return HttpResponseRedirect(heading)
     if not User.objects.exists():
         return redirect("first-administrator")
-    form = AuthenticationForm(request, data=request.POST or None)
+    form = SignInForm(request, data=request.POST or None)
     if request.method == "POST" and form.is_valid():
         login(request, form.get_user())
         return HttpResponseRedirect(heading)
