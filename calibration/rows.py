@@ -5,9 +5,9 @@ from __future__ import annotations
 import datetime
 from collections.abc import Mapping
 from dataclasses import dataclass
+from html import escape
 from typing import Any, Final
 
-from django.utils.html import escape
 from django.utils.safestring import SafeString
 
 from calibration.marks import due_mark, error_mark
@@ -74,28 +74,28 @@ CRITICALITIES: Final[dict[str, str]] = dict(Criticality.choices)
 
 @dataclass(frozen=True, slots=True)
 class Row:
-    """One tag in a list."""
+    """One tag in a list; every part is HTML as it stands in its cell."""
 
-    tag_id: int
+    url: str
     number: str
     service: str
     area: str
-    range: SafeString
-    strip: SafeString
-    flag: SafeString
-    verdict: SafeString
-    error: SafeString
-    state: SafeString
+    range: str
+    strip: str
+    flag: str
+    verdict: str
+    error: str
+    state: str
     due: str
-    due_mark: SafeString
+    due_mark: str
     window: str
     interval: str
     criticality: str
     craft: str
 
 
-def row_of(stored: Mapping[str, Any], today: datetime.date) -> Row:
-    """Make the cells of one row from the columns named in `COLUMNS`."""
+def row_of(stored: Mapping[str, Any], today: datetime.date, tag_url: str) -> Row:
+    """Make the cells of one row from the columns named in `COLUMNS`; `tag_url` leads to a tag but for its key."""
     state = schedule_state(
         today,
         stored["phase"],
@@ -106,10 +106,10 @@ def row_of(stored: Mapping[str, Any], today: datetime.date) -> Row:
     )
     due = "" if state is ScheduleState.NOT_IN_SERVICE or stored["due_on"] is None else stored["due_on"].isoformat()
     return Row(
-        tag_id=stored["tag_id"],
-        number=stored["number"],
-        service=stored["service"],
-        area=stored["area_code"],
+        url=f"{tag_url}{stored['tag_id']}/",
+        number=escape(stored["number"]),
+        service=escape(stored["service"]),
+        area=escape(stored["area_code"]),
         range=range_cell(stored),
         strip=strip_cell(stored["strip"], stored["range_text"]),
         flag=flag_cell(stored),
@@ -120,8 +120,8 @@ def row_of(stored: Mapping[str, Any], today: datetime.date) -> Row:
         due_mark=due_cell(stored, state, today),
         window=_window(stored),
         interval="–" if stored["interval_months"] is None else f"{stored['interval_months']} mo",
-        criticality=CRITICALITIES.get(stored["criticality"], stored["criticality"]),
-        craft=stored["craft"] + (", outage only" if stored["outage_only"] else ""),
+        criticality=escape(CRITICALITIES.get(stored["criticality"], stored["criticality"])),
+        craft=escape(stored["craft"]) + (", outage only" if stored["outage_only"] else ""),
     )
 
 

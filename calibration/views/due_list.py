@@ -48,14 +48,14 @@ def due_list(request: HttpRequest) -> HttpResponse:
     areas = lists.areas_of(plant)
     asked = lists.read_asked(request.GET, areas, sort="due")
     page = listing.page(plant, asked, today, rows.COLUMNS)
+    tag_url = lists.tag_url()
     context = {
         "asked": asked,
         "counts": _counts(asked, listing.state_counts(plant, today)),
         "selects": lists.selects(asked, areas, *FILTERS),
-        "rows": [rows.row_of(stored, today) for stored in page.rows],
+        "rows": [rows.row_of(stored, today, tag_url) for stored in page.rows],
         "sorts": lists.sorts(asked, HEADS),
         "paging": lists.paging(page, asked),
-        "tag_url": lists.tag_url(),
         "filtered": lists.is_filtered(asked),
     }
     return answer(request, "calibration/due_list.html", "rows", context)

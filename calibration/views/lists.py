@@ -5,11 +5,13 @@ from __future__ import annotations
 import datetime
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
+from html import escape
 from typing import Any, Final
 
 from django.http import HttpRequest, QueryDict
 from django.http.response import HttpResponseBase
 from django.urls import reverse
+from django.utils.safestring import SafeString
 
 from calibration import listing, rows
 from calibration.listing import Asked, Page
@@ -63,12 +65,8 @@ class Select:
 
     name: str
     label: str
-    any: str
-    options: list[tuple[str, str, bool]]
-
-    @property
-    def is_set(self) -> bool:
-        return any(chosen for _, _, chosen in self.options)
+    options: SafeString
+    is_set: bool
 
 
 @dataclass(frozen=True, slots=True)
@@ -118,8 +116,13 @@ def selects(asked: Asked, areas: Choices, *names: str) -> list[Select]:
     for name in names:
         label, nothing, choices = offered[name]
         now = getattr(asked, name)
-        made.append(Select(name, label, nothing, [(value, words, value == now) for value, words in choices]))
+        options = "".join(_option(value, words, value == now) for value, words in (("", nothing), *choices))
+        made.append(Select(name, label, SafeString(options), is_set=now != ""))
     return made
+
+
+def _option(value: str, words: str, chosen: bool) -> str:
+    return f'<option value="{escape(value)}"{" selected" if chosen and value else ""}>{escape(words)}</option>'
 
 
 def sorts(asked: Asked, heads: Mapping[str, str]) -> dict[str, Sort]:

@@ -24,13 +24,13 @@ def register_list(request: HttpRequest) -> HttpResponse:
     areas = lists.areas_of(plant)
     asked = lists.read_asked(request.GET, areas, sort="tag")
     page = listing.page(plant, asked, today, rows.COLUMNS)
+    tag_url = lists.tag_url()
     context = {
         "asked": asked,
         "selects": lists.selects(asked, areas, *FILTERS),
-        "rows": [rows.row_of(stored, today) for stored in page.rows],
+        "rows": [rows.row_of(stored, today, tag_url) for stored in page.rows],
         "sorts": lists.sorts(asked, HEADS),
         "paging": lists.paging(page, asked),
-        "tag_url": lists.tag_url(),
         "filtered": lists.is_filtered(asked),
         "may_edit": access.allowed(request, plant.pk, "edit register"),
         "may_import": access.allowed(request, plant.pk, "import"),
