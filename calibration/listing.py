@@ -33,6 +33,8 @@ CEILING: Final = 1000
 #: fewer where each row is asked for its words.
 EXAMINED: Final = 4000
 EXAMINED_FOR_WORDS: Final = 1000
+#: A page is looked for along the order of the list if it should be full after so many rows.
+FARTHEST: Final = 20000
 Phase = Standing.Phase
 _TABLE: Final = Standing._meta.db_table
 _WORDS: Final = SearchWord._meta.db_table
@@ -155,9 +157,10 @@ def page(plant: Plant, asked: Asked, today: datetime.date, columns: Sequence[str
     elif len(conditions) == 1:
         text, driver = total_text(counts[0]), in_order
     else:
-        found, whole = _sampled(plant, conditions, in_order, order)
+        found, seen, whole = _sampled(plant, conditions, in_order, order)
         text = total_text(found) if found > CEILING or whole else f"{found:,}+"
-        driver = in_order if found > PAGE or rarest is None else rarest
+        dense = whole or found * FARTHEST >= PAGE * seen
+        driver = in_order if dense or rarest is None else rarest
     cursor = _read_cursor(asked.before or asked.after, order)
     backward = bool(asked.before and cursor)
     keys = _keys(
@@ -274,7 +277,8 @@ def _in_state(state: ScheduleState, today: datetime.date, spans: tuple[int, int]
 def _worded(plant: Plant, word: str) -> Condition:
     """Tags with a word that begins so; keys where it is rare, a look at each tag where it is common."""
     begins, values = _begins(word)
-    look = f"EXISTS (SELECT 1 FROM {_WORDS} w WHERE w.tag_id = s.tag_id AND {begins})"
+    # Not EXISTS: PostgreSQL would gather every tag with such a word before it looks at the first row.
+    look = f"(SELECT 1 FROM {_WORDS} w WHERE w.tag_id = s.tag_id AND {begins} LIMIT 1) IS NOT NULL"
     return Condition((Term(look, values),), word=word)
 
 
@@ -363,14 +367,26 @@ def _counts(plant: Plant, conditions: Sequence[Condition]) -> list[int]:
     texts, values = [], []
     for condition in conditions:
         if condition.word:
-            begins, words = _begins(condition.word)
-            text, more = f"FROM {_WORDS} w WHERE w.plant_id = %s AND {begins}", [plant.pk, *words]
-            texts.append(f"(SELECT COUNT(*) FROM (SELECT DISTINCT w.tag_id {text} LIMIT {CEILING + 1}) c)")
+            text, more = _count_of_word(plant, condition.word)
+            texts.append(text)
         else:
             text, more = _matching(plant, [condition], condition)
             texts.append(f"(SELECT COUNT(*) FROM (SELECT 1 {text} LIMIT {CEILING + 1}) c)")
         values += more
     return list(_read(f"SELECT {', '.join(texts)}", values)[0])
+
+
+def _count_of_word(plant: Plant, word: str) -> Statement:
+    """How many tags have a word that begins so: the first few thousand words tell, but for one letter or digit."""
+    begins, words = _begins(word)
+    rows = f"SELECT w.tag_id FROM {_WORDS} w WHERE w.plant_id = %s AND {begins}"
+    most = 5 * (CEILING + 1)
+    exactly = f"(SELECT COUNT(*) FROM (SELECT DISTINCT e.tag_id FROM ({rows}) e LIMIT {CEILING + 1}) c)"
+    text = (
+        f"(SELECT CASE WHEN COUNT(DISTINCT f.tag_id) > {CEILING} THEN {CEILING + 1} "
+        f"WHEN COUNT(*) < {most} THEN COUNT(DISTINCT f.tag_id) ELSE {exactly} END FROM ({rows} LIMIT {most}) f)"
+    )
+    return text, [plant.pk, *words] * 2
 
 
 def _count(found: Statement) -> int:
@@ -381,12 +397,13 @@ def _count(found: Statement) -> int:
 
 def _sampled(
     plant: Plant, conditions: Sequence[Condition], in_order: Condition | None, order: Sequence[str]
-) -> tuple[int, bool]:
-    """How many of the first rows of the list match, and whether these were all of its rows."""
+) -> tuple[int, int, bool]:
+    """How many of the first rows of the list match, how many rows that were, and whether these were all of them."""
     text, values = _matching(plant, [in_order] if in_order else [], in_order)
     others = [term for condition in conditions if condition is not in_order for term in condition.terms]
     if not others:
-        return _count((text, values)), True
+        counted = _count((text, values))
+        return counted, counted, True
     ceiling = EXAMINED_FOR_WORDS if any(condition.word for condition in conditions) else EXAMINED
     # Only columns that the index holds are named, so that no row itself is read.
     needed = {"tag_id", *(column for term in others for column in _COLUMN.findall(term.text))}
@@ -395,7 +412,7 @@ def _sampled(
     matches = " AND ".join(term.text.format_map(_PLAIN) for term in others)
     values = [value for term in others for value in term.values] + values
     found, seen = _read(f"SELECT COUNT(CASE WHEN {matches} THEN 1 END), COUNT(*) FROM ({rows}) s", values)[0]
-    return found, seen < ceiling
+    return found, seen, seen < ceiling
 
 
 def _spans(plant: Plant) -> tuple[int, int]:
