@@ -157,7 +157,7 @@ def flag_cell(stored: Mapping[str, Any]) -> SafeString:
     open_flags, accepted, rank = stored["open_flags"], stored["accepted_flags"], stored["flag_rank"]
     if rank < len(FLAG_WORDS):
         word, tone = FLAG_WORDS[rank]
-        more = f" <small>and {open_flags - 1} more</small>" if open_flags > 1 else ""
+        more = f" <small>+{open_flags - 1}</small>" if open_flags > 1 else ""
         return SafeString(f'<span class="state {tone}">{word}</span>{more}')
     if accepted:
         return SafeString(f'<span class="state quiet">{accepted} accepted</span>')

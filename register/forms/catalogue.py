@@ -104,6 +104,7 @@ class TypeFields(RegisterForm):
             for column, label in enumerate(("temperature", "pressure")):
                 name = f"{label}_{row}"
                 field = TypedNumberField(label=f"{label.capitalize()}, row {row + 1}", required=False)
+                field.widget.attrs["aria-label"] = field.label
                 self.fields[name] = field
                 if row < len(rating):
                     self.initial[name] = rating[row][column]
