@@ -83,7 +83,8 @@ class Draft:
     def __init__(self, sheet: Sheet) -> None:
         self.sheet = sheet
         self.basis = Basis.read(sheet, int(sheet.basis["head_id"]))
-        self.fields = standing(sheet.entries.select_related("person"))
+        self.entries = list(sheet.entries.select_related("person"))
+        self.fields = standing(self.entries)
         self.zone = ZoneInfo(sheet.plant.time_zone)
 
     def text(self, name: str) -> str:

@@ -16,7 +16,7 @@ from calibration.marks import error_bar
 from calibration.models import Entry, Run, Sheet
 from calibration.results import Result, result_of
 from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, ORDER, PARTS, PRESENT, label, reading
-from register.models import User
+from register.models import Flag, User
 
 Stage = Sheet.Stage
 #: How long after his last entry a person counts as being on the sheet.
@@ -146,7 +146,7 @@ def steps(draft: Draft) -> list[Step]:
 def others(draft: Draft, viewer: User, now: datetime.datetime) -> list[Other]:
     """Who else is on the sheet, with what he did last."""
     last: dict[int, Entry] = {}
-    for entry in draft.sheet.entries.select_related("person").order_by("received_at"):
+    for entry in sorted(draft.entries, key=lambda entry: entry.received_at):
         if entry.person_id != viewer.pk and entry.received_at > now - NEARBY:
             last[entry.person_id] = entry
     return [
@@ -198,6 +198,14 @@ def reading_views(draft: Draft, kind: str, viewer: Viewer, *, repeat: str = "") 
 def one_reading(draft: Draft, kind: str, key: str, viewer: Viewer) -> ReadingView | None:
     """A single reading, for the answer to a saved field."""
     return next((view for view in reading_views(draft, kind, viewer, repeat=key) if view.key == key), None)
+
+
+def open_violations(draft: Draft) -> list[str]:
+    """What the limit checks hold against the instrument: whoever opens a valve there should know."""
+    if draft.sheet.tag_id is None:
+        return []
+    flags = Flag.objects.filter(tag=draft.sheet.tag_id, closed_at=None, severity=Flag.Severity.VIOLATION)
+    return [flag.sentence for flag in flags.order_by("check_key")]
 
 
 def line_views(draft: Draft, part: str, viewer: Viewer) -> list[LineView]:

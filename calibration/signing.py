@@ -23,7 +23,7 @@ from calibration.models import Record, Run, Sheet, Signature, Standard, Test
 from calibration.opening import current_requirement
 from calibration.recording import write_record
 from calibration.reopening import placed
-from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, PARTS, REMARKS, label
+from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, PARTS, PRESENT, REMARKS, label
 from calibration.storing_entries import locked
 from register.auditing import Act, Actor
 from register.models import Fitting, Tag, Transmitter, User
@@ -241,7 +241,9 @@ def _answers(draft: Draft, changes: Collection[Change]) -> dict[str, Any]:
         "acknowledged": [change.words for change in changes],
         "exceptions": _exceptions(draft),
         "opened": {"by": str(sheet.opened_by), "at": sheet.opened_at.astimezone(draft.zone).isoformat()},
-        "entered_by": sorted({str(kept.entry.person) for kept in draft.fields.values()}),
+        "entered_by": sorted(
+            {str(e.person) for e in draft.entries if e.field != PRESENT and not e.field.startswith("exception.")}
+        ),
     }
     return {name: value for name, value in answers.items() if value}
 

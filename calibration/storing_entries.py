@@ -129,8 +129,8 @@ def typed_in_form(draft: Draft, values: Mapping[str, str], seen: Mapping[str, st
     seen : mapping
         By field name, the id of the entry that the form was shown with; fields without one are not taken.
     """
-    last = max((entry.sequence for entry in draft.sheet.entries.all() if entry.device == device), default=0)
-    kept = {str(entry.id): entry.text for entry in draft.sheet.entries.all()}
+    last = max((entry.sequence for entry in draft.entries if entry.device == device), default=0)
+    kept = {str(entry.id): entry.text for entry in draft.entries}
     new = []
     for name, base in seen.items():
         text = values.get(name, "").strip()

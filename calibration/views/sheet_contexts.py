@@ -12,6 +12,7 @@ from calibration.sheet_page import (
     Viewer,
     field_view,
     line_views,
+    open_violations,
     reading_views,
     runs_shown,
     standard_views,
@@ -30,7 +31,7 @@ def stage_context(draft: Draft, viewer: Viewer, *, repeat: str) -> dict[str, Any
             "serial_field": field_view(draft, "confirm-serial", viewer),
         }
     if stage == Stage.CAUTIONS:
-        return {"lines": line_views(draft, "cautions", viewer)}
+        return {"lines": line_views(draft, "cautions", viewer), "violations": open_violations(draft)}
     if stage == Stage.STANDARDS:
         return {"kind": Run.Kind.AS_FOUND, "standards": standard_views(draft, Run.Kind.AS_FOUND, viewer)}
     if stage in {Stage.AS_FOUND, Stage.AS_LEFT}:
@@ -74,22 +75,26 @@ def _end_context(draft: Draft, viewer: Viewer) -> dict[str, Any]:
     }
 
 
+def run_state(draft: Draft, kind: str, viewer: Viewer, *, repeat: str = "") -> dict[str, Any]:
+    """How a run stands: what changes with every reading."""
+    verdict, css, why = verdict_words(draft, kind)
+    return {
+        "kind": kind,
+        "readings": reading_views(draft, kind, viewer, repeat=repeat),
+        "missing": len(draft.runs[kind].missing),
+        "verdict": verdict,
+        "verdict_css": css,
+        "why": why,
+    }
+
+
 def run_context(draft: Draft, kind: str, viewer: Viewer, *, repeat: str = "") -> dict[str, Any]:
     """Everything the page of a run shows."""
     from register.engineering.units import LENGTH, PRESSURE, TEMPERATURE, choices
     from register.engineering.units import label as unit_label
 
-    readings = reading_views(draft, kind, viewer, repeat=repeat)
     run = draft.runs[kind]
-    verdict, css, why = verdict_words(draft, kind)
-    return {
-        "kind": kind,
-        "readings": readings,
-        "current": next((row.id for row in readings if not row.state), ""),
-        "missing": len(run.missing),
-        "verdict": verdict,
-        "verdict_css": css,
-        "why": why,
+    return run_state(draft, kind, viewer, repeat=repeat) | {
         "limit": draft.basis.tolerance(kind).words(_unit(draft)),
         "unit": unit_label(run.unit),
         "signed": _may_be_negative(draft),

@@ -61,12 +61,14 @@ def sheet_exception(request: HttpRequest, pk: object, standard: int) -> HttpResp
     """Who allows a lapsed certificate, and why; the person need not be the one signed in."""
     held = access.get(request, SHEETS, "read", pk=pk)
     excepted = get_object_or_404(Standard, pk=standard, plant=held.plant_id)
-    form = ExceptionForm(request.POST or None)
+    person = access.person(request)
+    known = person.get_username() if access.may(person, "allow exception", held.plant_id) else ""
+    form = ExceptionForm(request.POST or None, initial={"username": known})
     if request.method == "POST" and form.is_valid():
         try:
-            person = named(request, form.cleaned_data["username"], form.cleaned_data["password"])
+            allowing = named(request, form.cleaned_data["username"], form.cleaned_data["password"])
             sheets.allow_exception(
-                by=Actor(person=person, remote_address=Actor.of(request).remote_address),
+                by=Actor(person=allowing, remote_address=Actor.of(request).remote_address),
                 reason=form.cleaned_data["reason"],
                 sheet_id=held.pk,
                 standard=excepted,
@@ -74,7 +76,7 @@ def sheet_exception(request: HttpRequest, pk: object, standard: int) -> HttpResp
         except ValidationError as error:
             form.refuse(error)
         else:
-            messages.success(request, f"{person} allows {excepted.name} on this sheet.")
+            messages.success(request, f"{allowing} allows {excepted.name} on this sheet.")
             return redirect("sheet", held.pk)
     offered = {candidate.standard.pk: candidate for candidate in candidates(held.plant, held.plant.today())}
     context = {"sheet": held, "form": form, "standard": excepted, "candidate": offered.get(excepted.pk)}

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import datetime
 import json
 import re
 from typing import Any
@@ -22,7 +23,7 @@ from calibration.results import result_now
 from calibration.sheet_fields import KINDS, PRESENT, label, reading, reading_of
 from calibration.storing_entries import Stored, add_entries
 from calibration.views.sheet import SHEETS
-from calibration.views.sheet_contexts import run_context
+from calibration.views.sheet_contexts import run_state
 from register import access
 from register.auditing import Actor
 from register.engineering.units import LENGTH, PRESSURE, TEMPERATURE, choices
@@ -75,13 +76,16 @@ def sheet_judge(request: HttpRequest, pk: object) -> HttpResponse:
 def sheet_news(request: HttpRequest, pk: object) -> HttpResponse:
     """What others did since the page was loaded."""
     held = access.get(request, SHEETS, "read", pk=pk)
-    since = parse_datetime(request.GET.get("since", "")) or timezone.now()
+    since = _moment(request.GET.get("since", ""))
     device = request.GET.get("device", "")
     draft = Draft(held)
     fresh = [
         entry
-        for entry in draft.sheet.entries.select_related("person").filter(received_at__gt=since).order_by("-received_at")
-        if entry.field != PRESENT and not (device and entry.device.startswith(device)) and entry.device != "site"
+        for entry in sorted(draft.entries, key=lambda entry: entry.received_at, reverse=True)
+        if entry.received_at > since
+        and entry.field != PRESENT
+        and not (device and entry.device.startswith(device))
+        and entry.device != "site"
     ]
     mine = access.person(request).pk
     lines = [
@@ -100,6 +104,15 @@ def sheet_news(request: HttpRequest, pk: object) -> HttpResponse:
         "moved": held.get_stage_display() if request.GET.get("stage") not in ("", held.stage) else "",
     }
     return render(request, "calibration/sheet.html#news", context)
+
+
+def _moment(text: str) -> datetime.datetime:
+    """The time in an address, or now where it holds none."""
+    try:
+        at = parse_datetime(text)
+    except ValueError:
+        at = None
+    return at if at is not None and at.tzinfo is not None else timezone.now()
 
 
 def _history(request: HttpRequest, held: Sheet) -> HttpResponse:
@@ -139,7 +152,7 @@ def _fragment(request: HttpRequest, stored: Stored, new: NewEntry) -> HttpRespon
     belongs = reading_of(new.field)
     if belongs is not None and (view := sheet_page.one_reading(draft, *belongs, viewer)) is not None:
         context |= {"reading": view, "result": view.result, "oob": True}
-        context |= {"run": run_context(draft, belongs[0], viewer)}
+        context |= {"run": run_state(draft, belongs[0], viewer)}
         response = render(request, "calibration/sheet_run.html#saved", context)
     elif new.field.endswith("-with") and not refused:
         views = sheet_page.standard_views(draft, new.field.partition(".")[0], viewer)
