@@ -12,9 +12,10 @@ from django.contrib.auth.hashers import make_password
 from django.db import transaction
 from django.utils import timezone
 
-from calibration import demonstration_data, scheduling, standards
-from calibration.demonstration_sheet import open_half_filled
-from calibration.demonstration_tests import Told
+from calibration import scheduling, standards
+from calibration.demonstration.data import read
+from calibration.demonstration.sheet import open_half_filled
+from calibration.demonstration.told import Told
 from calibration.models import PointList, Requirement, Standard
 from calibration.recording import write_record, write_records
 from fixtures.demonstration.people import PASSWORD, PEOPLE
@@ -69,7 +70,7 @@ def load() -> Loaded:
     if User.objects.exists() or Plant.objects.exists():
         raise NotEmptyError("There are people or plants in the database already: the demonstration needs an empty one.")
     today = timezone.now().astimezone(ZoneInfo("Europe/London")).date()
-    site, tests = demonstration_data.read(today)
+    site, tests = read(today)
     loaded = Loaded()
     _places(loaded, site)
     _people(loaded)

@@ -1,0 +1,1 @@
+"""Tells the generated demonstration data to the acts that load it."""
