@@ -133,6 +133,12 @@ STATIC_URL = "static/"
 STATIC_ROOT = DATA_DIR / "static"
 STATICFILES_DIRS = [BASE_DIR / "static"]
 MEDIA_ROOT = DATA_DIR / "files"
+#: No file is taken in that is larger than any that is read here.
+FILE_UPLOAD_HANDLERS = [
+    "register.imports.uploads.BoundedUpload",
+    "django.core.files.uploadhandler.MemoryFileUploadHandler",
+    "django.core.files.uploadhandler.TemporaryFileUploadHandler",
+]
 STORAGES = {
     "default": {"BACKEND": "django.core.files.storage.FileSystemStorage"},
     "staticfiles": {"BACKEND": "django.contrib.staticfiles.storage.ManifestStaticFilesStorage"},
@@ -175,6 +181,8 @@ LOGGING = {
     "root": {"handlers": ["stderr"], "level": "WARNING"},
     "loggers": {
         "django": {"handlers": ["stderr"], "level": "WARNING", "propagate": False},
+        # Refused and missing pages are no fault of the site; what fails inside it is.
+        "django.request": {"level": "ERROR"},
         # Its warnings hold sign-in names as typed, which may be passwords; the audit trail tells of failures.
         "axes": {"handlers": ["stderr"], "level": "ERROR", "propagate": False},
         "register": {"handlers": ["stderr"], "level": LOG_LEVEL, "propagate": False},

@@ -5,12 +5,14 @@ from __future__ import annotations
 from django.urls import include, path
 
 from register.access import needs
+from register.imports.steps import steps
 from register.views import (
     audit,
     catalogue,
     finding,
     fittings,
     flags,
+    import_register,
     interventions,
     people,
     plants,
@@ -83,6 +85,8 @@ urlpatterns = [
         needs("edit register")(interventions.intervention_withdraw),
         name="intervention-withdraw",
     ),
+    *steps(import_register.REGISTER),
+    path("import/register/export/", needs("read")(import_register.take_out), name="import-register-export"),
     path("plants/<slug:code>/choose/", needs("signed in")(choose_plant), name="plant-choose"),
     path("", include("calibration.urls")),
 ]

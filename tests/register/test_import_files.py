@@ -14,7 +14,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from register.exporting import cell, unguarded
-from register.tables import LARGEST_FILE, Table, TableError, letter, read_table
+from register.imports.tables import LARGEST_FILE, Table, TableError, letter, read_table
 
 Row = Sequence[Any]
 
@@ -172,7 +172,7 @@ def test_the_first_visible_sheet_is_read_and_the_others_are_named() -> None:
         (b"# only a note\n", "no headings"),
         (b"Tag\0,Service\nPT-1,x\n", "is no text"),
         (bytes(range(256)) * 4, "is no text"),
-        ("Tag\nPT-1\n".encode() + b"\x81\x8d\xff", "neither UTF-8 nor Windows text"),
+        (b"Tag\nPT-1\n" + b"\x81\x8d\xff", "neither UTF-8 nor Windows text"),
         (b"\xff\xfeT", "says that it is UTF-16"),
         (b'Tag,Service\nPT-1,"open\nPT-2,x\n', "Line 2"),
         (b'Tag,Service\nPT-1,a"b"c\nPT-2,"x"y\n', "Line 3"),
@@ -192,7 +192,7 @@ def test_an_archive_that_is_no_workbook_is_refused() -> None:
     held = io.BytesIO()
     with zipfile.ZipFile(held, "w") as archive:
         archive.writestr("word/document.xml", "<a/>")
-    with pytest.raises(TableError, match="is no .xlsx workbook, although it is packed like one"):
+    with pytest.raises(TableError, match=r"is no \.xlsx workbook, although it is packed like one"):
         read_table(held.getvalue(), "letter.xlsx")
 
 

@@ -87,7 +87,7 @@ def read_table(data: bytes, name: str, *, decimal_comma: bool = False) -> Table:
     if len(data) > LARGEST_FILE:
         raise TableError(f"“{name}” is larger than {LARGEST_FILE // 1024 // 1024} MB: bring it in parts.")
     if data.startswith(b"PK\x03\x04"):
-        from register.workbooks import read_workbook
+        from register.imports.workbooks import read_workbook
 
         return read_workbook(data, name)
     if data.startswith(b"\xd0\xcf\x11\xe0"):
@@ -120,9 +120,11 @@ def assembled(
 
     `wrong_cells` gives lines and sentences of what could not be read there.
     """
-    numbered = ((line, [" ".join(cell.split(" ")).strip() for cell in row]) for line, row in cells)
+    numbered = ((line, [cell.replace("\N{NO-BREAK SPACE}", " ").strip() for cell in row]) for line, row in cells)
     given = ((line, row) for line, row in numbered if any(row))
-    left_out, head, rows, lines = 0, None, [], []
+    left_out, head = 0, None
+    rows: list[tuple[str, ...]] = []
+    lines: list[int] = []
     faults: dict[int, str] = {}
     wrong = dict(wrong_cells)
     for line, row in given:
@@ -200,7 +202,7 @@ def _decoded(data: bytes, name: str) -> tuple[str, list[str]]:
 
 
 def _separator(text: str) -> tuple[str, str]:
-    """The mark between columns, as the first line that is no note shows it, and the text without a line that names it."""
+    """The mark between columns, as the first line that is no note shows it; the text without a line that names it."""
     named = _MARK.match(text)
     if named and named[1] in SEPARATORS:
         return named[1], text[named.end() :]

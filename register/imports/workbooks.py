@@ -18,7 +18,7 @@ from typing import Any, Final
 from xml.etree import ElementTree
 
 from register.engineering.typed import NumberError, shortest
-from register.tables import MOST_COLUMNS, MOST_ROWS, Table, TableError, assembled
+from register.imports.tables import MOST_COLUMNS, MOST_ROWS, Table, TableError, assembled
 
 MOST_UNPACKED: Final = 120 * 1024 * 1024
 MOST_CELLS: Final = 20_000_000
