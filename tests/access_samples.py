@@ -6,10 +6,13 @@ A new url with something to fill in needs a line in `SAMPLES`: `test_access_matr
 from __future__ import annotations
 
 import datetime
+import uuid
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any, Final
 
+from django.core.files.base import ContentFile
+from django.core.files.storage import default_storage
 from django.urls import URLPattern, URLResolver, get_resolver
 from django.utils import timezone
 
@@ -18,6 +21,8 @@ from calibration.models import Certificate, Deferral, GuidanceLine, PointList, R
 from calibration.provision import provide_defaults
 from calibration.scheduling import refresh
 from register.auditing import Act, Actor
+from register.imports.kinds import KINDS
+from register.imports.uploads import Kept, path_of
 from register.models import (
     Area,
     AuditEntry,
@@ -38,6 +43,7 @@ from tests.calibration.at_work import opened, to_as_found, to_signature
 
 #: In the number of every tag of the plant: must never show up on a page of somebody who has no role there.
 MARK: Final = "NORTHMARK"
+TOKEN: Final = uuid.UUID(int=7)
 
 
 @dataclass
@@ -100,6 +106,8 @@ def build(cast: people.Cast) -> World:
         requested_by=cast.planner,
     )
     refresh([tag.pk])
+    for person in cast.by_role.values():
+        _bring_files(person, plant)
     act = Act(Actor(cast.engineer), "a reason")
     act.created(tag, plant=plant)
     act.write()
@@ -127,6 +135,15 @@ def build(cast: people.Cast) -> World:
         test=record.test,
         entry=AuditEntry.objects.filter(plant=plant).order_by("-id")[0],
     )
+
+
+def _bring_files(person: User, plant: Plant) -> None:
+    """A file between the steps of each import, for each person his own under the same token."""
+    for kind in KINDS:
+        path = path_of(person.pk, str(TOKEN), "file")
+        default_storage.delete(path)
+        default_storage.save(path, ContentFile(b"Tag\nPT-1\n"))
+        Kept(str(TOKEN), person.pk, kind, plant.pk, "register.csv").store()
 
 
 @dataclass(frozen=True, slots=True)
@@ -225,3 +242,10 @@ def every_url() -> Iterator[URLPattern]:
                 yield pattern
 
     yield from walk(get_resolver().url_patterns)
+
+
+SAMPLES |= {
+    f"import-{kind}-{step}": Sample(lambda world: {"token": TOKEN})
+    for kind in (list(every_url()) and KINDS)  # the urls fill in which imports there are
+    for step in ("match", "check", "bring-in", "bad-rows")
+}

@@ -49,7 +49,7 @@ def ask(client: Client, path: str) -> HttpResponse:
 
 def text(answer: HttpResponse) -> str:
     content = b"".join(answer.streaming_content) if answer.streaming else answer.content  # type: ignore[attr-defined]
-    return content.decode()
+    return content.decode(errors="replace")
 
 
 def content() -> dict[str, list[tuple[str, ...]]]:

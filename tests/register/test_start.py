@@ -129,6 +129,7 @@ def served(monkeypatch: pytest.MonkeyPatch, tmp_path: Path, settings: Any) -> li
         ready()
 
     monkeypatch.setattr(serving, "serve", serve)
+    monkeypatch.setattr("register.management.commands.start.connections.close_all", lambda: None)
     monkeypatch.setattr(os, "environ", os.environ.copy())
     settings.DATA_DIR = tmp_path
     settings.STATIC_ROOT = tmp_path / "static"
