@@ -244,8 +244,10 @@ def every_url() -> Iterator[URLPattern]:
     yield from walk(get_resolver().url_patterns)
 
 
-SAMPLES |= {
-    f"import-{kind}-{step}": Sample(lambda world: {"token": TOKEN})
-    for kind in (list(every_url()) and KINDS)  # the urls fill in which imports there are
-    for step in ("match", "check", "bring-in", "bad-rows")
-}
+SAMPLES.update(
+    {
+        f"import-{kind}-{step}": Sample(lambda world: {"token": TOKEN})
+        for kind in (list(every_url()) and KINDS)  # the urls fill in which imports there are
+        for step in ("match", "check", "bring-in", "bad-rows")
+    }
+)
