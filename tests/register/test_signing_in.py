@@ -98,7 +98,7 @@ def test_many_wrong_passwords_close_the_door_for_that_name_only(cast: Cast, sett
         assert sign_in(client, "planner", "guessed").status_code == 200
     closing = sign_in(client, "planner", "guessed")
     assert closing.status_code == 429
-    assert b"Locked out" in closing.content
+    assert b"for 15 minutes" in closing.content
     assert sign_in(client, "planner", PASSWORD).status_code == 429
     assert entering.is_locked_out(cast.planner)
     failed = entries(Kind.SIGN_IN_FAILED)
