@@ -26,8 +26,8 @@ class RequirementForm(RegisterForm):
         (
             "Tolerance",
             ("mpe_form", "mpe_percent", "mpe_input", "input_unit", "as_left_percent", "as_left_input", "decision_rule"),
-            "As-found is judged against the tolerance (MPE), as-left against the as-left tolerance; where that is empty, "
-            "against the tolerance as well.",
+            "As-found is judged against the tolerance (MPE), as-left against the as-left tolerance; where that is "
+            "empty, against the tolerance as well.",
         ),
         (
             "When",
