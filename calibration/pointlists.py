@@ -1,4 +1,4 @@
-"""Acts on point lists. A list in use is never edited into another meaning: open sheets and records keep their own copy."""
+"""Acts on point lists; open sheets and records keep their own copy of the points they began with."""
 
 from __future__ import annotations
 

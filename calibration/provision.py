@@ -63,7 +63,7 @@ GUIDANCE: Final = (
     (
         Part.CAUTION,
         "condensate",
-        "Hot condensing service: the equaliser stays shut so that the condensate legs are kept; follow this tag's own sequence.",
+        "Hot condensing service: the equaliser stays shut to keep the condensate legs; follow this tag's own sequence.",
         Applies.CONDENSING,
         Answer.TICK,
     ),
@@ -105,7 +105,7 @@ GUIDANCE: Final = (
     (
         Part.CAUTION,
         "overrange",
-        "Never apply more than the test needs. A capsule survives overrange up to the body rating, but it is not good practice.",
+        "Apply no more than the test needs. A capsule survives overrange up to the body rating; it is not good practice.",
         Applies.ALWAYS,
         Answer.TICK,
     ),

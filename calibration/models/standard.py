@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import datetime
 from typing import ClassVar
 
 from django.db import models
@@ -10,11 +11,10 @@ from register.models import Plant, Typed, TypedQuantities
 
 
 class StandardQuerySet(models.QuerySet["Standard"]):
-    def with_until(self) -> StandardQuerySet:
-        """Annotate `until`: the last day that a certificate which still counts is relied on, or None."""
-        return self.annotate(
-            until=models.Max("certificates__valid_until", filter=models.Q(certificates__withdrawn_at__isnull=True))
-        )
+    def with_until(self) -> list[tuple[Standard, datetime.date | None]]:
+        """Each standard with the last day that a certificate which still counts is relied on, or None."""
+        until = models.Max("certificates__valid_until", filter=models.Q(certificates__withdrawn_at__isnull=True))
+        return [(standard, vars(standard)["until"]) for standard in self.annotate(until=until)]
 
 
 class Standard(TypedQuantities):

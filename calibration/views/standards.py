@@ -87,8 +87,8 @@ def standards(request: HttpRequest) -> HttpResponse:
     plant = access.chosen_plant(request)
     today = plant.today()
     rows = [
-        (standard, reliance(standard, standard.until, today))
-        for standard in Standard.objects.filter(plant=plant).with_until()
+        (standard, reliance(standard, until, today))
+        for standard, until in Standard.objects.filter(plant=plant).with_until()
     ]
     return render(
         request,

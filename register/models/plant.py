@@ -21,9 +21,7 @@ def known_time_zone(value: str) -> None:
 class Plant(TypedQuantities):
     """A site with its own people, tags, local date and chain of records."""
 
-    QUANTITIES: ClassVar = (
-        Typed("barometric_pressure", "barometric_unit", "barometric_pa"),
-    )
+    QUANTITIES: ClassVar = (Typed("barometric_pressure", "barometric_unit", "barometric_pa"),)
 
     code = models.SlugField(max_length=20, unique=True, help_text="Short, used in addresses and files.")
     name = models.CharField(max_length=120)

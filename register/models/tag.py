@@ -70,7 +70,10 @@ class Tag(TypedQuantities):
     design_pressure = models.CharField(max_length=40, blank=True)
     lowest_pressure = models.CharField("lowest pressure", max_length=40, blank=True)
     one_side_pressure = models.CharField(
-        "greatest pressure on one side", max_length=40, blank=True, help_text="What one side can see while the other is open."
+        "greatest pressure on one side",
+        max_length=40,
+        blank=True,
+        help_text="What one side can see while the other is open.",
     )
     operating_pressure_pa = models.FloatField(null=True, editable=False)
     design_pressure_pa = models.FloatField(null=True, editable=False)
@@ -178,7 +181,8 @@ class Range(TypedQuantities):
         constraints = [
             models.CheckConstraint(condition=~models.Q(lrv_si=models.F("urv_si")), name="range_lrv_not_urv"),
             models.CheckConstraint(
-                condition=models.Q(low_cut_percent__gte=0) & models.Q(low_cut_percent__lt=100), name="range_low_cut_share"
+                condition=models.Q(low_cut_percent__gte=0) & models.Q(low_cut_percent__lt=100),
+                name="range_low_cut_share",
             ),
             models.UniqueConstraint(
                 fields=["tag", "effective_from"],

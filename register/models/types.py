@@ -43,7 +43,7 @@ class TransmitterType(TypedQuantities):
     body_rating = models.JSONField(
         default=list,
         blank=True,
-        help_text="Pairs of temperature and gauge pressure as typed, in the units of the type, lowest temperature first.",
+        help_text="Pairs of temperature and gauge pressure as typed, in the type's units, lowest temperature first.",
     )
     one_side_limit = models.CharField("one-side limit", max_length=40, blank=True)
     vacuum_limit = models.CharField("lowest absolute pressure", max_length=40, blank=True)
@@ -61,15 +61,15 @@ class TransmitterType(TypedQuantities):
     capsule_max_k = models.FloatField(null=True, editable=False)
     least_supply_v = models.FloatField("least supply voltage (V)", null=True, blank=True)
     high_failure_ma = models.FloatField("high failure current (mA)", default=22.5)
-    digital = models.BooleanField("digital unit", default=False, help_text="Has a digital value besides the loop current.")
+    digital = models.BooleanField(
+        "digital unit", default=False, help_text="Has a digital value besides the loop current."
+    )
 
     class Meta:
         ordering = ["maker__name", "designation"]
         constraints = [
             models.UniqueConstraint(fields=["maker", "designation"], name="type_once_per_maker"),
-            models.CheckConstraint(
-                condition=models.Q(measures__in=ReferenceKind.values), name="type_measures_known"
-            ),
+            models.CheckConstraint(condition=models.Q(measures__in=ReferenceKind.values), name="type_measures_known"),
             models.CheckConstraint(
                 condition=models.Q(ambient_min_k__isnull=True)
                 | models.Q(ambient_max_k__isnull=True)
