@@ -105,7 +105,7 @@ GUIDANCE: Final = (
     (
         Part.CAUTION,
         "overrange",
-        "Apply no more than the test needs. A capsule survives overrange up to the body rating; it is not good practice.",
+        "Apply no more than the test needs: overrange up to the body rating is survivable, not good practice.",
         Applies.ALWAYS,
         Answer.TICK,
     ),
