@@ -193,6 +193,7 @@ def password(request: HttpRequest, pk: int) -> HttpResponse:
         except ValidationError as error:
             form.refuse(error)
         else:
+            entering.unlock(by=Actor.of(request), person=shown)
             request.session[JUST_GIVEN] = [shown.pk, given]
             return redirect("person", pk)
     return _form(request, form, f"New password for {shown}", "Give the password", "person", pk)

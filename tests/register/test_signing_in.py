@@ -119,6 +119,14 @@ def test_an_administrator_opens_the_door_again(cast: Cast, settings: Any, client
     assert (opened.person, opened.before, opened.after) == (cast.administrator, "yes", "no")
 
 
+def test_a_new_password_opens_the_door_too(cast: Cast, settings: Any, client_as: Callable[[User], Client]) -> None:
+    settings.AXES_ENABLED = True
+    for _ in range(settings.AXES_FAILURE_LIMIT):
+        sign_in(Client(), "planner", "guessed")
+    client_as(cast.administrator).post(f"/people/{cast.planner.pk}/password/", {"password": OWN, "reason": "forgotten"})
+    assert sign_in(Client(), "planner", OWN).status_code == 302
+
+
 def test_the_bookkeeping_of_failures_keeps_no_password(cast: Cast, settings: Any) -> None:
     from axes.models import AccessAttempt
 
