@@ -59,7 +59,7 @@ def set_requirement(
     tag = _locked(tag.pk)
     act = Act(by, reason)
     new = Requirement(tag=tag, effective_from=effective_from, reason=reason, person=by.person, **values)
-    _check(new, tag)
+    check_requirement(new, tag)
     standing = _in_force(tag)
     if effective_from <= tag.plant.today():
         if standing is not None and effective_from < standing.effective_from:
@@ -127,7 +127,7 @@ def _apply(by: Actor, plant: Plant, today: datetime.date) -> int:
     return len(rows)
 
 
-def _check(new: Requirement, tag: Tag) -> None:
+def check_requirement(new: Requirement, tag: Tag) -> None:
     """Refuse what cannot be judged or scheduled by, beside the field that is to blame."""
     refused: dict[str, str] = {}
     needed = FIGURES.get(new.mpe_form, ())

@@ -8,6 +8,8 @@ from calibration.views import (
     due_list,
     finished,
     guidance,
+    import_requirements,
+    import_tests,
     lists_of_tests,
     point_lists,
     register_list,
@@ -21,6 +23,7 @@ from calibration.views import (
     transmitter,
 )
 from register.access import needs
+from register.imports.steps import steps
 
 urlpatterns: list[URLPattern | URLResolver] = [
     path("register/", needs("read")(register_list.register_list), name="register"),
@@ -105,4 +108,6 @@ urlpatterns: list[URLPattern | URLResolver] = [
     path("tests/<int:pk>/readings.csv", needs("read")(finished.test_readings), name="test-readings"),
     path("tests/<int:pk>/review/", needs("review")(finished.test_review), name="test-review"),
     path("tests/<int:pk>/send-back/", needs("review")(finished.test_send_back), name="test-send-back"),
+    *steps(import_requirements.REQUIREMENTS),
+    *steps(import_tests.TESTS),
 ]

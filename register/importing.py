@@ -29,11 +29,10 @@ MEANWHILE: Final = (
 
 
 class ChangedMeanwhileError(ValidationError):
-    """What the file would do now is not what was looked at; `proposal` says what it would do."""
+    """What the file would do now is not what was looked at."""
 
-    def __init__(self, proposal: Proposal | None) -> None:
+    def __init__(self) -> None:
         super().__init__(MEANWHILE)
-        self.proposal = proposal
 
 
 def import_register(*, by: Actor, reason: str, plant: Plant, table: Table, matching: Matching, seen: str) -> Proposal:
@@ -59,15 +58,15 @@ def import_register(*, by: Actor, reason: str, plant: Plant, table: Table, match
             return _import(by, reason, plant, table, matching, seen)
     except IntegrityError as error:
         # Another act added the same tag or transmitter between reading and writing.
-        raise ChangedMeanwhileError(None) from error
+        raise ChangedMeanwhileError from error
 
 
 @transaction.atomic
 def _import(by: Actor, reason: str, plant: Plant, table: Table, matching: Matching, seen: str) -> Proposal:
-    _lock(plant, table, matching)
+    lock_tags(plant, table.column(matching["tag"]) if "tag" in matching else ())
     proposal = propose(plant=plant, table=table, matching=matching, today=plant.today())
     if proposal.complaints or proposal.digest() != seen:
-        raise ChangedMeanwhileError(proposal)
+        raise ChangedMeanwhileError
     act = Act(by, reason)
     rows = proposal.touched
     if not rows:
@@ -84,13 +83,14 @@ def _import(by: Actor, reason: str, plant: Plant, table: Table, matching: Matchi
     return proposal
 
 
-def _lock(plant: Plant, table: Table, matching: Matching) -> None:
-    """Lock the tags that the file names, in the order of their ids."""
-    if "tag" not in matching:
-        return
-    for part in _parts(sorted({key(number) for number in table.column(matching["tag"])})):
+def lock_tags(plant: Plant, numbers: Iterable[str]) -> None:
+    """Lock the tags with these numbers in the order of their ids, inside the transaction of an act."""
+    ids: list[int] = []
+    for part in _parts(sorted({key(number) for number in numbers})):
         named = Tag.objects.filter(plant=plant).alias(_key=SearchKey("number")).filter(_key__in=part)
-        list(named.select_for_update(of=("self",)).order_by("pk").values_list("pk"))
+        ids += named.values_list("pk", flat=True)
+    for some in _parts(sorted(ids)):
+        list(Tag.objects.select_for_update(of=("self",)).filter(pk__in=some).order_by("pk").values_list("pk"))
 
 
 def _store_tags(act: Act, rows: Sequence[Row], plant: Plant) -> None:

@@ -140,10 +140,15 @@ def build(cast: people.Cast) -> World:
 def _bring_files(person: User, plant: Plant) -> None:
     """A file between the steps of each import, for each person his own under the same token."""
     for kind in KINDS:
-        path = path_of(person.pk, str(TOKEN), "file")
+        token = str(_token(kind))
+        path = path_of(person.pk, token, "file")
         default_storage.delete(path)
         default_storage.save(path, ContentFile(b"Tag\nPT-1\n"))
-        Kept(str(TOKEN), person.pk, kind, plant.pk, "register.csv").store()
+        Kept(token, person.pk, kind, plant.pk, "register.csv").store()
+
+
+def _token(kind: str) -> uuid.UUID:
+    return uuid.uuid5(TOKEN, kind)
 
 
 @dataclass(frozen=True, slots=True)
@@ -246,7 +251,7 @@ def every_url() -> Iterator[URLPattern]:
 
 SAMPLES.update(
     {
-        f"import-{kind}-{step}": Sample(lambda world: {"token": TOKEN})
+        f"import-{kind}-{step}": Sample(lambda world, kind=kind: {"token": _token(kind)})
         for kind in (list(every_url()) and KINDS)  # the urls fill in which imports there are
         for step in ("match", "check", "bring-in", "bad-rows")
     }

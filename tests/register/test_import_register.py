@@ -370,10 +370,8 @@ def test_a_dry_run_that_has_gone_stale_is_refused(plant: Plant, engineer: User) 
     matching = guessed(read.head, COLUMNS)
     seen = propose(plant=plant, table=read, matching=matching, today=plant.today()).digest()
     edit_tag(by=Actor(engineer), reason="meanwhile", tag=tag(plant, "PT-2041"), values={"service": "Other words"})
-    with pytest.raises(ChangedMeanwhileError) as refused:
+    with pytest.raises(ChangedMeanwhileError):
         import_register(by=Actor(engineer), reason="x", plant=plant, table=read, matching=matching, seen=seen)
-    assert refused.value.proposal is not None
-    assert [one.before for one in refused.value.proposal.changes] == ["Other words"]
     assert tag(plant, "PT-2041").service == "Other words"
 
 
