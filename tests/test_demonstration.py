@@ -37,7 +37,13 @@ from fixtures.demonstration.equipment import FOUND_HIGH, KNOCKED
 from fixtures.demonstration.generate import DATA, generate
 from fixtures.demonstration.people import JETTY, PASSWORD, PEOPLE, WORKS
 from fixtures.demonstration.plan import AS_OF
+from register.auditing import Actor
 from register.engineering.findings import CHECKS
+from register.importing import import_register
+from register.imports.columns import guessed
+from register.imports.proposing import Proposal, propose
+from register.imports.sheet import COLUMNS
+from register.imports.tables import read_table
 from register.models import (
     AuditEntry,
     Fitting,
@@ -56,6 +62,7 @@ from register.models import (
 # Without the mark pytest-django makes no test database, whatever fixtures ask for.
 pytestmark = pytest.mark.django_db
 FOUND = "as-found"
+EXAMPLES = DATA.parents[1] / "examples"
 
 
 @pytest.fixture(scope="module")
@@ -393,6 +400,37 @@ def test_the_chain_and_every_verdict_agree(loaded: Loaded) -> None:
 
 def test_what_is_kept_agrees_with_the_full_history(loaded: Loaded) -> None:
     call_command("recompute", "--check", stdout=StringIO())
+
+
+def proposal(name: str, plant: Any) -> Proposal:
+    """What an example file would do to the register of a plant, its columns matched by their headings alone."""
+    table = read_table((EXAMPLES / name).read_bytes(), name)
+    return propose(plant=plant, table=table, matching=guessed(table.head, COLUMNS), today=plant.today())
+
+
+def test_the_example_register_can_be_brought_in_and_changes_nothing_a_second_time(works: Any) -> None:
+    name = "register.csv"
+    table = read_table((EXAMPLES / name).read_bytes(), name)
+    with transaction.atomic():
+        found = proposal(name, works)
+        assert not found.complaints
+        assert [found.count(state) for state in ("new", "changed", "unchanged")] == [11, 1, 1]
+        import_register(
+            by=Actor(None),
+            reason="example",
+            plant=works,
+            table=table,
+            matching=guessed(table.head, COLUMNS),
+            seen=found.digest(),
+        )
+        assert proposal(name, works).count("unchanged") == 13
+        transaction.set_rollback(True)
+
+
+def test_the_example_with_mistakes_is_refused_row_by_row(works: Any) -> None:
+    found = proposal("register_with_mistakes.csv", works)
+    assert {complaint.line for complaint in found.complaints} == set(range(3, 11))
+    assert found.bad_rows == 8
 
 
 def test_a_second_loading_is_refused(loaded: Loaded) -> None:
