@@ -11,7 +11,7 @@ from typing import Any, Final
 from django.core.exceptions import ValidationError
 from django.utils.dateparse import parse_datetime
 
-from calibration.entries import NewEntry
+from calibration.queries.entries import NewEntry
 
 MOST_AT_ONCE: Final = 2000
 

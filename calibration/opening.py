@@ -10,9 +10,9 @@ from django.core.exceptions import ValidationError
 from django.db import transaction
 from django.utils import timezone
 
-from calibration.basis import Basis
 from calibration.models import Entry, GuidanceLine, PointList, Requirement, Sheet, Test
-from calibration.naming import instrument
+from calibration.queries.naming import instrument
+from calibration.records.basis import Basis
 from calibration.reopening import entries_of
 from register.auditing import Act, Actor
 from register.models import Fitting, MeasuringHead, Plant, Range, Tag, Transmitter, User

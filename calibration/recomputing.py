@@ -12,12 +12,13 @@ from typing import Any, Final
 
 from django.db import transaction
 
-from calibration import scheduling, standings
-from calibration.basis import Basis
-from calibration.judging import METHOD_VERSION
+from calibration import scheduling
 from calibration.models import Record, RunFigures, SearchWord, Standing, Test
-from calibration.reckoning import figures_row
-from calibration.rereading import judged_run
+from calibration.queries import standings
+from calibration.queries.rereading import judged_run
+from calibration.records.basis import Basis
+from calibration.records.judging import METHOD_VERSION
+from calibration.records.reckoning import figures_row
 from register.models import Plant, Tag
 
 _COLUMNS: Final = [field.attname for field in Standing._meta.concrete_fields]

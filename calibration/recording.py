@@ -1,6 +1,6 @@
 """Writes records of tests, signed or transcribed, into the chain of their plant.
 
-A caller describes each test with the dataclasses of `calibration.content`; this module judges the runs, writes the
+A caller describes each test with the dataclasses of `calibration.records.content`; this module judges the runs, writes the
 canonical content, links it to the chain under its lock and keeps the summaries of the test. `calibration.signing` and
 `calibration.transcribing` both end here.
 """
@@ -15,8 +15,10 @@ from django.db import transaction
 from django.db.models import OuterRef, Subquery
 
 from calibration import scheduling
-from calibration.canonical import canonical, chain_hash
-from calibration.content import (
+from calibration.models import ChainHead, Reading, Record, Run, RunFigures, Signature, StandardUse, Test
+from calibration.queries.naming import Names
+from calibration.records.canonical import canonical, chain_hash
+from calibration.records.content import (
     ReadingContent,
     RecordContent,
     RunContent,
@@ -25,10 +27,8 @@ from calibration.content import (
     record_object,
     signature_object,
 )
-from calibration.judging import JudgedRun, judge
-from calibration.models import ChainHead, Reading, Record, Run, RunFigures, Signature, StandardUse, Test
-from calibration.naming import Names
-from calibration.reckoning import figures_row, reading_row, summarise, verdicts_of
+from calibration.records.judging import JudgedRun, judge
+from calibration.records.reckoning import figures_row, reading_row, summarise, verdicts_of
 from register.auditing import Act
 from register.models import Plant, Tag
 

@@ -6,9 +6,9 @@ import datetime
 import uuid
 from collections.abc import Iterator
 
-from calibration.basis import Basis
-from calibration.choosing import exception_field
 from calibration.models import Entry, Reading, Record, Run, Sheet, StandardUse
+from calibration.queries.choosing import exception_field
+from calibration.records.basis import Basis
 from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, NOT_ADJUSTED, REMARKS, reading
 from register.models import User
 

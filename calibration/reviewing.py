@@ -7,9 +7,9 @@ from django.db import transaction
 from django.utils import timezone
 
 from calibration import scheduling
-from calibration.content import SignatureContent
 from calibration.models import Entry, Record, Signature, Test
 from calibration.recording import write_signature
+from calibration.records.content import SignatureContent
 from calibration.sheet_fields import PRESENT
 from register.auditing import Act, Actor, snapshot
 from register.models import Tag, User

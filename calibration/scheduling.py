@@ -1,7 +1,7 @@
 """Sets what tags ask of their tests, defers dates, and keeps the standings from which lists are read.
 
 A requirement changes by adding a row from a date on: in force at once, or planned until `apply_planned` finds
-that its day has come. Standings are worked out by `calibration.standings` and stored in the transaction of the act
+that its day has come. Standings are worked out by `calibration.queries.standings` and stored in the transaction of the act
 that changes them.
 """
 
@@ -14,8 +14,8 @@ from typing import Any, Final
 from django.core.exceptions import ValidationError
 from django.db import transaction
 
-from calibration import standings
 from calibration.models import Deferral, Requirement, SearchWord, Standing, ToleranceForm
+from calibration.queries import standings
 from register.auditing import Act, Actor, snapshot
 from register.bulk import among, columns_of, insert, values_of
 from register.changes import object_to_backdating

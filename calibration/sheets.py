@@ -12,9 +12,9 @@ from django.core.exceptions import ValidationError
 from django.db import transaction
 from django.utils import timezone
 
-from calibration.choosing import candidates, exception_field, number_of, part_words, unfit
-from calibration.drafts import Draft
 from calibration.models import Run, Sheet, Standard
+from calibration.queries.choosing import candidates, exception_field, number_of, part_words, unfit
+from calibration.queries.drafts import Draft
 from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, ENDED, KINDS, NOT_ADJUSTED, ORDER, PARTS, label
 from calibration.storing_entries import locked, store
 from register import access
@@ -296,7 +296,7 @@ def _answered(draft: Draft, part: str, prefix: str) -> None:
 
 
 def _reading_problem(draft: Draft, name: str, text: str) -> dict[str, str]:
-    from calibration.judging import measured_in_ma
+    from calibration.records.judging import measured_in_ma
 
     try:
         measured_in_ma(text, "mA", draft.basis)

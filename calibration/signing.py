@@ -15,13 +15,13 @@ from django.core.exceptions import ValidationError
 from django.db import transaction
 from django.utils import timezone
 
-from calibration.choosing import exception_field, number_of
-from calibration.content import RecordContent, SignatureContent, UseContent
-from calibration.drafts import Draft
-from calibration.entries import when
 from calibration.models import Record, Run, Sheet, Signature, Standard, Test
 from calibration.opening import current_requirement
+from calibration.queries.choosing import exception_field, number_of
+from calibration.queries.drafts import Draft
+from calibration.queries.entries import when
 from calibration.recording import write_record
+from calibration.records.content import RecordContent, SignatureContent, UseContent
 from calibration.reopening import placed
 from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, PARTS, PRESENT, REMARKS, label
 from calibration.storing_entries import locked

@@ -10,9 +10,9 @@ from dataclasses import dataclass, field
 from django.db import transaction
 from django.utils import timezone
 
-from calibration.drafts import Draft
-from calibration.entries import NewEntry
 from calibration.models import Entry, Run, Sheet
+from calibration.queries.drafts import Draft
+from calibration.queries.entries import NewEntry
 from calibration.sheet_fields import label, reading_of, refusal
 from register.auditing import Actor
 from register.models import User

@@ -48,10 +48,10 @@ class Section:
 
 
 SECTIONS: Final = (
-    Section("Register", "register", "read", ("tag", "range", "flag", "import")),
+    Section("Register", "register", "read", ("tag", "range", "flag", "import-register", "import-requirements")),
     Section("Due", "due-list", "read", ("requirement", "deferral")),
     Section("Sheets", "sheets", "read", ("sheet",)),
-    Section("Tests", "tests", "read", ("test",)),
+    Section("Tests", "tests", "read", ("test", "import-tests")),
     Section("Transmitters", "transmitters", "read", ("transmitter", "intervention")),
     Section("Types and heads", "types", "read", ("type", "head", "maker")),
     Section("Standards", "standards", "read", ("standard", "certificate")),

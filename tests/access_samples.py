@@ -167,6 +167,11 @@ TAG, TRANSMITTER, SHEET, TEST = _of("tag"), _of("transmitter"), _of("sheet"), _o
 PLANT = Sample(lambda world: {"code": world.plant.code})
 PERSON = Sample(lambda world: {"pk": world.cast.planner.pk})
 
+
+def _brought(kind: str) -> Sample:
+    return Sample(lambda world: {"token": _token(kind)})
+
+
 SAMPLES: Final[dict[str, Sample]] = {
     "person": PERSON,
     "person-edit": PERSON,
@@ -251,7 +256,7 @@ def every_url() -> Iterator[URLPattern]:
 
 SAMPLES.update(
     {
-        f"import-{kind}-{step}": Sample(lambda world, kind=kind: {"token": _token(kind)})
+        f"import-{kind}-{step}": _brought(kind)
         for kind in (list(every_url()) and KINDS)  # the urls fill in which imports there are
         for step in ("match", "check", "bring-in", "bad-rows")
     }

@@ -38,14 +38,14 @@ SPEAK_SQL = {
     "register.backing_up": "copies tables as they are",
     "register.restoring": "fills tables as they were",
     "register.bulk": "many plain rows at once for an act",
-    "calibration.listing": "reads on with what the ORM compiled",
+    "calibration.queries.listing": "compiling the statements of lists took several times longer than answering them",
 }
 #: Modules that write without leaving audit entries, and why nothing is missing in the trail.
 LEAVE_NO_ENTRY = {
     "register.auditing": "writes the entries",
     "register.storing": "one row for an act, which notes it",
     "register.bulk": "many rows for an act, which notes them",
-    "calibration.standings": "worked out again from what acts note",
+    "calibration.queries.standings": "worked out again from what acts note",
     "calibration.recomputing": "worked out again from frozen readings",
     "calibration.storing_entries": "entries of a sheet are frozen and name their person: they are a trail themselves",
 }
@@ -149,6 +149,16 @@ def test_the_top_level_holds_what_the_plan_lists() -> None:
 def test_no_room_is_named_for_anything_at_all() -> None:
     vague = {"services", "utils", "util", "helpers", "common", "misc", "signals", "managers"}
     assert [name for name in modules() if vague & set(name.split("."))] == []
+
+
+def test_reads_records_and_drawing_stand_below_pages() -> None:
+    below = ("calibration.queries.", "calibration.records.", "calibration.drawing.")
+    barred = ("calibration.contexts", "calibration.views", "calibration.forms", "register.views", "register.forms")
+    reads = [module for module in modules().values() if module.name.startswith(below)]
+    contexts = [module for module in modules().values() if module.name.startswith("calibration.contexts.")]
+    assert len(reads) > 10 and len(contexts) > 5
+    assert offenders(reads, barred) == []
+    assert offenders(contexts, ("calibration.views", "register.views", "calibration.forms")) == []
 
 
 def test_the_register_never_imports_calibration() -> None:

@@ -19,6 +19,10 @@ from django.db.models import Count, Q
 from pytest_django import DjangoDbBlocker
 
 from calibration.demonstrating import Loaded, NotEmptyError, load
+from calibration.importing_requirements import import_requirements
+from calibration.imports import requirement_columns, test_columns
+from calibration.imports.past_tests import propose as propose_tests
+from calibration.imports.requirements import propose as propose_requirements
 from calibration.metrology.due import plan_next
 from calibration.models import (
     Certificate,
@@ -33,6 +37,7 @@ from calibration.models import (
     Standing,
     Test,
 )
+from calibration.transcribing import import_tests
 from fixtures.demonstration.equipment import FOUND_HIGH, KNOCKED
 from fixtures.demonstration.generate import DATA, generate
 from fixtures.demonstration.people import JETTY, PASSWORD, PEOPLE, WORKS
@@ -423,6 +428,29 @@ def test_the_example_with_mistakes_is_refused_row_by_row(works: Any) -> None:
     found, _ = proposal("register_with_mistakes.csv", works)
     assert {complaint.line for complaint in found.complaints} == set(range(3, 11))
     assert found.bad_rows == 8
+
+
+def test_requirements_and_past_tests_follow_the_example_register(works: Any) -> None:
+    by = Actor(None)
+    with transaction.atomic():
+        found, terms = proposal("register.csv", works)
+        import_register(by=by, reason="example", seen=found.digest(), **terms)
+        for name, propose_kind, act, columns, count in (
+            ("requirements.csv", propose_requirements, import_requirements, requirement_columns.COLUMNS, 10),
+            ("past_tests.csv", propose_tests, import_tests, test_columns.COLUMNS, 7),
+            ("past_tests_semicolons.csv", propose_tests, import_tests, test_columns.COLUMNS, 0),
+        ):
+            table = read_table((EXAMPLES / name).read_bytes(), name)
+            matching = guessed(table.head, columns)
+            assert len(matching) == len(table.head), name
+            seen = propose_kind(plant=works, table=table, matching=matching, today=works.today())
+            assert list(seen.complaints) == [], name
+            act(by=by, reason="example", plant=works, table=table, matching=matching, seen=seen.digest())
+            again = propose_kind(plant=works, table=table, matching=matching, today=works.today())
+            assert again.unchanged == (count or 7), name
+        assert Test.objects.filter(tag__number="PT-6012", state=Test.State.TRANSCRIBED).count() == 2
+        assert Tag.objects.get(plant=works, number="PT-6012").standing.interval_months == 12
+        transaction.set_rollback(True)
 
 
 def test_a_second_loading_is_refused(loaded: Loaded) -> None:

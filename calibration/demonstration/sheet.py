@@ -10,9 +10,9 @@ from typing import Any, Final
 from django.utils import timezone
 
 from calibration import sheets
-from calibration.entries import NewEntry
 from calibration.models import Run, Standard
 from calibration.opening import open_sheet
+from calibration.queries.entries import NewEntry
 from calibration.storing_entries import add_entries
 from register.auditing import Actor
 from register.models import Tag

@@ -8,10 +8,10 @@ from dataclasses import dataclass, replace
 from typing import Any
 from zoneinfo import ZoneInfo
 
-from calibration.basis import Basis
-from calibration.content import ReadingContent, RecordContent, RunContent, SignatureContent, UseContent
 from calibration.models import Certificate, GuidanceLine, PointList, Requirement, Signature, Standard, Test
 from calibration.opening import guidance_lines, terms_at, terms_on_the_bench
+from calibration.records.basis import Basis
+from calibration.records.content import ReadingContent, RecordContent, RunContent, SignatureContent, UseContent
 from register.models import Fitting, Intervention, MeasuringHead, Plant, Range, Tag, Transmitter, User
 
 LATE = datetime.date.max

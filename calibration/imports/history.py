@@ -8,8 +8,8 @@ from collections.abc import Collection, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any, Final
 
-from calibration.choosing import BY_PART
 from calibration.models import Certificate, PointList, Requirement, Standard
+from calibration.queries.choosing import BY_PART
 from register.imports.known import folded
 from register.models import Fitting, Intervention, MeasuringHead, Plant, Range, Tag, Transmitter
 from register.searching import SearchKey, key

@@ -11,16 +11,16 @@ from dataclasses import dataclass, field, replace
 from typing import Any, Final
 from zoneinfo import ZoneInfo
 
-from calibration.basis import Basis
-from calibration.content import ReadingContent, RecordContent, RunContent, UseContent
 from calibration.imports.history import History, fits, read
 from calibration.imports.names import Tags
 from calibration.imports.terms import terms_of
 from calibration.imports.test_columns import COLUMNS, Moment
 from calibration.imports.visits import KINDS, Visit, directions, gathered
-from calibration.judging import applied_in_range_unit, judge, measured_in_ma
 from calibration.models import Reading, Requirement, Standard, Test
-from calibration.reckoning import reading_row
+from calibration.records.basis import Basis
+from calibration.records.content import ReadingContent, RecordContent, RunContent, UseContent
+from calibration.records.judging import applied_in_range_unit, judge, measured_in_ma
+from calibration.records.reckoning import reading_row
 from register.bulk import many_objects_alive
 from register.imports.cells import unknown
 from register.imports.columns import Cells, Complaint, Matching, read_cells

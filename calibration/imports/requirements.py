@@ -116,8 +116,11 @@ def _there(tags: Iterable[Tag]) -> dict[int, list[Requirement]]:
 def _propose(draft: _Draft, row: int) -> None:
     cells = draft.cells
     number = cells.values["tag"][row]
+    given = {name: value for name in OF_REQUIREMENT if (value := cells.values[name][row]) is not None}
     if number is None:
-        cells.complain(row, "tag", "Which tag is meant? Its number is missing.")
+        # A transmitter in stores, in a file that is a register as well, asks for nothing.
+        if given:
+            cells.complain(row, "tag", "Which tag is meant? Its number is missing.")
         return
     tag = draft.tags.rows.get(key(number))
     if tag is None:
@@ -127,7 +130,6 @@ def _propose(draft: _Draft, row: int) -> None:
         cells.complain(row, "tag", f"{number} stands in {cells.table.counted_in} {draft.seen[tag.pk]} already.")
         return
     draft.seen[tag.pk] = cells.table.lines[row]
-    given = {name: value for name in OF_REQUIREMENT if (value := cells.values[name][row]) is not None}
     if not given:
         draft.unchanged += 1
         return

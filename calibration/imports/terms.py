@@ -4,11 +4,11 @@ from __future__ import annotations
 
 from typing import Any
 
-from calibration.basis import Basis, StatedTolerance
 from calibration.imports.history import History, last
 from calibration.imports.test_columns import OF_RANGE, OF_TOLERANCE
 from calibration.imports.visits import Visit
 from calibration.models import Requirement, ToleranceForm
+from calibration.records.basis import Basis, StatedTolerance
 from register.imports.columns import Cells
 from register.models import Fitting, MeasuringHead, Range, Transmitter
 

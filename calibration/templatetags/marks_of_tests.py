@@ -1,10 +1,10 @@
-"""The error, due and drift marks as template tags, with the arguments of `calibration.marks`."""
+"""The error, due and drift marks as template tags, with the arguments of `calibration.drawing.marks`."""
 
 from __future__ import annotations
 
 from django import template
 
-from calibration import marks
+from calibration.drawing import marks
 
 register = template.Library()
 register.simple_tag(marks.error_mark)

@@ -9,9 +9,10 @@ from django.http import HttpRequest, HttpResponse
 from django.http.response import HttpResponseBase
 from django.views.decorators.http import require_GET, require_POST
 
-from calibration import listing, rows
-from calibration.listing import Asked
+from calibration.contexts import rows
 from calibration.models import ScheduleState
+from calibration.queries import listing
+from calibration.queries.listing import Asked
 from calibration.views import lists
 from register import access
 from register.fragments import answer

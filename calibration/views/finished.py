@@ -14,11 +14,12 @@ from django.http.response import HttpResponseBase
 from django.shortcuts import redirect, render
 from django.views.decorators.http import require_GET
 
-from calibration import reviewing, test_page
-from calibration.choosing import number_of
+from calibration import reviewing
+from calibration.contexts import test as test_page
 from calibration.forms.sheets import ReviewForm, SendBackForm
 from calibration.models import Record, Sheet, Test
 from calibration.passwords import confirmed
+from calibration.queries.choosing import number_of
 from register import access, exporting
 from register.auditing import Actor
 

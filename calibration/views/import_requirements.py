@@ -7,6 +7,8 @@ from typing import Final
 from calibration.importing_requirements import import_requirements
 from calibration.imports.requirement_columns import COLUMNS
 from calibration.imports.requirements import Proposal, Wanted, propose
+from calibration.models import Requirement
+from calibration.records.basis import StatedTolerance
 from register.imports.kinds import Kind, Told
 
 
@@ -34,20 +36,21 @@ def _line(one: Wanted) -> tuple[str, ...]:
     return (
         str(one.line),
         str(held.tag),
-        _figures(held.mpe_percent, held.mpe_input, held.input_unit, held.get_mpe_form_display()),
-        _figures(held.as_left_percent, held.as_left_input, held.input_unit, ""),
+        _words(held, held.mpe_percent, held.mpe_input),
+        _words(held, held.as_left_percent, held.as_left_input),
         f"{held.interval_months} months",
         held.point_list.name,
         str(held.effective_from),
     )
 
 
-def _figures(percent: str, amount: str, unit: str, form: str) -> str:
+def _words(held: Requirement, percent: str, amount: str) -> str:
     from register.engineering.units import label
 
-    given = [f"{percent} %" if percent else "", f"{amount} {label(unit)}" if amount else ""]
-    said = " and ".join(part for part in given if part)
-    return f"{said}: {form}" if said and form else said
+    if not (percent or amount):
+        return ""
+    unit = held.input_unit or "bar"
+    return StatedTolerance(held.mpe_form, percent, amount, held.input_unit).in_unit(unit).words(label(unit))
 
 
 REQUIREMENTS: Final = Kind(

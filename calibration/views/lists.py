@@ -13,10 +13,11 @@ from django.http.response import HttpResponseBase
 from django.urls import reverse
 from django.utils.safestring import SafeString
 
-from calibration import listing, rows
-from calibration.listing import Asked, Page
+from calibration.contexts import rows
 from calibration.models import ScheduleState, Verdict
 from calibration.models.standing import schedule_state
+from calibration.queries import listing
+from calibration.queries.listing import Asked, Page
 from register import exporting
 from register.auditing import Actor
 from register.models import Criticality, Plant

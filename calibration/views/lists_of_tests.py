@@ -10,11 +10,11 @@ from django.http import HttpRequest, HttpResponse
 from django.utils.safestring import SafeString
 from django.views.decorators.http import require_GET
 
+from calibration.contexts.test import CSS
+from calibration.drawing.marks import error_mark
 from calibration.forms.lists_of_tests import SheetsFilter, TestsFilter
-from calibration.marks import error_mark
 from calibration.models import Sheet, Test
 from calibration.sheet_fields import ENDED
-from calibration.test_page import CSS
 from register import access
 from register.figures import signed
 from register.fragments import answer
@@ -46,7 +46,12 @@ def tests(request: HttpRequest) -> HttpResponse:
     form.is_valid()
     rows = _tests(plant, form.cleaned_data).select_related("tag", "transmitter__maker")
     page = page_of(request, rows, order=("-tested_on", "-id"), what="tests")
-    context = {"form": form, "lines": [_line(test) for test in page.rows], "paging": page}
+    context = {
+        "form": form,
+        "lines": [_line(test) for test in page.rows],
+        "paging": page,
+        "may_import": access.allowed(request, plant.pk, "import"),
+    }
     return answer(request, "calibration/tests.html", "rows", context)
 
 

@@ -8,7 +8,8 @@ from django.http import HttpRequest, HttpResponse
 from django.http.response import HttpResponseBase
 from django.views.decorators.http import require_GET, require_POST
 
-from calibration import listing, rows
+from calibration.contexts import rows
+from calibration.queries import listing
 from calibration.views import lists
 from register import access
 from register.fragments import answer

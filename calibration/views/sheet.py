@@ -11,12 +11,13 @@ from django.shortcuts import redirect, render
 from django.utils import timezone
 from django.views.decorators.http import require_POST
 
-from calibration import sheet_page, sheets, signing
+from calibration import sheets, signing
 from calibration.arriving import entries_from_json, readable
-from calibration.drafts import Draft
+from calibration.contexts import sheet as sheet_page
 from calibration.forms.sheets import SignForm
 from calibration.models import Run, Sheet, Test
 from calibration.passwords import confirmed
+from calibration.queries.drafts import Draft
 from calibration.sheet_fields import ENDED
 from calibration.storing_entries import add_entries, typed_in_form
 from calibration.views.sheet_contexts import stage_context

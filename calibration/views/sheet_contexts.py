@@ -5,10 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from typing import Any
 
-from calibration.drafts import Draft
-from calibration.models import Run, Sheet
-from calibration.sheet_fields import KINDS
-from calibration.sheet_page import (
+from calibration.contexts.sheet import (
     Viewer,
     field_view,
     line_views,
@@ -18,6 +15,9 @@ from calibration.sheet_page import (
     standard_views,
     verdict_words,
 )
+from calibration.models import Run, Sheet
+from calibration.queries.drafts import Draft
+from calibration.sheet_fields import KINDS
 
 Stage = Sheet.Stage
 

@@ -13,12 +13,12 @@ from django.utils import timezone
 from django.views.decorators.http import require_POST
 
 from calibration import sheets
-from calibration.choosing import candidates
-from calibration.drafts import Draft
-from calibration.entries import NewEntry
 from calibration.forms.sheets import ExceptionForm, ReasonForm
 from calibration.models import Standard
 from calibration.passwords import named
+from calibration.queries.choosing import candidates
+from calibration.queries.drafts import Draft
+from calibration.queries.entries import NewEntry
 from calibration.sheet_fields import label
 from calibration.storing_entries import add_entries, uuid_of
 from calibration.views.sheet import SHEETS, keep_form

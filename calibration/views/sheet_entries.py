@@ -14,12 +14,12 @@ from django.utils import timezone
 from django.utils.dateparse import parse_datetime
 from django.views.decorators.http import require_GET
 
-from calibration import sheet_page
 from calibration.arriving import entries_from_json, entry_from_form
-from calibration.drafts import Draft, far_from, readable
-from calibration.entries import NewEntry
+from calibration.contexts import sheet as sheet_page
+from calibration.contexts.results import result_now
 from calibration.models import Sheet, Standard
-from calibration.results import result_now
+from calibration.queries.drafts import Draft, far_from, readable
+from calibration.queries.entries import NewEntry
 from calibration.sheet_fields import KINDS, PRESENT, label, reading, reading_of
 from calibration.storing_entries import Stored, add_entries
 from calibration.views.sheet import SHEETS

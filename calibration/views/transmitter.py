@@ -10,10 +10,12 @@ from django.http.response import HttpResponseBase
 from django.urls import reverse
 from django.views.decorators.http import require_GET, require_POST
 
-from calibration import drift_page, drifting, transmitter_page
-from calibration.drift_page import DriftView
-from calibration.drifting import History
+from calibration.contexts import drift as drift_page
+from calibration.contexts import transmitter as transmitter_page
+from calibration.contexts.drift import DriftView
 from calibration.models import Standing
+from calibration.queries import drifting
+from calibration.queries.drifting import History
 from register import access, exporting
 from register.auditing import Actor
 from register.fragments import answer, wants_part

@@ -106,7 +106,7 @@ class MatchingForm(RegisterForm):
 class BringInForm(RegisterForm):
     """The word to bring a checked file in, with the reason that stays with every entry."""
 
-    reason = ReasonField(help_text="Such as: register of the old list, first taken over in May.")
+    reason = ReasonField(help_text="Such as: taken over from the old list.")
 
 
 def _name(place: int) -> str:

@@ -46,7 +46,7 @@ class Kind:
     """One import.
 
     `needed` holds sets of columns of which one must be matched whole. `then` names an import that may take other
-    columns of the same file, `done` the page on which to go on.
+    columns of the same file, `done` the page on which to go on, `takes_out` the one that gives out the same columns.
     """
 
     name: str
@@ -60,6 +60,7 @@ class Kind:
     done: str
     says: Sequence[str] = ()
     then: str = ""
+    takes_out: str = ""
 
     def lacking(self, matching: Matching) -> str:
         """What must be matched before the file can be checked, in a sentence; empty where nothing lacks."""

@@ -79,6 +79,7 @@ REGISTER: Final = Kind(
         "Makers, types and heads must be known already: their limits are what every range is checked against.",
     ),
     then="requirements",
+    takes_out="import-register-export",
 )
 
 

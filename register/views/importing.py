@@ -50,7 +50,8 @@ def upload(kind: Kind, request: HttpRequest) -> HttpResponse:
     if form.is_valid():
         kept = uploads.keep(access.person(request), kind.name, plant, form.cleaned_data["file"], form.data_of_file)
         return redirect(f"import-{kind.name}-match", kept.token)
-    context = {"kind": kind, "plant": plant, "form": form, "groups": grouped(kind.columns)}
+    others = [other for other in KINDS.values() if other is not kind]
+    context = {"kind": kind, "plant": plant, "form": form, "groups": grouped(kind.columns), "others": others}
     return render(request, "register/import.html", context)
 
 

@@ -96,3 +96,9 @@ DUE: Final = [
     ),
     _middle("/due/"),
 ]
+#: Lists for which nobody set an aim.
+OTHERS: Final = [
+    *_each("/tests/", {}, {"verdict": "fail"}),
+    *_each("/transmitters/", {}, {"text": "Q00"}),
+    *_each("/audit/", {}),
+]

@@ -8,7 +8,7 @@ from statistics import median
 from typing import Final
 
 from tests.benchmarks import processes
-from tests.benchmarks.addresses import DUE, REGISTER, Listed
+from tests.benchmarks.addresses import DUE, OTHERS, REGISTER, Listed
 from tests.benchmarks.client import Answer, Browser, started
 from tests.benchmarks.report import Aim, Table, megabytes, milliseconds, times
 
@@ -40,7 +40,7 @@ def measure(many: Mapping[str, str], few: Mapping[str, str], *, tags: int, few_t
             _round(sites)
         tables = [
             _table(title, listed, sites, tags, few_tags, rounds)
-            for title, listed in (("Register list", REGISTER), ("Due list", DUE))
+            for title, listed in (("Register list", REGISTER), ("Due list", DUE), ("Other lists", OTHERS))
         ]
         tables[-1].remarks.append(
             f"Peak memory of the largest process that serves: {megabytes(_largest(many_pid))} with {tags:,} tags, "
@@ -56,7 +56,7 @@ class _Site:
 
     def __init__(self, browser: Browser, middle: int) -> None:
         self.browser = browser
-        self.addresses = {listed: self._found(listed, middle) for listed in (*REGISTER, *DUE)}
+        self.addresses = {listed: self._found(listed, middle) for listed in (*REGISTER, *DUE, *OTHERS)}
         self.rows = {listed: self._get(address).rows for listed, address in self.addresses.items()}
         self.bare: list[float] = []
         self.times: dict[Listed, list[float]] = {listed: [] for listed in self.addresses}
@@ -127,6 +127,8 @@ def _table(
         f"Medians of {rounds} requests an address over one open connection to one process of `manage.py start`, in "
         "turn on both sites; a ratio in brackets compares pages with different numbers of rows and does not count."
     )
+    if listed is OTHERS:
+        return table
     table.aims = [
         Aim(f"{title}, slowest of {len(listed)} addresses, against a bare page", max(against_bare), AGAINST_BARE),
         Aim(f"{title}, median of the addresses, against a bare page", median(against_bare), AGAINST_BARE),

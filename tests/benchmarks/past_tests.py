@@ -12,12 +12,12 @@ import numpy as np
 from django.db import transaction
 from numpy.typing import NDArray
 
-from calibration.basis import Basis
-from calibration.canonical import canonical, chain_hash
-from calibration.content import ReadingContent, RecordContent, RunContent, SignatureContent, record_object
-from calibration.judging import METHOD_VERSION
 from calibration.models import ChainHead, Record, Run, RunFigures, Test
 from calibration.recording import write_records
+from calibration.records.basis import Basis
+from calibration.records.canonical import canonical, chain_hash
+from calibration.records.content import ReadingContent, RecordContent, RunContent, SignatureContent, record_object
+from calibration.records.judging import METHOD_VERSION
 from register.auditing import Act, Actor
 from register.models import Plant, Tag, User
 from tests.benchmarks.invented import INTERVAL, SEED, Built, Plan

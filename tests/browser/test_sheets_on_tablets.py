@@ -9,9 +9,9 @@ import pytest
 from playwright.sync_api import Browser, BrowserContext, Page, expect, sync_playwright
 from pytest_django.live_server_helper import LiveServer
 
-from calibration.drafts import Draft
 from calibration.models import Entry, Sheet, Test
 from calibration.provision import provide_defaults
+from calibration.queries.drafts import Draft
 from register.auditing import Actor
 from tests import cast as people
 from tests.calibration.at_work import Device, opened, to_as_found, to_signature

@@ -11,10 +11,10 @@ from dataclasses import dataclass
 from django.utils import timezone
 
 from calibration import sheets, signing
-from calibration.drafts import Draft
-from calibration.entries import NewEntry
 from calibration.models import Record, Sheet, Standard
 from calibration.opening import open_sheet
+from calibration.queries.drafts import Draft
+from calibration.queries.entries import NewEntry
 from calibration.storing_entries import Stored, add_entries
 from register.auditing import Actor
 from register.models import Tag, User

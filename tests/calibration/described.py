@@ -5,8 +5,8 @@ from __future__ import annotations
 import datetime
 from typing import Any
 
-from calibration.basis import Basis
 from calibration.recording import ReadingContent, RecordContent, RunContent, SignatureContent
+from calibration.records.basis import Basis
 from register.models import Tag, User
 
 NINE = (0, 25, 50, 75, 100, 75, 50, 25, 0)

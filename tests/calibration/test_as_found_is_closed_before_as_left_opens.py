@@ -71,7 +71,7 @@ def test_a_repeated_reading_counts_beside_the_first(tablet: Device) -> None:
     to_as_found(tablet)
     tablet.type(run_texts("as-found") | {"as-found.3-1.applied": "5", "as-found.3-1.measured": "12.2"})
     sheets.close_as_found(by=tablet.by, sheet_id=tablet.sheet.pk)
-    from calibration.drafts import Draft
+    from calibration.queries.drafts import Draft
 
     run = Draft(Sheet.objects.get()).runs["as-found"]
     assert [row.key for row in run.readings][2:4] == ["3", "3-1"]

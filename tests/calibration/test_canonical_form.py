@@ -12,7 +12,7 @@ import rfc8785
 from hypothesis import given
 from hypothesis import strategies as st
 
-from calibration.canonical import CanonicalError, canonical, chain_hash, moment, plain
+from calibration.records.canonical import CanonicalError, canonical, chain_hash, moment, plain
 
 # RFC 8785 section 3.2.3, the example of sorting by UTF-16 code units: properties in the order expected there.
 SORTED = [

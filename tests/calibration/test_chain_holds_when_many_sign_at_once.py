@@ -13,7 +13,7 @@ import pytest
 from django.db import connections
 
 from calibration.models import ChainHead, Record
-from calibration.verifying import Checked, verify
+from calibration.queries.verifying import Checked, verify
 from tests import cast as people
 from tests.calibration.signing_at_once import work
 

@@ -12,8 +12,8 @@ from typing import Any
 import pytest
 from django.conf import settings
 
-from calibration.charts import BandPoint, DriftEvent, ErrorPoint, drift_plot, error_plot
-from calibration.inline_svg import ROLES
+from calibration.drawing.charts import BandPoint, DriftEvent, ErrorPoint, drift_plot, error_plot
+from calibration.drawing.inline_svg import ROLES
 from tests.drawing import fits_the_policy, parsed, tagged
 
 POINTS = (0.0, 62.5, 125.0, 187.5, 250.0, 187.5, 125.0, 62.5, 0.0)
@@ -186,5 +186,5 @@ def test_drift_curve_is_not_joined_across_a_break() -> None:
 
 
 def test_importing_the_charts_does_not_import_matplotlib() -> None:
-    code = "import sys, calibration.charts; sys.exit('matplotlib' in sys.modules or 'numpy' in sys.modules)"
+    code = "import sys, calibration.drawing.charts; sys.exit('matplotlib' in sys.modules or 'numpy' in sys.modules)"
     assert subprocess.run([sys.executable, "-c", code], check=False).returncode == 0

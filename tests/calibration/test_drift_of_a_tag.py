@@ -13,12 +13,13 @@ import pytest
 from django.db import connection
 from django.test.utils import CaptureQueriesContext
 
-from calibration import drift_page, drifting
-from calibration.basis import Basis
+from calibration.contexts import drift as drift_page
 from calibration.metrology.pairing import Break
 from calibration.models import Record, Test
 from calibration.opening import current_requirement
+from calibration.queries import drifting
 from calibration.recording import RunContent
+from calibration.records.basis import Basis
 from register import fitting, intervening
 from register.auditing import Actor
 from register.models import Tag

@@ -16,10 +16,10 @@ from typing import Any
 
 import pytest
 
-from calibration import listing, standings
-from calibration.listing import Asked
 from calibration.models import ScheduleState, SearchWord, Standing
 from calibration.models.standing import NO_DATE
+from calibration.queries import listing, standings
+from calibration.queries.listing import Asked
 from register.models import Area, Plant, Tag
 from tests import cast as people
 
@@ -134,18 +134,25 @@ ALONE: list[dict[str, Any]] = [
     *({"verdict": verdict} for verdict in ("pass", "fail", "none")),
     {"area": "30~x"},
     {"criticality": "safety"},
-    *({"text": text} for text in ("feed", "feeder", "feed water", "ft", "FT-7", "pt 1", "steam nothing")),
+    *(
+        {"text": text}
+        for text in ("feed", "feeder", "feed water", "ft", "FT-7", "pt 1", "steam drum f", "steam nothing")
+    ),
 ]
 
 
-@pytest.mark.parametrize(("ceiling", "examined"), [(1000, 4000), (5, 4000), (5, 20), (0, 5)])
+@pytest.mark.parametrize(
+    ("ceiling", "examined", "farthest"), [(1000, 4000, 20000), (5, 4000, 20000), (5, 20, 20), (0, 5, 20000), (0, 5, 0)]
+)
 def test_every_row_is_met_once_on_the_way_there_and_back(
-    plant: Plant, monkeypatch: pytest.MonkeyPatch, ceiling: int, examined: int
+    plant: Plant, monkeypatch: pytest.MonkeyPatch, ceiling: int, examined: int, farthest: int
 ) -> None:
     monkeypatch.setattr(listing, "PAGE", 7)
     monkeypatch.setattr(listing, "CEILING", ceiling)
     monkeypatch.setattr(listing, "EXAMINED", examined)
     monkeypatch.setattr(listing, "EXAMINED_FOR_WORDS", examined)
+    monkeypatch.setattr(listing, "FARTHEST", farthest)
+    monkeypatch.setattr(listing, "FARTHEST_FOR_WORDS", farthest)
     draw = random.Random(ceiling * 10000 + examined)
     together = [draw.choice(ALONE) | draw.choice(ALONE) | draw.choice(ALONE) for _ in range(25)]
     for filters, sort in itertools.chain(

@@ -11,7 +11,7 @@ from datetime import date, timedelta
 import pytest
 from django.template import Context, Template
 
-from calibration.marks import TODAY_PLACE, drift_mark, due_mark, error_bar, error_mark
+from calibration.drawing.marks import TODAY_PLACE, drift_mark, due_mark, error_bar, error_mark
 from tests.drawing import classed, fits_the_policy, parsed, starts, tagged, title
 
 TODAY = date(2026, 3, 21)

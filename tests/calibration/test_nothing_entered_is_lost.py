@@ -8,8 +8,8 @@ import uuid
 import pytest
 from django.db import DatabaseError, transaction
 
-from calibration.drafts import Draft
 from calibration.models import Entry, Sheet
+from calibration.queries.drafts import Draft
 from tests.calibration.at_work import Device, run_texts, to_as_found
 
 

@@ -12,8 +12,8 @@ from django.test import Client
 from django.urls import reverse
 from django.utils import timezone
 
-from calibration.drafts import Draft
 from calibration.models import Entry, Record, Sheet, Test
+from calibration.queries.drafts import Draft
 from tests import cast as people
 from tests.calibration.at_work import Device, run_texts, signed, standards_of, to_as_found, to_signature
 

@@ -9,9 +9,9 @@ import pytest
 from django.db import connection, transaction
 from django.test.utils import CaptureQueriesContext
 
-from calibration.canonical import chain_hash
 from calibration.models import ChainHead, Reading, Record, RunFigures, Signature, Test
 from calibration.recording import write_record, write_records
+from calibration.records.canonical import chain_hash
 from register.auditing import Act, Actor
 from register.models import AuditEntry
 from tests import cast as people

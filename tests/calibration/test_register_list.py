@@ -15,7 +15,8 @@ from django.test import Client
 from django.test.utils import CaptureQueriesContext
 from django.urls import reverse
 
-from calibration import listing, scheduling
+from calibration import scheduling
+from calibration.queries import listing
 from register import flagging
 from register.models import AuditEntry, Tag, User
 from tests import cast as people

@@ -9,12 +9,12 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from calibration.basis import Basis, StatedTolerance
-from calibration.drafts import Draft
-from calibration.judging import Point, judge, judge_one
+from calibration.contexts.results import result_now, result_of
+from calibration.contexts.sheet import Viewer, reading_views, verdict_words
 from calibration.models import RunFigures, Sheet
-from calibration.results import result_now, result_of
-from calibration.sheet_page import Viewer, reading_views, verdict_words
+from calibration.queries.drafts import Draft
+from calibration.records.basis import Basis, StatedTolerance
+from calibration.records.judging import Point, judge, judge_one
 from tests.calibration.at_work import Device, run_texts, to_as_found, to_signature
 
 BASIS = Basis(

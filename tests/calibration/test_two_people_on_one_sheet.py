@@ -6,9 +6,9 @@ import pytest
 from django.core.exceptions import ValidationError
 
 from calibration import sheets
-from calibration.drafts import Draft
-from calibration.entries import Field
 from calibration.models import Sheet
+from calibration.queries.drafts import Draft
+from calibration.queries.entries import Field
 from tests import cast as people
 from tests.calibration.at_work import Device, run_texts, to_as_found
 

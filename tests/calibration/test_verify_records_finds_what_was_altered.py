@@ -75,7 +75,7 @@ def test_altered_content_breaks_its_own_hash_and_every_other_part_is_still_read(
 
 
 def test_a_record_forged_with_a_fitting_hash_breaks_the_link_after_it(three: list[Record], unguarded: None) -> None:
-    from calibration.canonical import chain_hash
+    from calibration.records.canonical import chain_hash
 
     content = three[0].content.replace('"measured":"4.0000"', '"measured":"4.0001"')
     forged = chain_hash(three[0].previous_hash, content)

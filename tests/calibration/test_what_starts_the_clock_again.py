@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import pytest
 
-from calibration import drifting, scheduling
+from calibration import scheduling
 from calibration.models import ScheduleState, Standing, Test
+from calibration.queries import drifting
 from calibration.recording import ReadingContent, RunContent
 from register import fitting, intervening, reranging
 from register.auditing import Actor

@@ -7,7 +7,7 @@ from typing import Any
 
 from django.core.management.base import BaseCommand, CommandError
 
-from calibration.verifying import Checked, verify
+from calibration.queries.verifying import Checked, verify
 from register.models import Plant
 
 

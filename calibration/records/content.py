@@ -8,8 +8,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
-from calibration.basis import Basis
-from calibration.canonical import plain
+from calibration.records.basis import Basis
+from calibration.records.canonical import plain
 
 
 @dataclass(frozen=True, slots=True)

@@ -8,7 +8,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-from calibration.basis import Basis
+from calibration.records.basis import Basis
 
 if TYPE_CHECKING:
     from calibration.metrology.conformity import Judgement

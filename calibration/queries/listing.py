@@ -23,7 +23,7 @@ from django.db import connection
 
 from calibration.models import ScheduleState, SearchWord, Standing
 from calibration.models.standing import NO_DATE
-from calibration.standings import WORD_LENGTH
+from calibration.queries.standings import WORD_LENGTH
 from register.models import Plant
 
 PAGE: Final = 50
@@ -33,8 +33,12 @@ CEILING: Final = 1000
 #: fewer where each row is asked for its words.
 EXAMINED: Final = 4000
 EXAMINED_FOR_WORDS: Final = 1000
-#: A page is looked for along the order of the list if it should be full after so many rows.
+#: A page is looked for along the order of the list if it should be full after so many rows; fewer where each is asked
+#: for several words.
 FARTHEST: Final = 20000
+FARTHEST_FOR_WORDS: Final = 4000
+#: Else all matches are gathered; so far filters are counted to find the one to begin with.
+GATHERED: Final = 20000
 Phase = Standing.Phase
 _TABLE: Final = Standing._meta.db_table
 _WORDS: Final = SearchWord._meta.db_table
@@ -127,13 +131,14 @@ class Term:
 class Condition:
     """One filter.
 
-    `keeps` is the order in which its index gives what it finds; `fixes` the column that has one value there.
+    `keeps` is the order in which its index gives what it finds; `fixes` the column that has one value there. Beginnings
+    of `words` are looked up in the index of words.
     """
 
     terms: tuple[Term, ...]
     keeps: tuple[str, ...] = ()
     fixes: str = ""
-    word: str = ""
+    words: tuple[str, ...] = ()
 
 
 def page(plant: Plant, asked: Asked, today: datetime.date, columns: Sequence[str]) -> Page:
@@ -151,16 +156,19 @@ def page(plant: Plant, asked: Asked, today: datetime.date, columns: Sequence[str
     counts = _counts(plant, conditions)
     rarest = conditions[counts.index(min(counts))] if conditions else None
     driver: Condition | None
+    counted_all = True
     if rarest is not None and min(counts) <= CEILING:
         total = counts[0] if len(conditions) == 1 else _count(_matching(plant, conditions, rarest))
-        text, driver = total_text(total), rarest
+        driver = rarest
     elif len(conditions) == 1:
-        text, driver = total_text(counts[0]), in_order
+        total, driver = counts[0], in_order
     else:
-        found, seen, whole = _sampled(plant, conditions, in_order, order)
-        text = total_text(found) if found > CEILING or whole else f"{found:,}+"
-        dense = whole or found * FARTHEST >= PAGE * seen
-        driver = in_order if dense or rarest is None else rarest
+        total, seen, counted_all = _sampled(plant, conditions, in_order, order)
+        farthest = FARTHEST if sum(len(condition.words) for condition in conditions) < 2 else FARTHEST_FOR_WORDS
+        if counted_all or total * farthest >= PAGE * seen:
+            driver = in_order
+        else:
+            driver, conditions = _gathering(plant, conditions)
     cursor = _read_cursor(asked.before or asked.after, order)
     backward = bool(asked.before and cursor)
     keys = _keys(
@@ -168,11 +176,14 @@ def page(plant: Plant, asked: Asked, today: datetime.date, columns: Sequence[str
     )
     more = len(keys) > PAGE
     keys = keys[:PAGE][::-1] if backward else keys[:PAGE]
+    if not counted_all:
+        # The page itself may show more than the sample, or all there is.
+        total, counted_all = max(total, len(keys)), not cursor and not more
     stored = {row["tag_id"]: row for row in Standing.objects.filter(pk__in=keys).values(*{"tag_id", *columns, *order})}
     rows = [stored[key] for key in keys if key in stored]
     return Page(
         rows=rows,
-        total=text,
+        total=total_text(total) if counted_all or total > CEILING else f"{total:,}+",
         earlier=_cursor(rows[0], order) if rows and (more if backward else bool(cursor)) else "",
         later=_cursor(rows[-1], order) if rows and (backward or more) else "",
     )
@@ -279,7 +290,23 @@ def _worded(plant: Plant, word: str) -> Condition:
     begins, values = _begins(word)
     # Not EXISTS: PostgreSQL would gather every tag with such a word before it looks at the first row.
     look = f"(SELECT 1 FROM {_WORDS} w WHERE w.tag_id = s.tag_id AND {begins} LIMIT 1) IS NOT NULL"
-    return Condition((Term(look, values),), word=word)
+    return Condition((Term(look, values),), words=(word,))
+
+
+def _gathering(plant: Plant, conditions: list[Condition]) -> tuple[Condition, list[Condition]]:
+    """The condition that the fewest tags meet, together with other words that are not common, and all conditions."""
+    counts = _counts(plant, conditions, far=True)
+    rarest = conditions[counts.index(min(counts))]
+    apart = [
+        condition
+        for condition, count in zip(conditions, counts, strict=True)
+        if condition is not rarest and not (rarest.words and condition.words and count <= GATHERED)
+    ]
+    if len(apart) == len(conditions) - 1:
+        return rarest, conditions
+    words = tuple(word for condition in conditions if condition not in apart for word in condition.words)
+    together = Condition((), words=words)
+    return together, [*apart, together]
 
 
 def _begins(word: str) -> tuple[str, tuple[str, ...]]:
@@ -300,15 +327,18 @@ def _matching(plant: Plant, conditions: Sequence[Condition], driver: Condition |
     `cursor` names the kind of bounds that the place in the list makes idle.
     """
     texts, values = [], []
-    if driver is not None and driver.word:
-        begins, words = _begins(driver.word)
-        texts.append(f"s.tag_id IN (SELECT w.tag_id FROM {_WORDS} w WHERE w.plant_id = %s AND {begins})")
-        values += [plant.pk, *words]
+    if driver is not None and driver.words:
+        looks = []
+        for word in driver.words:
+            look, more = _with_word(plant, word)
+            looks.append(f"SELECT w.tag_id {look}")
+            values += more
+        texts.append(f"s.tag_id IN ({' INTERSECT '.join(looks)})")
     else:
         texts.append("s.plant_id = %s")
         values.append(plant.pk)
-    for condition in sorted(conditions, key=lambda condition: bool(condition.word)):
-        if condition is driver and driver.word:
+    for condition in sorted(conditions, key=lambda condition: bool(condition.words)):
+        if condition is driver and driver.words:
             continue
         for term in condition.terms:
             plain = condition is driver and not (cursor and term.bound == cursor)
@@ -360,33 +390,46 @@ def _keys(
     return [row[0] for row in _read(f"SELECT s.tag_id {text} ORDER BY {ordering} LIMIT {limit}", values)]
 
 
-def _counts(plant: Plant, conditions: Sequence[Condition]) -> list[int]:
-    """How many tags meet each condition alone, each counted up to the ceiling and one more, in one statement."""
+def _counts(plant: Plant, conditions: Sequence[Condition], *, far: bool = False) -> list[int]:
+    """How many tags meet each condition alone, each counted up to the ceiling and one more, in one statement.
+
+    `far` goes on to the greater ceiling, and a tag counts for each of its words that begin as asked.
+    """
     if not conditions:
         return []
+    most = GATHERED if far else CEILING
     texts, values = [], []
     for condition in conditions:
-        if condition.word:
-            text, more = _count_of_word(plant, condition.word)
-            texts.append(text)
+        if condition.words and not far:
+            text, more = _count_of_word(plant, *condition.words)
         else:
-            text, more = _matching(plant, [condition], condition)
-            texts.append(f"(SELECT COUNT(*) FROM (SELECT 1 {text} LIMIT {CEILING + 1}) c)")
+            look = _with_word(plant, *condition.words) if condition.words else _matching(plant, [condition], condition)
+            text, more = f"(SELECT COUNT(*) FROM (SELECT 1 {look[0]} LIMIT {most + 1}) c)", look[1]
+        texts.append(text)
         values += more
     return list(_read(f"SELECT {', '.join(texts)}", values)[0])
 
 
+def _with_word(plant: Plant, word: str) -> Statement:
+    """FROM and WHERE that find the words that begin so."""
+    begins, values = _begins(word)
+    return f"FROM {_WORDS} w WHERE w.plant_id = %s AND {begins}", [plant.pk, *values]
+
+
 def _count_of_word(plant: Plant, word: str) -> Statement:
     """How many tags have a word that begins so: the first few thousand words tell, but for one letter or digit."""
-    begins, words = _begins(word)
-    rows = f"SELECT w.tag_id FROM {_WORDS} w WHERE w.plant_id = %s AND {begins}"
+    text, values = _with_word(plant, word)
+    rows = f"SELECT w.tag_id {text}"
     most = 5 * (CEILING + 1)
     exactly = f"(SELECT COUNT(*) FROM (SELECT DISTINCT e.tag_id FROM ({rows}) e LIMIT {CEILING + 1}) c)"
+    if connection.vendor == "sqlite":
+        # It stops as soon as there are enough; PostgreSQL would read all first.
+        return exactly, values
     text = (
         f"(SELECT CASE WHEN COUNT(DISTINCT f.tag_id) > {CEILING} THEN {CEILING + 1} "
         f"WHEN COUNT(*) < {most} THEN COUNT(DISTINCT f.tag_id) ELSE {exactly} END FROM ({rows} LIMIT {most}) f)"
     )
-    return text, [plant.pk, *words] * 2
+    return text, values * 2
 
 
 def _count(found: Statement) -> int:
@@ -404,7 +447,7 @@ def _sampled(
     if not others:
         counted = _count((text, values))
         return counted, counted, True
-    ceiling = EXAMINED_FOR_WORDS if any(condition.word for condition in conditions) else EXAMINED
+    ceiling = EXAMINED_FOR_WORDS if any(condition.words for condition in conditions) else EXAMINED
     # Only columns that the index holds are named, so that no row itself is read.
     needed = {"tag_id", *(column for term in others for column in _COLUMN.findall(term.text))}
     ordering = ", ".join(_PLAIN[column] for column in order)

@@ -10,11 +10,11 @@ from functools import cached_property
 from typing import Final
 from zoneinfo import ZoneInfo
 
-from calibration.basis import Basis
-from calibration.content import ReadingContent, RunContent, UseContent
-from calibration.entries import Field, standing, when
-from calibration.judging import JudgedRun, Point, applied_in_range_unit, judge, measured_in_ma
 from calibration.models import Run, Sheet
+from calibration.queries.entries import Field, standing, when
+from calibration.records.basis import Basis
+from calibration.records.content import ReadingContent, RunContent, UseContent
+from calibration.records.judging import JudgedRun, Point, applied_in_range_unit, judge, measured_in_ma
 from calibration.sheet_fields import PARTS, reading, reading_of
 
 #: Beyond this distance from its point [% of input range] an applied input is probably mistyped.

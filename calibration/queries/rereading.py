@@ -6,10 +6,10 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from calibration.basis import Basis
-from calibration.content import ReadingContent, RecordContent, RunContent, SignatureContent, UseContent
-from calibration.judging import JudgedRun, Point, applied_in_range_unit, judge, measured_in_ma
 from calibration.models import Reading, Record, Run, Signature
+from calibration.records.basis import Basis
+from calibration.records.content import ReadingContent, RecordContent, RunContent, SignatureContent, UseContent
+from calibration.records.judging import JudgedRun, Point, applied_in_range_unit, judge, measured_in_ma
 
 
 @dataclass(frozen=True, slots=True)

@@ -9,12 +9,12 @@ from zoneinfo import ZoneInfo
 
 from django.utils.safestring import SafeString
 
-from calibration.choosing import Candidate, candidates, covers, number_of
-from calibration.drafts import Draft, DraftReading
-from calibration.entries import Field
-from calibration.marks import error_bar
+from calibration.contexts.results import Result, result_of
+from calibration.drawing.marks import error_bar
 from calibration.models import Entry, Run, Sheet
-from calibration.results import Result, result_of
+from calibration.queries.choosing import Candidate, candidates, covers, number_of
+from calibration.queries.drafts import Draft, DraftReading
+from calibration.queries.entries import Field
 from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, ORDER, PARTS, PRESENT, label, reading
 from register.models import Flag, User
 

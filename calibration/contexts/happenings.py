@@ -10,7 +10,7 @@ from zoneinfo import ZoneInfo
 from django.urls import reverse
 from django.utils.safestring import SafeString
 
-from calibration.marks import error_mark
+from calibration.drawing.marks import error_mark
 from calibration.models import Deferral, Requirement, Test, Verdict
 from register.models import Fitting, Intervention, Range
 from register.models.typed import as_shown, in_words
@@ -167,7 +167,7 @@ def of_requirements(requirements: Sequence[Requirement]) -> Iterable[Event]:
 
 def tolerance_words(row: Requirement, *, as_left: bool = False) -> str:
     """A tolerance of a requirement as it is stated."""
-    from calibration.basis import StatedTolerance
+    from calibration.records.basis import StatedTolerance
 
     percent, amount = (row.as_left_percent, row.as_left_input) if as_left else (row.mpe_percent, row.mpe_input)
     try:

@@ -10,7 +10,7 @@ from typing import Any, Final
 
 from django.utils.safestring import SafeString
 
-from calibration.marks import due_mark, error_mark
+from calibration.drawing.marks import due_mark, error_mark
 from calibration.models import ScheduleState, Verdict
 from calibration.models.standing import schedule_state
 from register.marks import range_strip

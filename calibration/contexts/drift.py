@@ -9,8 +9,8 @@ from typing import Any, Final
 
 from django.utils.safestring import SafeString
 
-from calibration import drifting
-from calibration.drifting import Drift, History
+from calibration.queries import drifting
+from calibration.queries.drifting import Drift, History
 from register.figures import signed
 
 METHOD: Final = (
@@ -147,7 +147,7 @@ def _facts(drift: Drift) -> list[tuple[str, str]]:
 
 
 def _chart(drift: Drift, whose: str) -> SafeString:
-    from calibration.charts import BandPoint, DriftEvent, drift_plot
+    from calibration.drawing.charts import BandPoint, DriftEvent, drift_plot
 
     limit = min(abs(drift.limits[0]), abs(drift.limits[1])) if drift.limits else 1.0
     spread = [pair.start for pair in drift.history.pairing.pairs]

@@ -6,10 +6,10 @@ import math
 from collections.abc import Mapping
 from typing import Final
 
-from calibration.basis import Basis
-from calibration.content import ReadingContent
-from calibration.judging import METHOD_VERSION, JudgedRun, Point, applied_in_range_unit, measured_in_ma
 from calibration.models import Reading, Run, RunFigures, Test, Verdict
+from calibration.records.basis import Basis
+from calibration.records.content import ReadingContent
+from calibration.records.judging import METHOD_VERSION, JudgedRun, Point, applied_in_range_unit, measured_in_ma
 
 _INSIDE: Final = frozenset({Verdict.PASS, Verdict.CONDITIONAL_PASS})
 

@@ -10,8 +10,8 @@ from typing import TYPE_CHECKING
 from register.figures import signed
 
 if TYPE_CHECKING:
-    from calibration.judging import JudgedRun
     from calibration.metrology.evaluation import Level, RunEvaluation
+    from calibration.records.judging import JudgedRun
 
 DIGITS = 3
 

@@ -11,12 +11,12 @@ from zoneinfo import ZoneInfo
 
 from django.utils.safestring import SafeString
 
-from calibration.basis import Basis
-from calibration.canonical import FIRST_HASH
-from calibration.figures_in_words import Figure, figures_of
+from calibration.contexts.figures import Figure, figures_of
+from calibration.contexts.results import Result, result_of
 from calibration.models import Record, Run, Signature, StandardUse, Test
-from calibration.rereading import ReadRun, judged_run
-from calibration.results import Result, result_of
+from calibration.queries.rereading import ReadRun, judged_run
+from calibration.records.basis import Basis
+from calibration.records.canonical import FIRST_HASH
 from register.engineering.typed import NumberError, decimals_of, format_significant
 
 CSS: Mapping[str, str] = {
@@ -110,7 +110,7 @@ def view_of(record: Record) -> TestView:
 
 def plot_of(record: Record) -> SafeString | None:
     """Errors against their limits as a picture; None where nothing was read."""
-    from calibration.charts import ErrorPoint, error_plot
+    from calibration.drawing.charts import ErrorPoint, error_plot
     from calibration.metrology.signal import saturated
     from register.engineering.units import label
 

@@ -10,9 +10,9 @@ from zoneinfo import ZoneInfo
 from django.urls import reverse
 from django.utils.safestring import SafeString
 
-from calibration import happenings, rows
-from calibration.happenings import Event, range_words, tolerance_words
-from calibration.marks import due_mark
+from calibration.contexts import happenings, rows
+from calibration.contexts.happenings import Event, range_words, tolerance_words
+from calibration.drawing.marks import due_mark
 from calibration.models import Deferral, Requirement, ScheduleState, Sheet, Standing, Test
 from calibration.sheet_fields import ENDED
 from register.checking import RELATED

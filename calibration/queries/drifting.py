@@ -13,8 +13,8 @@ from typing import TYPE_CHECKING, Any, Final
 
 from django.db.models import Q
 
-from calibration.basis import Basis
 from calibration.models import Reading, RunFigures, Test, Verdict
+from calibration.records.basis import Basis
 from register.models import Fitting, Intervention, MeasuringHead, Range, Tag, Transmitter
 
 if TYPE_CHECKING:

@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 from functools import cache
 from typing import TYPE_CHECKING, Any, Self
 
-from calibration.canonical import plain
+from calibration.records.canonical import plain
 
 if TYPE_CHECKING:
     from calibration.metrology.pointlist import PointList

@@ -8,9 +8,9 @@ from typing import TYPE_CHECKING
 
 from django.utils.safestring import SafeString
 
-from calibration.basis import Basis
-from calibration.judging import judge_one
-from calibration.marks import error_bar
+from calibration.drawing.marks import error_bar
+from calibration.records.basis import Basis
+from calibration.records.judging import judge_one
 from register.figures import signed
 
 if TYPE_CHECKING:

@@ -1,6 +1,6 @@
 """The large plots of a test and of a tag: the marks grown up, drawn by matplotlib for a page.
 
-Calls cost some 50 ms: one page, one or two charts; lists use `calibration.marks`.
+Calls cost some 50 ms: one page, one or two charts; lists use `calibration.drawing.marks`.
 """
 
 from __future__ import annotations
@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 
 from django.utils.safestring import SafeString
 
-from calibration.inline_svg import COLOURS, SETTINGS, inline
+from calibration.drawing.inline_svg import COLOURS, SETTINGS, inline
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -22,7 +22,7 @@ if TYPE_CHECKING:
 INK, FAINT, HAIR, RULE = COLOURS["ink"], COLOURS["faint"], COLOURS["hair"], COLOURS["rule"]
 PAPER, OUTSIDE, NEAR, ACTION = COLOURS["paper"], COLOURS["outside"], COLOURS["near"], COLOURS["action"]
 BAND = COLOURS["band"]
-#: As in `calibration.marks`: the picture must not call outside what the verdict allows by rounding.
+#: As in `calibration.drawing.marks`: the picture must not call outside what the verdict allows by rounding.
 SLACK = 1e-7
 
 

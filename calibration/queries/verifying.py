@@ -13,14 +13,14 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Any
 
-from calibration.basis import Basis
-from calibration.canonical import FIRST_HASH, canonical, chain_hash
-from calibration.content import record_object, signature_object
-from calibration.judging import METHOD_VERSION
 from calibration.models import ChainHead, Record, Run, RunFigures, Signature, Test
-from calibration.reckoning import figures_row, reading_row, summarise, verdicts_of
+from calibration.queries.rereading import content_of, judged_run, reading_content, signature_content
 from calibration.recording import FOLLOWS, state_of
-from calibration.rereading import content_of, judged_run, reading_content, signature_content
+from calibration.records.basis import Basis
+from calibration.records.canonical import FIRST_HASH, canonical, chain_hash
+from calibration.records.content import record_object, signature_object
+from calibration.records.judging import METHOD_VERSION
+from calibration.records.reckoning import figures_row, reading_row, summarise, verdicts_of
 from register.models import Plant
 
 _AT_ONCE = 500

@@ -9,11 +9,11 @@ from dataclasses import dataclass
 from django.urls import reverse
 from django.utils.safestring import SafeString
 
-from calibration import happenings, rows
-from calibration.happenings import Event
+from calibration.contexts import happenings, rows
+from calibration.contexts.happenings import Event
+from calibration.contexts.tag import EVENTS, TESTS, Fact, Link, May
 from calibration.models import Sheet, Standing, Test
 from calibration.sheet_fields import ENDED
-from calibration.tag_page import EVENTS, TESTS, Fact, Link, May
 from register.figures import ago
 from register.models import Fitting, Intervention, Transmitter
 from register.models.typed import as_shown, in_words

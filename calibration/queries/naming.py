@@ -6,8 +6,8 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
-from calibration.content import RecordContent
 from calibration.models import Certificate, Standard
+from calibration.records.content import RecordContent
 from register.models import MeasuringHead, Tag, Transmitter
 
 

@@ -1,0 +1,1 @@
+"""The marks of a test and the large plots, as SVG."""

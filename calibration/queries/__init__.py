@@ -1,0 +1,1 @@
+"""Reads over many rows; nothing here writes."""
