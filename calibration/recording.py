@@ -1,8 +1,8 @@
 """Writes records of tests, signed or transcribed, into the chain of their plant.
 
-A caller describes each test with the dataclasses of `calibration.records.content`; this module judges the runs, writes the
-canonical content, links it to the chain under its lock and keeps the summaries of the test. `calibration.signing` and
-`calibration.transcribing` both end here.
+A caller describes each test with the dataclasses of `calibration.records.content`; this module judges the runs,
+writes the canonical content, links it to the chain under its lock and keeps the summaries of the test.
+`calibration.signing` and `calibration.transcribing` both end here.
 """
 
 from __future__ import annotations

@@ -1,8 +1,8 @@
 """Sets what tags ask of their tests, defers dates, and keeps the standings from which lists are read.
 
 A requirement changes by adding a row from a date on: in force at once, or planned until `apply_planned` finds
-that its day has come. Standings are worked out by `calibration.queries.standings` and stored in the transaction of the act
-that changes them.
+that its day has come. Standings are worked out by `calibration.queries.standings` and stored in the transaction
+of the act that changes them.
 """
 
 from __future__ import annotations
