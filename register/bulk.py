@@ -9,10 +9,12 @@ from __future__ import annotations
 import gc
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from contextlib import contextmanager
-from typing import Any, Final
+from typing import Any, Final, TypeVar
 
 from django.db import connection, models
+from django.db.models.base import ModelState
 
+M = TypeVar("M", bound=models.Model)
 Adapter = Callable[[Any], Any]
 #: Kinds of columns whose values go to the database as they are.
 PLAIN: Final = (models.CharField, models.TextField, models.IntegerField, models.FloatField, models.ForeignKey)
@@ -54,6 +56,20 @@ def values_of(things: Iterable[models.Model], columns: Sequence[str]) -> Iterato
     for thing in things:
         held = thing.__dict__
         yield tuple([held[name] for name in columns])
+
+
+def another(blank: M, **values: Any) -> M:
+    """One more unsaved object like a blank one, with some attributes set; ten times as quick as making it anew.
+
+    The values are attributes as the object holds them: `plant_id` for an id, figures and texts as they are. Related
+    objects are set on it afterwards, as on any object.
+    """
+    made = blank.__class__.__new__(blank.__class__)
+    made.__dict__.update(blank.__dict__)
+    made.__dict__.update(values)
+    made._state = ModelState()
+    made._state.fields_cache.update(blank._state.fields_cache)
+    return made
 
 
 def columns_of(model: type[models.Model], *, key: bool = False) -> list[str]:

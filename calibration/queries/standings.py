@@ -11,12 +11,13 @@ import re
 from collections import defaultdict
 from collections.abc import Collection, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
+from functools import lru_cache
 from typing import TYPE_CHECKING, Any
 from zoneinfo import ZoneInfo
 
 from calibration.models import Deferral, Requirement, Standing, Test
 from calibration.models.standing import NO_ERROR
-from register.bulk import among
+from register.bulk import among, another
 from register.checking import with_inputs
 from register.models import Fitting, Flag, Intervention, Range, Tag, TransmitterType
 
@@ -104,15 +105,16 @@ def _tests(ids: Sequence[int]) -> Iterable[Mapping[str, Any]]:
 
 def work_out(history: History) -> list[Standing]:
     """Give one unsaved standing for each tag of the history."""
-    strips = Strips()
-    return [_standing(tag, history, strips) for tag in history.tags]
+    strips, blank = Strips(), Standing()
+    return [_standing(tag, history, strips, blank) for tag in history.tags]
 
 
-def _standing(tag: Tag, history: History, strips: Strips) -> Standing:
+def _standing(tag: Tag, history: History, strips: Strips, blank: Standing) -> Standing:
     fitting, span = tag.current_fitting, tag.current_range
     transmitter = fitting.transmitter if fitting else None
     requirement = history.requirements.get(tag.pk)
-    standing = Standing(
+    standing = another(
+        blank,
         tag_id=tag.pk,
         plant_id=tag.plant_id,
         area_id=tag.area_id,
@@ -323,7 +325,8 @@ def sort_key(number: str) -> str:
     return _DIGITS.sub(lambda digits: digits[0].zfill(6), number.casefold())[:120]
 
 
-def words_of(text: str) -> set[str]:
+@lru_cache(maxsize=20_000)
+def words_of(text: str) -> frozenset[str]:
     """Words by which a text is found: its parts between spaces, and the letters and digits inside each."""
     found: set[str] = set()
     for part in text.casefold().split():
@@ -331,7 +334,7 @@ def words_of(text: str) -> set[str]:
         if whole:
             found.add(whole)
             found.update(piece[:WORD_LENGTH] for piece in _PIECES.findall(whole))
-    return found
+    return frozenset(found)
 
 
 def search_words(history: History) -> dict[int, set[str]]:
@@ -341,5 +344,5 @@ def search_words(history: History) -> dict[int, set[str]]:
         texts = [tag.number, tag.service, tag.area.code, tag.area.name]
         if tag.current_fitting:
             texts += [tag.current_fitting.transmitter.maker.name, tag.current_fitting.transmitter.serial]
-        words[tag.pk] = words_of(" ".join(texts))
+        words[tag.pk] = set().union(*map(words_of, texts))
     return words

@@ -65,6 +65,15 @@ class Draft:
     today: datetime.date
     rows: list[Row] = field(default_factory=list)
     new_areas: dict[str, Area] = field(default_factory=dict)
+    blank_tag: Tag = field(init=False)
+    blank_device: Transmitter = field(init=False)
+    blank_fitting: Fitting = field(init=False)
+    blank_range: Range = field(init=False)
+
+    def __post_init__(self) -> None:
+        plant = self.known.plant
+        self.blank_tag, self.blank_device = Tag(plant=plant), Transmitter(plant=plant)
+        self.blank_fitting, self.blank_range = Fitting(), Range()
 
     def complain(self, row: Row, key: str, words: str) -> None:
         self.cells.complain(row.place, key, words)

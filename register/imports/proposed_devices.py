@@ -7,6 +7,7 @@ from typing import Any
 
 from django.core.exceptions import ValidationError
 
+from register.bulk import another
 from register.changes import object_to_backdating
 from register.imports.cells import unknown
 from register.imports.drafts import Draft, Row
@@ -48,14 +49,10 @@ def propose_device(draft: Draft, row: Row, given: dict[str, Any], seen: dict[tup
     if type_ is None or head is None:
         return
     row.device_is_new = True
-    row.device = Transmitter(
-        plant=draft.known.plant,
-        maker=maker,
-        type=type_,
-        head=head,
-        serial=serial,
-        **{name: given[name] for name in OF_DEVICE if name in given},
+    row.device = another(
+        draft.blank_device, serial=serial, **{name: given[name] for name in OF_DEVICE if name in given}
     )
+    row.device.maker, row.device.type, row.device.head = maker, type_, head
 
 
 def propose_fitting(draft: Draft, row: Row, day: datetime.date | None) -> None:
@@ -74,7 +71,8 @@ def propose_fitting(draft: Draft, row: Row, day: datetime.date | None) -> None:
     _check_day(draft, row, day, current)
     if device.whereabouts == Whereabouts.SCRAPPED:
         draft.complain(row, "serial", f"{device} is scrapped: it cannot be fitted again.")
-    row.fitting = Fitting(tag=tag, transmitter=device, fitted_on=day)
+    row.fitting = another(draft.blank_fitting, fitted_on=day)
+    row.fitting.tag, row.fitting.transmitter = tag, device
     if current is not None:
         row.ended = current
     if not row.tag_is_new:

@@ -7,6 +7,7 @@ from typing import Any
 
 from django.core.exceptions import ValidationError
 
+from register.bulk import another
 from register.changes import object_to_backdating
 from register.imports.drafts import Draft, Row
 from register.imports.sheet import OF_RANGE
@@ -95,8 +96,8 @@ def _complete(draft: Draft, row: Row, given: dict[str, Any], current: Range | No
         draft.complain(
             row, "urv", f"LRV and URV are both {lrv[0]} {label(unit)}: a range without a span cannot be measured."
         )
-    return Range(
-        tag=tag,
+    new = another(
+        draft.blank_range,
         lrv=lrv[0],
         urv=urv[0],
         unit=unit,
@@ -107,6 +108,9 @@ def _complete(draft: Draft, row: Row, given: dict[str, Any], current: Range | No
         low_cut_percent=cut if root else 0.0,
         below_cut=below if root else Range.BelowCut.LINEAR,
     )
+    if tag is not None:
+        new.tag = tag
+    return new
 
 
 def _held(current: Range | None, name: str) -> tuple[str, float] | None:

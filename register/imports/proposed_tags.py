@@ -5,6 +5,7 @@ from __future__ import annotations
 from functools import lru_cache
 from typing import Any, Final
 
+from register.bulk import another
 from register.engineering.typed import parse_number
 from register.imports.cells import Number
 from register.imports.drafts import Draft, Row
@@ -29,7 +30,7 @@ def propose_tag(draft: Draft, row: Row, number: str, given: dict[str, Any]) -> N
     area_code, area_name = given.pop("area", None), given.pop("area_name", "")
     area = None if area_code is None else _area(draft, area_code, area_name)
     if row.tag is None:
-        row.tag, row.tag_is_new = Tag(plant=draft.known.plant, number=number), True
+        row.tag, row.tag_is_new = another(draft.blank_tag, number=number), True
         if area is None:
             draft.complain(row, "area", f"{number} is new: say in which area it lies.")
         if "measurand" not in given:
