@@ -1,1 +1,1 @@
-"""Requirements and past tests brought in files, read with `register.imports`; nothing here writes."""
+"""Past tests and requirements out of files: what the columns mean, and what a row says."""
