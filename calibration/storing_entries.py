@@ -135,6 +135,9 @@ def typed_in_form(draft: Draft, values: Mapping[str, str], seen: Mapping[str, st
     for name, base in seen.items():
         text = values.get(name, "").strip()
         standing = draft.fields.get(name)
+        # Where two versions differ the form shows neither: nothing was typed into the empty field.
+        if standing is not None and standing.clashes and not text:
+            continue
         if text == kept.get(base, "") or (standing is not None and not standing.clashes and text == standing.text):
             continue
         last += 1

@@ -14,8 +14,9 @@ from calibration.drawing.marks import error_bar
 from calibration.models import Entry, Run, Sheet
 from calibration.queries.choosing import Candidate, candidates, covers, number_of
 from calibration.queries.drafts import Draft, DraftReading
+from calibration.queries.entered import Names
 from calibration.queries.entries import Field
-from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, ORDER, PARTS, PRESENT, label, reading
+from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, ORDER, PARTS, label, reading
 from register.models import Flag, User
 
 Stage = Sheet.Stage
@@ -145,6 +146,7 @@ def steps(draft: Draft) -> list[Step]:
 
 def others(draft: Draft, viewer: User, now: datetime.datetime) -> list[Other]:
     """Who else is on the sheet, with what he did last."""
+    names = Names(draft.sheet.plant_id)
     last: dict[int, Entry] = {}
     for entry in sorted(draft.entries, key=lambda entry: entry.received_at):
         if entry.person_id != viewer.pk and entry.received_at > now - NEARBY:
@@ -152,7 +154,7 @@ def others(draft: Draft, viewer: User, now: datetime.datetime) -> list[Other]:
     return [
         Other(
             name=str(entry.person),
-            what="opened it" if entry.field == PRESENT else f"typed “{entry.text}” at {label(entry.field)}",
+            what=names.deed(entry),
             at=clock(entry.received_at, draft.zone),
         )
         for entry in last.values()

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import datetime
 import json
-import re
 from typing import Any
 
 from django.core.exceptions import ValidationError
@@ -17,8 +16,9 @@ from django.views.decorators.http import require_GET
 from calibration.arriving import entries_from_json, entry_from_form
 from calibration.contexts import sheet as sheet_page
 from calibration.contexts.results import result_now
-from calibration.models import Sheet, Standard
+from calibration.models import Sheet
 from calibration.queries.drafts import Draft, far_from, readable
+from calibration.queries.entered import Names
 from calibration.queries.entries import NewEntry
 from calibration.sheet_fields import KINDS, PRESENT, label, reading, reading_of
 from calibration.storing_entries import Stored, add_entries
@@ -26,7 +26,6 @@ from calibration.views.sheet import SHEETS
 from calibration.views.sheet_contexts import run_state
 from register import access
 from register.auditing import Actor
-from register.engineering.units import LENGTH, PRESSURE, TEMPERATURE, choices
 
 
 def sheet_entries(request: HttpRequest, pk: object) -> HttpResponse:
@@ -88,10 +87,11 @@ def sheet_news(request: HttpRequest, pk: object) -> HttpResponse:
         and entry.device != "site"
     ]
     mine = access.person(request).pk
+    names = Names(held.plant_id)
     lines = [
         {
             "who": "You, on another device," if entry.person_id == mine else str(entry.person),
-            "what": f"typed “{entry.text}” at {label(entry.field)}",
+            "what": names.deed(entry),
             "at": sheet_page.clock(entry.received_at, draft.zone),
         }
         for entry in fresh[:3]
@@ -118,29 +118,19 @@ def _moment(text: str) -> datetime.datetime:
 def _history(request: HttpRequest, held: Sheet) -> HttpResponse:
     draft = Draft(held)
     entries = held.entries.select_related("person").exclude(field=PRESENT).order_by("received_at", "device", "sequence")
-    names = _names(held.plant_id)
+    names = Names(held.plant_id)
     rows = [
         {
             "at": sheet_page.clock(entry.received_at, draft.zone),
             "who": str(entry.person),
             "field": label(entry.field),
-            "text": names.get(re.split("[-.]", entry.field)[-1], {}).get(entry.text, entry.text),
+            "text": names.text(entry),
             "device": entry.device,
             "settles": entry.settles,
         }
         for entry in entries
     ]
     return render(request, "calibration/sheet_entries.html", {"sheet": held, "rows": rows})
-
-
-def _names(plant_id: int) -> dict[str, dict[str, str]]:
-    """What the ids chosen in a sheet are called: standards in fields that end in "with", certificates, units."""
-    standards = Standard.objects.filter(plant=plant_id).prefetch_related("certificates")
-    return {
-        "with": {str(standard.pk): standard.name for standard in standards},
-        "certificate": {str(one.pk): one.number for standard in standards for one in standard.certificates.all()},
-        "unit": dict(choices(PRESSURE, TEMPERATURE, LENGTH)),
-    }
 
 
 def _fragment(request: HttpRequest, stored: Stored, new: NewEntry) -> HttpResponse:

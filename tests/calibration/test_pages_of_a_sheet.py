@@ -12,7 +12,7 @@ from django.test import Client
 from django.urls import reverse
 from django.utils import timezone
 
-from calibration.models import Entry, Record, Sheet, Test
+from calibration.models import Entry, Record, Sheet, Standard, Test
 from calibration.queries.drafts import Draft
 from tests import cast as people
 from tests.calibration.at_work import Device, run_texts, signed, standards_of, to_as_found, to_signature
@@ -223,6 +223,38 @@ def test_a_clash_is_shown_with_both_versions_and_settled_by_a_button(
         },
     )
     assert Draft(Sheet.objects.get()).text("as-found.3.measured") == "12.02"
+
+
+def test_the_empty_field_of_a_clash_is_no_third_version(client: Client, tablet: Device, cast: people.Cast) -> None:
+    to_as_found(tablet)
+    name = "as-found.3.measured"
+    other = Device(cast.engineer, tablet.sheet, "tablet-b")
+    tablet.send(tablet.entry(name, "12.01"))
+    other.send(other.entry(name, "12.02"))
+    kept = Draft(Sheet.objects.get()).fields[name]
+    client.post(
+        reverse("sheet-settle", args=[tablet.sheet.pk]),
+        {
+            name: "",
+            f"seen.{name}": str(kept.entry.id),
+            "settle": f"{name} {kept.versions[0].id}",
+            f"versions.{name}": [str(version.id) for version in kept.versions],
+        },
+    )
+    settled = Draft(Sheet.objects.get()).fields[name]
+    assert (settled.clashes, settled.text) == (False, "12.01")
+
+
+def test_choices_of_others_are_told_by_their_names(client: Client, tablet: Device, cast: people.Cast) -> None:
+    to_as_found(tablet)
+    other = Device(cast.engineer, tablet.sheet, "tablet-b")
+    other.type({"as-found.ambient-unit": "degF"})
+    assert "typed “°F” at as-found, unit of the ambient temperature" in page(client, tablet.sheet)
+    other.type({"as-found.1.measured": "4.003"})
+    other.type({"as-found.1.measured": ""})
+    assert "emptied as-found, reading 1, measured" in page(client, tablet.sheet)
+    chosen = client.get(reverse("sheet-entries", args=[tablet.sheet.pk])).content.decode()
+    assert Standard.objects.get(kind=Standard.Kind.CURRENT).name in chosen
 
 
 def test_who_else_is_on_the_sheet_is_said(client: Client, tablet: Device, cast: people.Cast) -> None:
