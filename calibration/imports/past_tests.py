@@ -29,6 +29,7 @@ from register.imports.tables import Table
 from register.models import Fitting, Plant, Tag, Transmitter
 from register.searching import key
 
+ANSWERS: Final = ("performed_by", "remarks", "could_not_test")
 PARTS: Final = (("applied", "applied_standard"), ("measured", "measured_standard"))
 #: Of each run of a test: its kind, and input [SI] and output [mA] of its readings.
 Substance = tuple[tuple[str, tuple[tuple[float, float], ...]], ...]
@@ -44,16 +45,28 @@ class Planned:
     device: str
     readings: str
     terms: str
-    verdict: str
+    verdicts: Mapping[str, str]
+
+    @property
+    def count(self) -> int:
+        """How many readings it holds."""
+        return sum(len(run.readings) for run in self.content.runs)
+
+    @property
+    def verdict(self) -> str:
+        """What each run is judged as, in words."""
+        said = ", ".join(f"{kind} {verdict}" for kind, verdict in self.verdicts.items())
+        return said or str(self.content.outcome)
 
 
 @dataclass(frozen=True, slots=True)
 class Proposal:
-    """What past tests in a file would do; `unchanged` counts tests that are recorded already."""
+    """What past tests in a file would do; `unchanged` counts tests that are recorded already, and their readings."""
 
     plant: Plant
     planned: Sequence[Planned]
     unchanged: int
+    unchanged_readings: int
     complaints: Sequence[Complaint]
     bad_rows: int
 
@@ -63,7 +76,7 @@ class Proposal:
         for one in self.planned:
             content = one.content
             told.append([one.line, content.tag_id, content.transmitter_id, content.fitting_id, one.terms, one.readings])
-            told.append([repr(content.runs), repr(content.basis.columns()), one.verdict])
+            told.append([repr(content.runs), repr(content.basis.columns()), one.verdict, repr(content.answers)])
         return hashlib.sha256(json.dumps(told, default=str).encode()).hexdigest()
 
 
@@ -76,6 +89,7 @@ class _Draft:
     history: History
     planned: list[Planned] = field(default_factory=list)
     unchanged: int = 0
+    unchanged_readings: int = 0
     seen: dict[tuple[Any, ...], int] = field(default_factory=dict)
 
 
@@ -98,6 +112,7 @@ def propose(*, plant: Plant, table: Table, matching: Matching, today: datetime.d
         plant=plant,
         planned=[one for one in draft.planned if one.line not in bad],
         unchanged=draft.unchanged,
+        unchanged_readings=draft.unchanged_readings,
         complaints=sorted(cells.complaints, key=lambda one: one.line),
         bad_rows=len(cells.bad),
     )
@@ -122,6 +137,7 @@ def _plan(draft: _Draft, visit: Visit, there: Mapping[tuple[int, datetime.date],
     recorded = there.get((device.pk, visit.day), ())
     if substance in recorded:
         draft.unchanged += 1
+        draft.unchanged_readings += sum(len(run.readings) for run in content_runs)
         return
     if recorded and cells.values["test"][visit.first] is None:
         cells.complain(
@@ -146,7 +162,7 @@ def _plan(draft: _Draft, visit: Visit, there: Mapping[tuple[int, datetime.date],
         runs=content_runs,
         made_at=datetime.datetime.combine(visit.day, datetime.time(12), tzinfo=ZoneInfo(draft.plant.time_zone)),
         made_by_id=None,
-        outcome=Test.Outcome.DONE,
+        outcome=Test.Outcome.NOT_TESTED if visit.unread else Test.Outcome.DONE,
         transcribed=True,
         answers=_answers(cells, visit),
     )
@@ -156,9 +172,9 @@ def _plan(draft: _Draft, visit: Visit, there: Mapping[tuple[int, datetime.date],
             content=content,
             tag=str(fitting.tag) if fitting else "on the bench",
             device=str(device),
-            readings=", ".join(f"{kind} {len(visit.runs[kind])}" for kind in KINDS if kind in visit.runs),
+            readings=", ".join(f"{kind} {len(visit.runs[kind])}" for kind in KINDS if kind in visit.runs) or "none",
             terms=_said(basis),
-            verdict=verdicts,
+            verdicts=verdicts,
         )
     )
 
@@ -244,7 +260,7 @@ def _runs(
     draft: _Draft, visit: Visit, basis: Basis, requirement: Requirement | None
 ) -> tuple[Basis, tuple[RunContent, ...], dict[str, list[Any]]] | None:
     """The runs of a test, and their readings as points for the arithmetic; the basis with its point list."""
-    runs, points, lists = [], {}, set()
+    runs, points, lists, named = [], {}, set(), []
     for kind in KINDS:
         if kind not in visit.runs:
             continue
@@ -256,6 +272,10 @@ def _runs(
         points[kind] = [reading_row(one, order, basis)[1] for order, one in enumerate(readings, start=1)]
         runs.append(run)
         lists.add(_list_of(readings))
+        if draft.cells.values["nominal"][rows[0]] is None:
+            named.append(kind)
+    if named:
+        basis = replace(basis, notes={**basis.notes, "points_named_from_inputs": named})
     asked = requirement.point_list if requirement else None
     if asked is not None and lists == {asked.points}:
         # Every run followed just the points that were asked for: that is kept with the test.
@@ -264,6 +284,8 @@ def _runs(
 
 
 def _readings(draft: _Draft, rows: Sequence[int], basis: Basis) -> tuple[ReadingContent, ...] | None:
+    from calibration.metrology.pointlist import points_from_applied
+
     cells, values = draft.cells, draft.cells.values
     nominal = _all_or_none(draft, rows, "nominal", lambda value: float(value.value))
     given = _all_or_none(draft, rows, "direction", lambda value: 1 if value == "up" else -1)
@@ -274,7 +296,10 @@ def _readings(draft: _Draft, rows: Sequence[int], basis: Basis) -> tuple[Reading
         for name, in_what, read_as in (
             ("applied", unit, applied_in_range_unit),
             ("measured", output, measured_in_ma),
+            ("digital", values["digital_unit"][row] or "", applied_in_range_unit),
         ):
+            if values[name][row] is None:
+                continue
             try:
                 number = read_as(values[name][row], in_what, basis)
             except ValueError as error:
@@ -285,20 +310,28 @@ def _readings(draft: _Draft, rows: Sequence[int], basis: Basis) -> tuple[Reading
     if any(row in cells.bad for row in rows):
         return None
     signal = basis.signal()
-    percents = nominal or [100.0 * (value - signal.lrv) / (signal.urv - signal.lrv) for value in applied]
-    found, cycle = directions(percents, cycles)
+    if nominal is None:
+        nominal = [float(one) for one in points_from_applied(signal.percent_of_input(applied))]
+    found, cycle = directions(nominal, cycles)
     return tuple(
         ReadingContent(
             applied=values["applied"][row],
             measured=values["measured"][row],
             direction="up" if (given or found)[place] > 0 else "down",
-            nominal_percent=nominal[place] if nominal else None,
+            nominal_percent=nominal[place],
             cycle=cycle[place],
             applied_unit=values["applied_unit"][row] or "",
             measured_unit=values["measured_unit"][row] or "mA",
+            digital=values["digital"][row] or "",
+            digital_unit=_digital_unit(draft, row, basis),
         )
         for place, row in enumerate(rows)
     )
+
+
+def _digital_unit(draft: _Draft, row: int, basis: Basis) -> str:
+    values = draft.cells.values
+    return (values["digital_unit"][row] or basis.unit) if values["digital"][row] is not None else ""
 
 
 def _all_or_none(draft: _Draft, rows: Sequence[int], name: str, plain: Callable[[Any], Any]) -> list[Any] | None:
@@ -343,11 +376,9 @@ def _use(draft: _Draft, visit: Visit, part: str, standard: Standard) -> UseConte
 
 
 def _list_of(readings: Sequence[ReadingContent]) -> str:
-    """The point list that a run followed, as text; empty where its points were not written down."""
+    """The point list that a run followed, as text; empty where its points make none."""
     from calibration.metrology.pointlist import PointList
 
-    if any(one.nominal_percent is None for one in readings):
-        return ""
     cycles: dict[int, list[str]] = defaultdict(list)
     for one in readings:
         cycles[one.cycle].append(f"{one.nominal_percent:g}")
@@ -359,16 +390,16 @@ def _list_of(readings: Sequence[ReadingContent]) -> str:
     return made.text if up == [one.direction for one in readings] else ""
 
 
-def _verdicts(draft: _Draft, visit: Visit, basis: Basis, points: Mapping[str, Sequence[Any]]) -> str:
-    said = []
+def _verdicts(draft: _Draft, visit: Visit, basis: Basis, points: Mapping[str, Sequence[Any]]) -> dict[str, str]:
+    said = {}
     for kind, taken in points.items():
         try:
             judged = judge(basis, kind, taken)
         except ValueError as error:
             draft.cells.complain(visit.runs[kind][0], "mpe_percent", str(error))
-            return ""
-        said.append(f"{kind} {judged.judgement.verdict}")
-    return ", ".join(said)
+            return {}
+        said[kind] = str(judged.judgement.verdict)
+    return said
 
 
 def _adjusted(draft: _Draft, visit: Visit) -> bool:
@@ -377,11 +408,13 @@ def _adjusted(draft: _Draft, visit: Visit) -> bool:
     if said is False and left:
         row = visit.runs[KINDS[1]][0]
         draft.cells.complain(row, "adjusted", "An as-left run stands here, but “Adjusted” says no.")
+    if said and visit.unread:
+        draft.cells.complain(visit.first, "adjusted", "It could not be tested, but “Adjusted” says yes.")
     return left if said is None else bool(said)
 
 
 def _answers(cells: Cells, visit: Visit) -> dict[str, Any]:
-    answers: dict[str, Any] = {name: visit.values[name] for name in ("performed_by", "remarks") if name in visit.values}
+    answers: dict[str, Any] = {name: visit.values[name] for name in ANSWERS if name in visit.values}
     tested: Moment = cells.values["tested_on"][visit.first]
     if tested.time is not None:
         answers["tested_at"] = tested.time.isoformat("minutes")
@@ -392,7 +425,14 @@ def _said(basis: Basis) -> str:
     from register.engineering.units import label
 
     limit = basis.tolerance(KINDS[0]).words(label(basis.unit))
-    return f"{basis.lrv} to {basis.urv} {label(basis.unit)} {basis.reference}, {basis.transfer}; {limit}"
+    return (
+        f"{basis.lrv} to {basis.urv} {label(basis.unit)} {basis.reference}, {basis.transfer}; {limit}{_assumed(basis)}"
+    )
+
+
+def _assumed(basis: Basis) -> str:
+    assumed = basis.notes.get("assumed", ())
+    return f"; assumed: {' and '.join(assumed)}" if assumed else ""
 
 
 def _substance(runs: Sequence[RunContent], basis: Basis) -> Substance:

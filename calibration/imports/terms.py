@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import datetime
+from collections.abc import Sequence
 from typing import Any
 
 from calibration.imports.history import History, last
@@ -23,11 +25,12 @@ def terms_of(
     Notes
     -----
     A point list is kept only where the register's is known to have been followed, which `past_tests` decides by the
-    readings: a list asks for points, and history is not incomplete because it followed another list.
+    readings: a list asks for points, and history is not incomplete because it followed another list. Where the day is
+    before the first range or requirement of the tag, that first one is assumed, and the basis says so.
     """
     head = history.head_on(device, visit.day)
     used = _range(cells, visit, history, device, fitting)
-    requirement = last(history.requirements[fitting.tag_id], visit.day) if fitting else None
+    requirement = _requirement(visit, history, fitting)
     stated = _tolerance(cells, visit, requirement, fitting)
     if used is None or stated is None:
         return None
@@ -61,21 +64,45 @@ def _notes(visit: Visit, head: MeasuringHead, used: Range, requirement: Requirem
         notes["tolerance"] = FROM_FILE
     elif requirement is not None:
         notes["requirement_id"] = requirement.pk
+    if assumed := _assumed(visit, used, requirement):
+        notes["assumed"] = assumed
     return notes
+
+
+def _assumed(visit: Visit, used: Range, requirement: Requirement | None) -> list[str]:
+    """What is known only from a later day than that of the test."""
+    words = []
+    if used.pk and used.effective_from > visit.day:
+        words.append(f"the range, known from {used.effective_from} on")
+    if requirement is not None and requirement.effective_from > visit.day:
+        words.append(f"the requirement, known from {requirement.effective_from} on")
+    return words
+
+
+def _requirement(visit: Visit, history: History, fitting: Fitting | None) -> Requirement | None:
+    if fitting is None:
+        return None
+    rows = history.requirements[fitting.tag_id]
+    given = any(name in visit.values for name in OF_TOLERANCE)
+    found: Requirement | None = last(rows, visit.day) if given else _in_force(rows, visit.day)
+    return found
+
+
+def _in_force(rows: Sequence[Any], day: datetime.date) -> Any:
+    """The row in force on a day; before the first one that first one, or None where there is none at all."""
+    return last(rows, day) or (rows[0] if rows else None)
 
 
 def _range(cells: Cells, visit: Visit, history: History, device: Transmitter, fitting: Fitting | None) -> Range | None:
     given: dict[str, Any] = {name: visit.values[name] for name in OF_RANGE if name in visit.values}
     if given:
         return _given_range(cells, visit, device, given)
-    used: Range | None = last(history.ranges[fitting.tag_id], visit.day) if fitting else None
+    used: Range | None = _in_force(history.ranges[fitting.tag_id], visit.day) if fitting else None
     if used is None:
         if fitting is None:
             words = f"{device} was fitted nowhere on {visit.day}: give LRV, URV and unit of the test in the file."
         else:
-            began = history.ranges[fitting.tag_id]
-            since = f"; its first one begins on {began[0].effective_from}" if began else ""
-            words = f"No range of {fitting.tag} is known for {visit.day}{since}: give LRV, URV and unit in the file."
+            words = f"No range of {fitting.tag} is known: give LRV, URV and unit in the file."
         cells.complain(visit.first, "lrv", words)
     return used
 
@@ -115,8 +142,8 @@ def _tolerance(
     if given:
         return _given_tolerance(cells, visit, given)
     if requirement is None:
-        where = f"{fitting.tag} had no requirement" if fitting else "There is no requirement"
-        cells.complain(visit.first, "mpe_percent", f"{where} on {visit.day}: give the tolerance in the file.")
+        where = f"{fitting.tag} has no requirement" if fitting else f"There is no requirement on {visit.day}"
+        cells.complain(visit.first, "mpe_percent", f"{where}: give the tolerance in the file.")
         return None
     mpe = StatedTolerance(requirement.mpe_form, requirement.mpe_percent, requirement.mpe_input, requirement.input_unit)
     if not (requirement.as_left_percent or requirement.as_left_input):

@@ -112,7 +112,8 @@ COLUMNS: Final[tuple[Column, ...]] = (
         "nominal",
         "Nominal (%)",
         Figure(-10, 110),
-        "The point aimed at, in percent of the input span. Given for all readings of a run or for none.",
+        "The point aimed at, in percent of the input span. Given for all readings of a run or for none; empty: named "
+        "from the inputs applied.",
         "25",
         READING,
         ("nominal", "point", "point (%)", "test point"),
@@ -154,6 +155,23 @@ COLUMNS: Final[tuple[Column, ...]] = (
         ("output unit",),
     ),
     Column(
+        "digital",
+        "Digital value",
+        Text(40),
+        "What the transmitter itself said it read, where that was written down too.",
+        "",
+        READING,
+        ("digital reading",),
+    ),
+    Column(
+        "digital_unit",
+        "Digital unit",
+        UnitOf((PRESSURE,)),
+        "Unit of the digital value. Empty: that of the range.",
+        "",
+        READING,
+    ),
+    Column(
         "adjusted",
         "Adjusted",
         yes_or_no,
@@ -190,6 +208,15 @@ COLUMNS: Final[tuple[Column, ...]] = (
         "",
         TEST,
         ("remark", "comment", "notes"),
+    ),
+    Column(
+        "could_not_test",
+        "Why it could not be tested",
+        Text(300),
+        "For a visit without a test: the reason, in one row without readings.",
+        "",
+        TEST,
+        ("could not be tested", "not tested because", "reason not tested"),
     ),
     Column(
         "lrv",
@@ -253,9 +280,11 @@ OF_RANGE: Final = ("lrv", "urv", "range_unit", "range_reference", "transfer")
 OF_TOLERANCE: Final = ("mpe_form", "mpe_percent", "mpe_input", "input_unit", "as_left_percent")
 #: What must be the same in all rows of a test, wherever it is given.
 OF_TEST: Final = (
-    *("adjusted", "performed_by", "remarks"),
+    *("adjusted", "performed_by", "remarks", "could_not_test"),
     *OF_RANGE,
     *OF_TOLERANCE,
 )
 #: What must be the same in all rows of a run.
 OF_RUN: Final = ("applied_standard", "measured_standard")
+#: What only somebody who has read something can have written down.
+OF_READING: Final = ("applied", "measured", "digital", *OF_RUN)

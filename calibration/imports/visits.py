@@ -7,7 +7,7 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 from typing import Any, Final
 
-from calibration.imports.test_columns import LABELS, OF_RUN, OF_TEST, Moment
+from calibration.imports.test_columns import LABELS, OF_READING, OF_RUN, OF_TEST, Moment
 from calibration.models import Run
 from register.imports.columns import Cells
 from register.imports.known import folded
@@ -19,15 +19,19 @@ KINDS: Final = (Run.Kind.AS_FOUND.value, Run.Kind.AS_LEFT.value)
 
 @dataclass(slots=True)
 class Visit:
-    """The rows of one test by their places in the table, run by run, in the order of the readings."""
+    """The rows of one test by their places in the table, run by run, in the order of the readings.
+
+    `unread` are the rows that say why it could not be tested.
+    """
 
     day: datetime.date
     runs: dict[str, list[int]] = field(default_factory=dict)
+    unread: list[int] = field(default_factory=list)
     values: dict[str, Any] = field(default_factory=dict)
 
     @property
     def rows(self) -> list[int]:
-        return [row for kind in KINDS for row in self.runs.get(kind, ())]
+        return [*(row for kind in KINDS for row in self.runs.get(kind, ())), *self.unread]
 
     @property
     def first(self) -> int:
@@ -50,11 +54,6 @@ def gathered(cells: Cells) -> list[Visit]:
         if names[0] is None and names[2] is None:
             cells.complain(row, "tag", "What was tested? Neither a tag nor a serial number stands here.")
             continue
-        for name in ("applied", "measured"):
-            if values[name][row] is None:
-                cells.complain(
-                    row, name, f"{LABELS[name]} is missing; leave a reading out as a whole if it was not taken."
-                )
         which = (
             key(names[0] or ""),
             folded(names[1] or ""),
@@ -63,13 +62,31 @@ def gathered(cells: Cells) -> list[Visit]:
             values["test"][row] or "",
         )
         visit = visits.setdefault(which, Visit(tested.day))
+        if values["could_not_test"][row] is not None:
+            visit.unread.append(row)
+            continue
+        for name in ("applied", "measured"):
+            if values[name][row] is None:
+                cells.complain(
+                    row, name, f"{LABELS[name]} is missing; leave a reading out as a whole if it was not taken."
+                )
         visit.runs.setdefault(values["run"][row] or KINDS[0], []).append(row)
     for visit in visits.values():
+        _either_read_or_not(cells, visit)
         _put_in_order(cells, visit)
         _agree(cells, visit, visit.rows, OF_TEST)
         for rows in visit.runs.values():
             _agree(cells, visit, rows, OF_RUN)
     return list(visits.values())
+
+
+def _either_read_or_not(cells: Cells, visit: Visit) -> None:
+    for row in visit.unread:
+        name = next((name for name in OF_READING if cells.values[name][row] is not None), None)
+        if name is not None:
+            cells.complain(row, name, "The same row says why it could not be tested: then nothing was read with it.")
+        elif visit.runs:
+            cells.complain(row, "could_not_test", "Other rows hold readings of this test: then it was tested.")
 
 
 def _put_in_order(cells: Cells, visit: Visit) -> None:

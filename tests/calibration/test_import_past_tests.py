@@ -191,16 +191,6 @@ def test_range_and_tolerance_in_the_file_win_and_are_kept(plant: Plant, engineer
     assert test.as_found_verdict == "fail", "0.125 % against 0.1 %"
 
 
-def test_a_test_from_before_the_register_begins_needs_its_own_terms(plant: Plant, engineer: User) -> None:
-    Tag.objects.get().fittings.update(fitted_on="2019-01-01")
-    told = said(told_tests(plant, *readings(day="2019-06-01")))
-    assert [words for _, _, words in told] == [
-        "No range of PT-2041 is known for 2019-06-01; its first one begins on 2021-03-01: give LRV, URV and unit in "
-        "the file.",
-        "PT-2041 had no requirement on 2019-06-01: give the tolerance in the file.",
-    ]
-
-
 def test_the_head_of_the_day_is_kept(plant: Plant, engineer: User) -> None:
     device = Tag.objects.get().fittings.get().transmitter
     before, after = make_head(device.type), device.head
