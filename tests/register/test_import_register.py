@@ -3,17 +3,18 @@
 from __future__ import annotations
 
 import datetime
+from typing import Any
 
 import pytest
 from django.db import connection
 from django.test.utils import CaptureQueriesContext
 
-from register import reranging
+from register import importing, reranging
 from register.auditing import Actor
 from register.editing import edit_tag
 from register.importing import ChangedMeanwhileError, import_register
 from register.imports.columns import guessed
-from register.imports.proposing import propose
+from register.imports.proposing import Proposal, propose
 from register.imports.sheet import COLUMNS
 from register.models import Area, AuditEntry, Fitting, Flag, Plant, Range, Tag, Transmitter, User
 from tests.cast import Cast, make_area, make_fitting, make_range, make_tag, make_transmitter
@@ -373,6 +374,24 @@ def test_a_dry_run_that_has_gone_stale_is_refused(plant: Plant, engineer: User) 
     with pytest.raises(ChangedMeanwhileError):
         import_register(by=Actor(engineer), reason="x", plant=plant, table=read, matching=matching, seen=seen)
     assert tag(plant, "PT-2041").service == "Other words"
+
+
+def test_a_tag_that_another_adds_between_reading_and_writing_stops_the_whole_import(
+    plant: Plant, engineer: User, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    read = table(*rows(3))
+    matching = guessed(read.head, COLUMNS)
+    seen = propose(plant=plant, table=read, matching=matching, today=plant.today())
+
+    def and_meanwhile(**asked: Any) -> Proposal:
+        found = propose(**asked)
+        make_tag(Area.objects.get(plant=plant, code="20"), "PT-3001")
+        return found
+
+    monkeypatch.setattr(importing, "propose", and_meanwhile)
+    with pytest.raises(ChangedMeanwhileError):
+        import_register(by=Actor(engineer), reason="x", plant=plant, table=read, matching=matching, seen=seen.digest())
+    assert not Tag.objects.exists() and not Transmitter.objects.exists()
 
 
 def test_a_change_elsewhere_does_not_make_a_dry_run_stale(plant: Plant, engineer: User) -> None:
