@@ -11,10 +11,12 @@
   const device = `${deviceId()}.${Math.random().toString(36).slice(2, 10)}`;
   let sequence = 0;
   let failing = "";
+  let calm = state.textContent;
   let signedOut = false;
   let timer = 0;
   let flushing = false;
   const typing = new Set();
+  const handed = new Map();
   const waiting = new Map();
 
   function deviceId() {
@@ -59,7 +61,10 @@
     if (failing && (kept || signedOut)) say("failed", kept ? `${failing} ${kept} kept on this device` : failing);
     else if (kept) say("pending", "Saving…");
     else if (typing.size) say("pending", "Not saved yet");
-    else say("", at ? `All saved ${at}` : state.textContent);
+    else {
+      if (at) calm = `All saved ${at}`;
+      say("", calm);
+    }
   }
 
   function textOf(field) {
@@ -86,6 +91,7 @@
     };
     if (seen) seen.value = entry.uuid;
     keep([...queue(), entry]);
+    handed.set(field.name, entry.text);
     return entry;
   }
 
@@ -168,19 +174,23 @@
     if (reading && event.target.matches("[data-field]")) reading.scrollIntoView({ block: "center" });
   });
 
-  // "change" does not come when a page is hidden with the field still open.
-  function leaveField() {
-    const field = document.activeElement;
-    if (field && field.matches("[data-field]") && typing.has(field.name)) {
-      field.dispatchEvent(new Event("change", { bubbles: true }));
-    }
+  // "change" does not come when a page is hidden with the field still open, nor after a button wrote into the field,
+  // nor when what was typed is what stood there before; only in the last case is there nothing to save.
+  function leaveField(field) {
+    if (!field || !field.matches("[data-field]") || !typing.has(field.name)) return;
+    const known = handed.has(field.name) ? handed.get(field.name) : (field.defaultValue || "").trim();
+    if (textOf(field) !== known) return field.dispatchEvent(new Event("change", { bubbles: true }));
+    typing.delete(field.name);
+    show();
   }
 
+  document.addEventListener("focusout", (event) => leaveField(event.target));
+
   document.addEventListener("visibilitychange", () => {
-    if (document.visibilityState === "hidden") leaveField();
+    if (document.visibilityState === "hidden") leaveField(document.activeElement);
     else flush();
   });
-  window.addEventListener("pagehide", leaveField);
+  window.addEventListener("pagehide", () => leaveField(document.activeElement));
   window.addEventListener("online", flush);
 
   document.addEventListener("htmx:configRequest", (event) => {
@@ -242,6 +252,7 @@
       if (!field) continue;
       if (field.type === "checkbox") field.checked = entry.text === field.value;
       else if (field.type !== "radio") field.value = entry.text;
+      handed.set(entry.field, entry.text);
       const seen = seenOf(field);
       if (seen) seen.value = entry.uuid;
     }

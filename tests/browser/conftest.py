@@ -71,7 +71,9 @@ def chromium() -> Iterator[Browser]:
         pytest.fail(f"There is no {CHROMIUM}: install Debian's package “chromium”.", pytrace=False)
     # A busy machine makes a page slow, not wrong.
     expect.set_options(timeout=20_000)
-    with sync_playwright() as playwright:
+    with pytest.MonkeyPatch.context() as patch, sync_playwright() as playwright:
+        # The loop that Playwright runs in this thread would keep Django from its database.
+        patch.setenv("DJANGO_ALLOW_ASYNC_UNSAFE", "1")
         browser = playwright.chromium.launch(executable_path=CHROMIUM, args=SWITCHES)
         yield browser
         browser.close()

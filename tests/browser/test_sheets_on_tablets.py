@@ -6,7 +6,7 @@ import re
 from collections.abc import Callable, Iterator
 
 import pytest
-from playwright.sync_api import Browser, BrowserContext, Page, expect, sync_playwright
+from playwright.sync_api import Browser, BrowserContext, Page, expect
 from pytest_django.live_server_helper import LiveServer
 
 from calibration.models import Entry, Sheet, Test
@@ -19,14 +19,6 @@ from tests.calibration.at_work import Device, opened, to_as_found, to_signature
 pytestmark = [pytest.mark.browser, pytest.mark.django_db(transaction=True)]
 SIZES = {"upright": {"width": 768, "height": 1024}, "lying": {"width": 1280, "height": 800}}
 Tablet = Callable[..., Page]
-
-
-@pytest.fixture(scope="module")
-def chromium() -> Iterator[Browser]:
-    with sync_playwright() as playwright:
-        browser = playwright.chromium.launch(executable_path="/usr/bin/chromium", args=["--no-sandbox"])
-        yield browser
-        browser.close()
 
 
 @pytest.fixture
@@ -173,6 +165,23 @@ def test_the_sign_button_serves_pads_without_a_minus(tablet: Tablet, live_server
     page.fill("[name='as-found.1.applied']", "0.02")
     page.get_by_role("button", name="Change the sign of Applied").first.click()
     assert page.input_value("[name='as-found.1.applied']") == "-0.02"
+    page.locator("[name='as-found.1.applied']").blur()
+    expect(page.locator("#saving")).to_contain_text("All saved")
+    assert Draft(Sheet.objects.get()).text("as-found.1.applied") == "-0.02"
+
+
+def test_what_is_typed_again_as_it_stood_leaves_nothing_to_save(
+    tablet: Tablet, live_server: LiveServer, device: Device
+) -> None:
+    page = shown(tablet("technician"), live_server, device.sheet)
+    leave(page, "as-found.1.measured", "4.01")
+    expect(page.locator("#saving")).to_contain_text("All saved")
+    page.fill("[name='as-found.1.measured']", "4.0")
+    expect(page.locator("#saving")).to_contain_text("Not saved yet")
+    page.fill("[name='as-found.1.measured']", "4.01")
+    page.locator("[name='as-found.1.measured']").blur()
+    expect(page.locator("#saving")).to_contain_text("All saved")
+    assert Entry.objects.filter(field="as-found.1.measured").count() == 1
 
 
 @pytest.mark.parametrize("size", SIZES)
