@@ -123,6 +123,21 @@ def test_the_reason_stays_where_the_register_has_changed_meanwhile(plant: Plant,
     assert Test.objects.count() == 1
 
 
+def test_the_page_of_a_test_says_what_was_assumed_and_what_was_named(plant: Plant, client: Client) -> None:
+    Tag.objects.get().fittings.update(fitted_on="2019-01-01")
+    lines = [
+        {name: text for name, text in line.items() if name != "Nominal (%)"} for line in readings(day="2019-06-01")
+    ]
+    check = checked(client, text_of(lines), "old.csv")
+    page = client.get(check).content.decode()
+    assert "Assumed for 1 test" in page and "assumed: the range, known from 2021-03-01 on" in page
+    client.post(check.replace("check/", "bring-in/"), {"reason": "binders"})
+    page = client.get(f"/tests/{Test.objects.get().pk}/").content.decode()
+    assert "the range, known from 2021-03-01 on; the test is older" in page
+    assert "the requirement, known from 2021-03-01 on; the test is older" in page
+    assert "named from the inputs applied" in page
+
+
 def test_a_matching_that_lacks_something_keeps_what_was_chosen(plant: Plant, client: Client) -> None:
     match = client.post(START, {"file": SimpleUploadedFile("old.csv", text_of(readings()))})["Location"]
     page = client.post(match, {"column-0": "remarks", "column-1": "tested_on"}).content.decode()
