@@ -44,6 +44,8 @@ class History:
     ranges: dict[int, list[Any]] = field(default_factory=lambda: defaultdict(list))
     restarts: dict[int, list[datetime.date]] = field(default_factory=lambda: defaultdict(list))
     tests: dict[int, list[Mapping[str, Any]]] = field(default_factory=lambda: defaultdict(list))
+    #: LRV, URV and transfer of tests made on the very day from which a transmitter must prove itself, by test.
+    made_in: dict[int, tuple[float | None, float | None, str | None]] = field(default_factory=dict)
     deferrals: dict[int, list[Deferral]] = field(default_factory=lambda: defaultdict(list))
     flags: dict[int, list[tuple[int, bool]]] = field(default_factory=lambda: defaultdict(list))
 
@@ -77,7 +79,20 @@ def read(tag_ids: Collection[int]) -> History:
         .values_list("tag_id", "severity", "accepted_at")
     ):
         history.flags[tag_id].append((severity, accepted_at is not None))
+    history.made_in = _ranges_of_the_day(history)
     return history
+
+
+def _ranges_of_the_day(history: History) -> dict[int, tuple[float | None, float | None, str | None]]:
+    """Ranges of the few tests of which it matters; those of all tests would be read from as many long records."""
+    ids = []
+    for tag in history.tags:
+        if tag.current_fitting is not None:
+            since = restarted_on(tag, tag.current_fitting, history)
+            ids += [test["id"] for test in history.tests.get(tag.pk, []) if test["tested_on"] == since]
+    columns = ("id", "current_record__lrv_si", "current_record__urv_si", "current_record__transfer")
+    rows = Test.objects.filter(pk__in=ids).order_by().values_list(*columns)
+    return {test_id: (lrv, urv, transfer) for test_id, lrv, urv, transfer in rows}
 
 
 def _tests(ids: Sequence[int]) -> Iterable[Mapping[str, Any]]:
@@ -96,9 +111,6 @@ def _tests(ids: Sequence[int]) -> Iterable[Mapping[str, Any]]:
             "as_left_verdict",
             "as_found_ratio",
             "as_left_ratio",
-            "current_record__lrv_si",
-            "current_record__urv_si",
-            "current_record__transfer",
         )
     )
 
@@ -165,7 +177,7 @@ def _tested(standing: Standing, tag: Tag, fitting: Fitting, history: History) ->
         standing.as_left_ratio = last["as_left_ratio"]
         ratio = last["as_left_ratio"] if last["as_left_verdict"] else last["as_found_ratio"]
         standing.error_rank = NO_ERROR if ratio is None else -abs(ratio)
-    accepted = [test["tested_on"] for test in tests if _proves(test, since, tag.current_range)]
+    accepted = [test["tested_on"] for test in tests if _proves(test, since, tag.current_range, history)]
     standing.last_accepted_on = accepted[-1] if accepted else None
     requirement = history.requirements.get(tag.pk)
     if not accepted:
@@ -216,19 +228,19 @@ def _belongs(test: Mapping[str, Any], fitting: Fitting) -> bool:
     return bool(test["transmitter_id"] == fitting.transmitter_id and test["tested_on"] >= fitting.fitted_on)
 
 
-def _proves(test: Mapping[str, Any], since: datetime.date, span: Range | None) -> bool:
+def _proves(test: Mapping[str, Any], since: datetime.date, span: Range | None, history: History) -> bool:
     """Whether a test shows that the transmitter is right as it is fitted and ranged now.
 
     A test of the very day on which the work was done counts where it was made in the present range.
     """
     if not test["accepted"] or test["state"] == Test.State.SENT_BACK or test["tested_on"] < since:
         return False
-    if test["tested_on"] > since or span is None or test["current_record__lrv_si"] is None:
+    if test["tested_on"] > since or span is None:
         return True
-    return bool(
-        test["current_record__transfer"] == span.transfer
-        and _equal(span.lrv_si, span.urv_si, test["current_record__lrv_si"], test["current_record__urv_si"])
-    )
+    lrv, urv, transfer = history.made_in[test["id"]]
+    if lrv is None or urv is None:
+        return True
+    return transfer == span.transfer and _equal(span.lrv_si, span.urv_si, lrv, urv)
 
 
 def _schedule(standing: Standing, requirement: Requirement, last_accepted: datetime.date) -> None:

@@ -9,7 +9,7 @@ from urllib.parse import urlencode
 
 @dataclass(frozen=True, slots=True)
 class Listed:
-    """A page of a list: its path and query; `deep` where the page in the middle of the list is meant, not the first."""
+    """A page of a list: its path and query; `deep` where a page far down the list is meant, not the first."""
 
     path: str
     query: tuple[tuple[str, str], ...]
@@ -21,14 +21,14 @@ class Listed:
 
     def __str__(self) -> str:
         asked = ", ".join(f"{name} {value}" for name, value in self.query) or "all"
-        return f"{self.path} {asked}{', page in the middle' if self.deep else ''}"
+        return f"{self.path} {asked}{', a deep page' if self.deep else ''}"
 
 
 def _each(path: str, *queries: dict[str, str]) -> list[Listed]:
     return [Listed(path, tuple(query.items())) for query in queries]
 
 
-def _middle(path: str, **query: str) -> Listed:
+def _deep(path: str, **query: str) -> Listed:
     return Listed(path, tuple(query.items()), deep=True)
 
 
@@ -60,6 +60,8 @@ REGISTER: Final = [
         {"text": "p"},
         {"text": "PT-00"},
         {"text": "north cooling"},
+        {"text": "PT north"},
+        {"text": "PT FT"},
         {"text": "PT-001003"},
         {"text": "nothingofthekind"},
         {"area": "300", "state": "not due"},
@@ -70,8 +72,8 @@ REGISTER: Final = [
         {"text": "steam compressor", "area": "500", "state": "not due"},
         {"service": "unfitted", "flag": "caution"},
     ),
-    _middle("/register/"),
-    _middle("/register/", state="not due", sort="error"),
+    _deep("/register/"),
+    _deep("/register/", state="not due", sort="error"),
 ]
 DUE: Final = [
     *_each(
@@ -94,7 +96,7 @@ DUE: Final = [
         {"text": "pump", "state": "overdue"},
         {"text": "FT"},
     ),
-    _middle("/due/"),
+    _deep("/due/"),
 ]
 #: Lists for which nobody set an aim.
 OTHERS: Final = [

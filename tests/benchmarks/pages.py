@@ -16,6 +16,8 @@ BARE: Final = "/bare/"
 PAGE: Final = 50
 #: So many pages of lists lie between two requests for the bare page.
 BETWEEN: Final = 5
+#: A deep page is so many pages down the list, or halfway down a shorter one.
+DEEP: Final = 200
 AGAINST_BARE, AGAINST_FEW = 4.0, 1.3
 
 
@@ -35,7 +37,10 @@ def measure(many: Mapping[str, str], few: Mapping[str, str], *, tags: int, few_t
         browsers = Browser(many_port), Browser(few_port)
         for browser in browsers:
             browser.sign_in("engineer", "well-kept secret 7")
-        sites = [_Site(browser, held // (2 * PAGE)) for browser, held in zip(browsers, (tags, few_tags), strict=True)]
+        sites = [
+            _Site(browser, min(DEEP, held // (2 * PAGE)))
+            for browser, held in zip(browsers, (tags, few_tags), strict=True)
+        ]
         for _ in range(rounds):
             _round(sites)
         tables = [
@@ -54,18 +59,18 @@ def measure(many: Mapping[str, str], few: Mapping[str, str], *, tags: int, few_t
 class _Site:
     """One server with the addresses that are asked of it, and the times that it took."""
 
-    def __init__(self, browser: Browser, middle: int) -> None:
+    def __init__(self, browser: Browser, deep: int) -> None:
         self.browser = browser
-        self.addresses = {listed: self._found(listed, middle) for listed in (*REGISTER, *DUE, *OTHERS)}
+        self.addresses = {listed: self._found(listed, deep) for listed in (*REGISTER, *DUE, *OTHERS)}
         self.rows = {listed: self._get(address).rows for listed, address in self.addresses.items()}
         self.bare: list[float] = []
         self.times: dict[Listed, list[float]] = {listed: [] for listed in self.addresses}
         self._get(BARE)
 
-    def _found(self, listed: Listed, middle: int) -> str:
-        """The address itself, or that of the page in the middle, walked to page by page."""
+    def _found(self, listed: Listed, deep: int) -> str:
+        """The address itself, or that of a deep page, walked to page by page."""
         address = listed.address
-        for _ in range(middle if listed.deep else 0):
+        for _ in range(deep if listed.deep else 0):
             later = self._get(address).later
             if not later:
                 break
