@@ -96,7 +96,8 @@ def rating_at(temperature_k: ArrayLike | None, table: Table) -> Any:
         return plain(np.full_like(temperature, np.nan))
     listed, ratings = np.array(table, dtype=float).T
     found = np.interp(_onto(temperature, listed), listed, ratings, left=np.nan, right=np.nan)
-    return plain(found)
+    # With a single listed temperature numpy takes one that is not a number for it.
+    return plain(np.where(np.isnan(temperature), np.nan, found))
 
 
 def least_rating(min_k: ArrayLike | None, max_k: ArrayLike | None, table: Table) -> Any:

@@ -103,3 +103,10 @@ def test_demands_on_and_about_their_limits_are_told_apart_as_for_one_tag() -> No
 
 def test_a_sound_fleet_is_clear() -> None:
     assert not severities(fleet_of([SOUND] * 3)).any()
+
+
+def test_a_temperature_that_is_not_known_has_no_rating_even_in_a_table_of_one_line() -> None:
+    tag = changed(process={"process_min_k": None, "process_max_k": None}, type={"body_rating": ((293.0, 1e7),)})
+    found = severities(fleet_of([tag, SOUND]))
+    assert found.tolist() == alone([tag, SOUND])
+    assert found[0, list(CHECKS).index("static_pressure")] == 1
