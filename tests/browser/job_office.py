@@ -38,7 +38,7 @@ def days_ago(days: int) -> str:
 def fill(page: Page, texts: Mapping[str, str]) -> None:
     """Type into fields by their labels, which may be followed by “if any”."""
     for label, text in texts.items():
-        field = page.get_by_label(re.compile(rf"^{re.escape(label)}( if any)?$")).first
+        field = page.get_by_label(re.compile(rf"^\s*{re.escape(label)}( if any)?\s*$")).first
         if field.evaluate("field => field.tagName") == "SELECT":
             field.select_option(label=text)
         else:

@@ -8,7 +8,7 @@ import socket
 import subprocess
 import sys
 import time
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
@@ -27,6 +27,7 @@ class Site:
 
     url: str
     words: str
+    environ: Mapping[str, str]
 
     @property
     def code(self) -> str:
@@ -34,6 +35,19 @@ class Site:
         found = re.search(r"one-time code: (\S+)", self.words)
         assert found, self.words
         return found[1]
+
+    def manage(self, *arguments: str) -> str:
+        """Run another command of `manage.py` on the same data; what it printed."""
+        done = subprocess.run(
+            [sys.executable, "manage.py", *arguments],
+            cwd=TOP,
+            env=dict(self.environ),
+            capture_output=True,
+            text=True,
+            check=False,
+        )
+        assert done.returncode == 0, done.stdout + done.stderr
+        return done.stdout
 
 
 @contextmanager
@@ -61,7 +75,8 @@ def started(data: Path, *arguments: str) -> Iterator[Site]:
             stderr=subprocess.STDOUT,
         )
     try:
-        yield _when_ready(process, log, f"http://127.0.0.1:{port}")
+        url = f"http://127.0.0.1:{port}"
+        yield Site(url, _said(process, log, url), environ)
     finally:
         process.terminate()
         try:
@@ -71,14 +86,15 @@ def started(data: Path, *arguments: str) -> Iterator[Site]:
             process.wait()
 
 
-def _when_ready(process: subprocess.Popen[bytes], log: Path, url: str) -> Site:
+def _said(process: subprocess.Popen[bytes], log: Path, url: str) -> str:
+    """What the site printed, once it answers."""
     until = time.monotonic() + PATIENCE_S
     while time.monotonic() < until:
         words = log.read_text()
         if f"Foundleft is at {url}/" in words:
             # The words are printed at one go, but the file may be read in the middle of it.
             time.sleep(0.2)
-            return Site(url, log.read_text())
+            return log.read_text()
         if process.poll() is not None:
             raise AssertionError(f"manage.py start ended with {process.returncode}:\n{words}")
         time.sleep(0.1)
