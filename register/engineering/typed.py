@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import math
 import re
-from decimal import ROUND_HALF_UP, Decimal
+from decimal import ROUND_HALF_UP, Context, Decimal
 from functools import cache
+from typing import Final
 
 MINUS = "\N{MINUS SIGN}"
 
@@ -67,6 +68,10 @@ def decimals_of(text: str) -> int:
     return max(0, len(fraction) - int(exponent))
 
 
+#: Digits enough for any float written out in full.
+_AMPLE: Final = Context(prec=800)
+
+
 def format_number(value: float, decimals: int, *, signed: bool = False) -> str:
     """Write a number with a fixed count of decimals and a true minus sign.
 
@@ -84,7 +89,7 @@ def format_number(value: float, decimals: int, *, signed: bool = False) -> str:
     Halves of the last digit go away from zero (ISO 80000-1 Annex B, rule B; clause from memory), judged on the
     shortest decimal form of the float: 2.675 gives 2.68, as a reader of "2.675" expects.
     """
-    rounded = Decimal(repr(float(value))).quantize(_step(decimals), rounding=ROUND_HALF_UP)
+    rounded = Decimal(repr(float(value))).quantize(_step(decimals), rounding=ROUND_HALF_UP, context=_AMPLE)
     sign = MINUS if rounded < 0 else "+" if signed and rounded > 0 else ""
     return f"{sign}{abs(rounded):f}"
 
@@ -95,7 +100,7 @@ def format_significant(value: float, digits: int = 6) -> str:
     if not number:
         return "0"
     decimals = digits - 1 - number.adjusted()
-    rounded = number.quantize(_step(decimals), rounding=ROUND_HALF_UP)
+    rounded = number.quantize(_step(decimals), rounding=ROUND_HALF_UP, context=_AMPLE)
     return _bare(rounded).replace("-", MINUS)
 
 

@@ -183,3 +183,8 @@ def test_any_text_is_either_a_finite_number_or_refused(text: str) -> None:
     else:
         assert math.isfinite(value)
         assert decimals_of(text) >= 0
+
+
+@pytest.mark.parametrize("value", [5e-324, 1.7976931348623157e308, -2.5e200])
+def test_the_smallest_and_the_greatest_float_can_be_written(value: float) -> None:
+    assert float(format_number(value, 340).replace("−", "-")) == pytest.approx(value, rel=1e-12)
