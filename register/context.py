@@ -53,7 +53,7 @@ SECTIONS: Final = (
     Section("Sheets", "sheets", "read", ("sheet",)),
     Section("Tests", "tests", "read", ("test", "import-tests")),
     Section("Transmitters", "transmitters", "read", ("transmitter", "intervention")),
-    Section("Types and heads", "types", "read", ("type", "head", "maker")),
+    Section("Types and heads", "types", "read", ("type", "head", "maker", "makers")),
     Section("Standards", "standards", "read", ("standard", "certificate")),
     Section("Point lists", "point-lists", "read", ("point-list",)),
     Section("Guidance", "guidance", "read", ("guidance",)),

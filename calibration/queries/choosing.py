@@ -8,6 +8,7 @@ from dataclasses import dataclass
 from typing import Final
 
 from calibration.models import Certificate, Run, Sheet, Standard
+from register.figures import typed
 from register.models import Plant
 
 Kind = Standard.Kind
@@ -36,7 +37,7 @@ class Candidate:
     @property
     def label(self) -> str:
         standard = self.standard
-        held = f"{standard.name}, {standard.low} to {standard.high} {_unit(standard.unit)}"
+        held = f"{standard.name}, {typed(standard.low)} to {typed(standard.high)} {_unit(standard.unit)}"
         if self.objection:
             return f"{held} – {'certificate lapsed' if self.lapsed else standard.get_state_display()}"
         assert self.certificate is not None

@@ -256,6 +256,7 @@
       const seen = seenOf(field);
       if (seen) seen.value = entry.uuid;
     }
+    show();
     flush();
   }
 
