@@ -72,15 +72,25 @@ class Browser:
         body = urlencode(given) if given else None
         if body:
             headers["Content-Type"] = "application/x-www-form-urlencoded"
-        start = time.perf_counter()
-        self._connection.request(method, address, body, headers)
-        response = self._connection.getresponse()
-        content = response.read()
-        spent = time.perf_counter() - start
+        try:
+            response, content, spent = self._exchange(method, address, body, headers)
+        except http.client.RemoteDisconnected:
+            # The site hangs up on who has been silent for long, as this browser is while the other site is asked.
+            self._connection.close()
+            response, content, spent = self._exchange(method, address, body, headers)
         for cookie in response.headers.get_all("Set-Cookie") or ():
             name, _, value = cookie.partition(";")[0].partition("=")
             self._cookies[name] = value
         return Answer(response.status, content.decode(), spent)
+
+    def _exchange(
+        self, method: str, address: str, body: str | None, headers: dict[str, str]
+    ) -> tuple[http.client.HTTPResponse, bytes, float]:
+        start = time.perf_counter()
+        self._connection.request(method, address, body, headers)
+        response = self._connection.getresponse()
+        content = response.read()
+        return response, content, time.perf_counter() - start
 
     def close(self) -> None:
         self._connection.close()
