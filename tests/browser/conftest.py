@@ -79,9 +79,9 @@ def chromium() -> Iterator[Browser]:
         browser.close()
 
 
-@pytest.fixture(scope="module")
+@pytest.fixture(scope="session")
 def demonstration(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Site]:
-    """The site with its demonstration plants."""
+    """The site with its demonstration plants; loading them takes so long that all modules look at the same."""
     with started(tmp_path_factory.mktemp("demonstration") / "data") as site:
         yield site
 

@@ -6,7 +6,7 @@ import re
 from collections.abc import Callable, Iterable, Iterator
 from typing import Any, Final
 
-from axe_playwright_python.sync_playwright import Axe
+from axe_playwright_python.base import AXE_SCRIPT
 from playwright.sync_api import Page
 
 from tests.browser.hands import Hand
@@ -15,6 +15,8 @@ _NUMBER = re.compile(r"/\d+(?=/)")
 _UUID = re.compile(r"/[0-9a-f]{8}-[0-9a-f-]{27}(?=/)")
 #: Links that lead out of the page into a file, or back to the same page for another plant.
 NOT_PAGES: Final = re.compile(r"/choose/|\.csv|\.xlsx|/static/|blank")
+#: Rows of long tables beyond these repeat what was looked at, and cost axe a second a page.
+ALIKE: Final = "tbody tr:nth-child(n+9)"
 SERIOUS: Final = {"serious", "critical"}
 
 
@@ -82,15 +84,24 @@ def too_wide(page: Page) -> list[str]:
 
 def barriers(hand: Hand, *, only_contrast: bool = False) -> list[str]:
     """What axe finds serious or critical, one line for each rule with the first elements it names."""
+    page = hand.page
+    if not page.evaluate("'axe' in window"):
+        page.evaluate(AXE_SCRIPT)
     options: dict[str, Any] = {"resultTypes": ["violations"], "preload": False}
     if only_contrast:
         options["runOnly"] = ["color-contrast"]
-    found = Axe().run(hand.page, options=options).response["violations"]
-    return [
-        f"{one['id']} ({one['impact']}): " + "; ".join(" ".join(node["target"]) for node in one["nodes"][:3])
-        for one in found
-        if one["impact"] in SERIOUS
-    ]
+    found: list[dict[str, Any]] = page.evaluate(
+        """async ([options, alike]) => {
+            const results = await axe.run({ exclude: [alike] }, options);
+            return results.violations.map((rule) => ({
+                id: rule.id,
+                impact: rule.impact,
+                places: rule.nodes.slice(0, 3).map((node) => node.target.join(" ")),
+            }));
+        }""",
+        [options, ALIKE],
+    )
+    return [f"{one['id']} ({one['impact']}): {'; '.join(one['places'])}" for one in found if one["impact"] in SERIOUS]
 
 
 def shown_in(page: Page, theme: str) -> None:
