@@ -41,7 +41,7 @@ class Candidate:
         if self.objection:
             return f"{held} – {'certificate lapsed' if self.lapsed else standard.get_state_display()}"
         assert self.certificate is not None
-        return f"{held} – certificate relied on until {self.certificate.valid_until}"
+        return f"{held} – certificate until {self.certificate.valid_until}"
 
 
 def candidates(plant: Plant, on: datetime.date, *, also: Iterable[int | None] = ()) -> list[Candidate]:
