@@ -350,11 +350,23 @@ def words_of(text: str) -> frozenset[str]:
 
 
 def search_words(history: History) -> dict[int, set[str]]:
-    """Words of each tag: number, service, area, maker and serial number of what is fitted."""
+    """Words kept of each tag: number, service, area, maker and serial number of what is fitted."""
     words = {}
     for tag in history.tags:
-        texts = [tag.number, tag.service, tag.area.code, tag.area.name]
+        texts = [tag.service, tag.area.code, tag.area.name]
         if tag.current_fitting:
             texts += [tag.current_fitting.transmitter.maker.name, tag.current_fitting.transmitter.serial]
-        words[tag.pk] = set().union(*map(words_of, texts))
+        words[tag.pk] = set(words_of_number(tag.number)).union(*map(words_of, texts))
     return words
+
+
+def words_of_number(number: str) -> frozenset[str]:
+    """Words of a tag number without those that it begins with: by these it is found itself, in the order of numbers.
+
+    Beginnings with a digit, and of numbers with other letters than A to Z, are kept: `calibration.queries.wording`
+    does not look them up among the numbers.
+    """
+    beginning = number.casefold()
+    return frozenset(
+        word for word in words_of(number) if not (number.isascii() and word[0].isalpha() and beginning.startswith(word))
+    )

@@ -12,7 +12,7 @@ from django.views.decorators.http import require_GET, require_POST
 from calibration.contexts import rows
 from calibration.models import ScheduleState
 from calibration.queries import listing
-from calibration.queries.listing import Asked
+from calibration.queries.asking import Asked
 from calibration.views import lists
 from register import access
 from register.fragments import answer

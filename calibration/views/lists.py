@@ -17,7 +17,8 @@ from calibration.contexts import rows
 from calibration.models import ScheduleState, Verdict
 from calibration.models.standing import schedule_state
 from calibration.queries import listing
-from calibration.queries.listing import Asked, Page
+from calibration.queries.asking import NO_TEST, Asked
+from calibration.queries.listing import Page
 from register import exporting
 from register.auditing import Actor
 from register.models import Criticality, Plant
@@ -31,7 +32,7 @@ FLAGS: Final[Choices] = (
     ("accepted", "accepted"),
     ("none", "none open"),
 )
-VERDICTS: Final[Choices] = (*Verdict.choices, (listing.NO_TEST, "no test"))
+VERDICTS: Final[Choices] = (*Verdict.choices, (NO_TEST, "no test"))
 FILE_HEAD: Final = (
     "tag",
     "service",

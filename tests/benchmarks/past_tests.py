@@ -56,9 +56,9 @@ class Visits:
         found = rng.normal(0.0, 0.25, size=len(row))
         found[last] = np.clip(found[last], -LIMIT, LIMIT)
         failed = last & (end == "fail")
-        found[failed] = 1.6 * LIMIT
+        found[failed] = LIMIT * rng.uniform(1.5, 4.0, size=int(failed.sum()))
         left = np.where(np.abs(found) > 0.7 * LIMIT, rng.normal(0.0, 0.05, size=len(row)), np.nan)
-        left[failed] = 1.2 * LIMIT
+        left[failed] = LIMIT * rng.uniform(1.05, 1.4, size=int(failed.sum()))
         return cls(chosen[row] + KEY, day, found, left, last & (end == "incomplete"))
 
     @property

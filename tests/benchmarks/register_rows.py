@@ -17,19 +17,22 @@ from tests.benchmarks.loading import load
 
 #: Everything of a tag has the key of the tag beyond that of the patterns.
 KEY: Final = 1000
+#: Days over which tags were commissioned.
+YEARS: Final = 3 * 365
 
 
 @transaction.atomic
 def load_register(plant: Plant, areas: list[Area], kinds: list[Built], plan: Plan, tests_each: int) -> None:
     """Load all tags of a plan and what belongs to them; every row of a tag has the same key as the tag."""
     today = plant.today()
-    first = np.datetime64(today) - (INTERVAL * (tests_each + 1) + 1000)
+    # Before the first test of any tag; not on one day, as no plant was built on one.
+    first = np.datetime64(today) - (INTERVAL * (tests_each + 1) + 1000) - np.arange(len(plan.kind)) % YEARS
     point_list = plant.point_lists.order_by("pk").first()
     assert point_list is not None
     for number, built in enumerate(kinds):
         prefix = KINDS[number][1]
         for chosen in np.array_split(np.flatnonzero(plan.kind == number), 1 + len(plan.kind) // 20000):
-            _load_kind(plant, areas, built, plan, chosen, prefix, point_list.pk, str(first))
+            _load_kind(plant, areas, built, plan, chosen, prefix, point_list.pk, first[chosen].astype(str).tolist())
     _defer(plant, plan, today)
 
 
@@ -41,7 +44,7 @@ def _load_kind(
     chosen: NDArray[np.int64],
     prefix: str,
     point_list_id: int,
-    day: str,
+    days: list[str],
 ) -> None:
     keys = (chosen + KEY).tolist()
     fitted = plan.state[chosen] != "nothing fitted"
@@ -60,7 +63,7 @@ def _load_kind(
         current_range_id=keys,
         current_fitting_id=at,
     )
-    load(built.range, len(keys), id=keys, tag_id=keys, effective_from=repeat(day, len(keys)))
+    load(built.range, len(keys), id=keys, tag_id=keys, effective_from=days)
     load(
         built.transmitter,
         len(keys),
@@ -70,16 +73,18 @@ def _load_kind(
         whereabouts=np.where(fitted, Transmitter.Whereabouts.FITTED, Transmitter.Whereabouts.STORES).tolist(),
     )
     fittings = [key for key in at if key is not None]
-    like = Fitting(fitted_reason="commissioned", fitted_on=datetime.date.fromisoformat(day))
-    load(like, len(fittings), id=fittings, tag_id=fittings, transmitter_id=fittings)
-    required = (chosen[plan.state[chosen] != "no requirement"] + KEY).tolist()
+    fitted_on = [day for day, there in zip(days, fitted.tolist(), strict=True) if there]
+    like = Fitting(fitted_reason="commissioned")
+    load(like, len(fittings), id=fittings, tag_id=fittings, transmitter_id=fittings, fitted_on=fitted_on)
+    is_required = plan.state[chosen] != "no requirement"
+    required = (chosen[is_required] + KEY).tolist()
     load(
         built.requirement,
         len(required),
         id=required,
         tag_id=required,
         point_list_id=repeat(point_list_id, len(required)),
-        effective_from=repeat(day, len(required)),
+        effective_from=[day for day, needed in zip(days, is_required.tolist(), strict=True) if needed],
     )
 
 

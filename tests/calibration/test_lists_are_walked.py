@@ -19,7 +19,7 @@ import pytest
 from calibration.models import ScheduleState, SearchWord, Standing
 from calibration.models.standing import NO_DATE
 from calibration.queries import listing, standings
-from calibration.queries.listing import Asked
+from calibration.queries.asking import FLAGS, ORDERS, Asked
 from register.models import Area, Plant, Tag
 from tests import cast as people
 
@@ -42,7 +42,9 @@ def plant(cast: people.Cast) -> Plant:
 
 def made(plant: Plant, area: Area, number: int, draw: random.Random) -> Tag:
     tag = people.make_tag(
-        area, f"{draw.choice(['FT', 'pt', 'LT'])}-{number}", service=" ".join(draw.sample(WORDS, 2)).capitalize()
+        area,
+        f"{draw.choice(['FT', 'pt', 'LT', '2PT', 'Öl'])}-{number}",
+        service=" ".join(draw.sample(WORDS, 2)).capitalize(),
     )
     phase = draw.choice([Phase.NOTHING_FITTED, Phase.NOT_IN_SERVICE, Phase.NEVER_TESTED, *[Phase.SCHEDULED] * 6, 3])
     due = TODAY + datetime.timedelta(days=draw.choice([-200, -60, -1, 0, 1, 41, 42, 43, 300]))
@@ -70,7 +72,8 @@ def made(plant: Plant, area: Area, number: int, draw: random.Random) -> Tag:
         row.deferred_until = draw.choice([None, None, None, TODAY - datetime.timedelta(days=1), TODAY])
     row.save()
     SearchWord.objects.bulk_create(
-        SearchWord(plant=plant, tag=tag, word=word) for word in standings.words_of(f"{tag.number} {tag.service}")
+        SearchWord(plant=plant, tag=tag, word=word)
+        for word in standings.words_of_number(tag.number) | standings.words_of(tag.service)
     )
     return tag
 
@@ -93,7 +96,7 @@ def meets(row: Standing, asked: Asked) -> bool:
     if asked.flag == "accepted":
         checks.append(row.accepted_flags > 0)
     elif asked.flag:
-        checks.append(row.flag_rank == listing.FLAGS[asked.flag])
+        checks.append(row.flag_rank == FLAGS[asked.flag])
     return all(checks)
 
 
@@ -125,18 +128,31 @@ def _at(asked: Asked, **place: str) -> Asked:
     return Asked(**{**asked.parts, **place})
 
 
-SORTS = [f"{sign}{name}" for sign in ("", "-") for name in listing.ORDERS]
+SORTS = [f"{sign}{name}" for sign in ("", "-") for name in ORDERS]
 ALONE: list[dict[str, Any]] = [
     {},
     *({"state": state} for state in ScheduleState.values),
-    *({"flag": flag} for flag in [*listing.FLAGS, "accepted"]),
+    *({"flag": flag} for flag in [*FLAGS, "accepted"]),
     *({"service": service} for service in ("in", "out", "unfitted")),
     *({"verdict": verdict} for verdict in ("pass", "fail", "none")),
     {"area": "30~x"},
     {"criticality": "safety"},
     *(
         {"text": text}
-        for text in ("feed", "feeder", "feed water", "ft", "FT-7", "pt 1", "steam drum f", "steam nothing")
+        for text in (
+            "feed",
+            "feeder",
+            "feed water",
+            "ft",
+            "FT-7",
+            "pt 1",
+            "steam drum f",
+            "steam nothing",
+            "ft pt",
+            "PT pt-1 water",
+            "öl",
+            "2p",
+        )
     ),
 ]
 
