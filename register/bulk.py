@@ -43,7 +43,8 @@ def insert(model: type[models.Model], columns: Sequence[str], rows: Iterable[Seq
     adapted = _adapted(rows, [_adapter(field) for field in fields])
     with connection.cursor() as cursor:
         if connection.vendor == "postgresql":
-            with cursor.copy(f"COPY {table} ({names}) FROM STDIN") as copy:
+            # What the driver raises at COPY does not pass through Django, which would name it alike for both databases.
+            with connection.wrap_database_errors, cursor.copy(f"COPY {table} ({names}) FROM STDIN") as copy:
                 for row in adapted:
                     copy.write_row(row)
         else:
