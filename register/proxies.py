@@ -11,8 +11,13 @@ from collections.abc import Callable
 
 from django.conf import settings
 from django.http import HttpRequest, HttpResponse
+from django.http.request import split_domain_port
+
+from register.serving import is_loopback
 
 FORWARDED = ("HTTP_X_FORWARDED_FOR", "HTTP_X_FORWARDED_PROTO", "HTTP_X_FORWARDED_HOST", "HTTP_FORWARDED")
+#: What proxies say of themselves besides.
+PASSED_ON = (*FORWARDED, "HTTP_VIA", "HTTP_X_REAL_IP")
 
 
 class ProxyMiddleware:
@@ -22,6 +27,7 @@ class ProxyMiddleware:
         self.get_response = get_response
 
     def __call__(self, request: HttpRequest) -> HttpResponse:
+        request.was_passed_on = any(name in request.META for name in PASSED_ON)  # type: ignore[attr-defined]
         if trusted(request.META.get("REMOTE_ADDR", "")):
             request.META["REMOTE_ADDR"] = origin(request)
         else:
@@ -52,3 +58,16 @@ def origin(request: HttpRequest) -> str:
         if not trusted(hop):
             break
     return address
+
+
+def is_from_this_machine(request: HttpRequest) -> bool:
+    """Whether somebody asks at the machine that serves: from a loopback address, by a loopback name, through no proxy.
+
+    The address alone says little: every request through a proxy on the machine comes from there.
+    """
+    name, _port = split_domain_port(request.get_host())
+    return (
+        is_loopback(request.META.get("REMOTE_ADDR", ""))
+        and is_loopback(name.strip("[]"))
+        and not getattr(request, "was_passed_on", False)
+    )

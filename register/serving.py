@@ -65,6 +65,18 @@ def is_loopback(address: str) -> bool:
         return False
 
 
+def ways_in(place: Place) -> str:
+    """How others could reach the site, as the subject and verb of a sentence; empty where only this machine does."""
+    if not is_loopback(place.address):
+        return f"{place.address} can be reached from other machines"
+    beyond = [name for name in environment.hosts("FOUNDLEFT_HOSTS", []) if not is_loopback(name.strip("[]"))]
+    if beyond:
+        return f"FOUNDLEFT_HOSTS names {', '.join(beyond)}, by which others reach the site"
+    if environment.networks("FOUNDLEFT_PROXIES"):
+        return "FOUNDLEFT_PROXIES names a reverse proxy, through which others reach the site"
+    return ""
+
+
 def check(place: Place, *, demonstration_people: bool) -> None:
     """Refuse what cannot be served.
 
@@ -76,11 +88,10 @@ def check(place: Place, *, demonstration_people: bool) -> None:
     """
     if not 1 <= place.port <= 65535:
         raise RefusedError(f"There is no port {place.port}: choose one from 1 to 65535.")
-    if demonstration_people and not is_loopback(place.address):
+    if demonstration_people and (way := ways_in(place)):
         raise RefusedError(
-            f"{place.address} can be reached from other machines, and the passwords of the demonstration people are "
-            "public. Deactivate them on the page of people, or start a site of its own with --empty and another "
-            "FOUNDLEFT_DATA."
+            f"{way}, and the passwords of the demonstration people are public. Deactivate them on the page of people, "
+            "or start a site of its own with --empty and another FOUNDLEFT_DATA."
         )
     if (place.certificate is None) != (place.key is None):
         raise RefusedError("--certificate and --key go together: the certificate chain and its private key, as PEM.")

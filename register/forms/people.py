@@ -5,12 +5,14 @@ from __future__ import annotations
 from typing import Any
 
 from django import forms
+from django.contrib.auth.base_user import AbstractBaseUser
 from django.contrib.auth.forms import AuthenticationForm
 from django.core.exceptions import ValidationError
 
 from register.forms.fields import ReasonField, RegisterForm
 from register.models import Role, User
 from register.models.plant import known_time_zone
+from register.proxies import is_from_this_machine
 
 PASSWORD = forms.PasswordInput(attrs={"autocomplete": "new-password"})
 
@@ -34,11 +36,18 @@ class SignInForm(AuthenticationForm):
     error_messages = {
         "invalid_login": "Name and password do not fit together. Small and capital letters differ in both.",
         "inactive": "Name and password do not fit together. Small and capital letters differ in both.",
+        "demonstration": "The passwords of the demonstration people are public, so they sign in at the machine that "
+        "serves them only, by the name localhost or 127.0.0.1.",
     }
 
     def __init__(self, *args: Any, **kwargs: Any) -> None:
         super().__init__(*args, label_suffix="", **kwargs)
         self.fields["username"].label = "Sign-in name"
+
+    def confirm_login_allowed(self, user: AbstractBaseUser) -> None:
+        super().confirm_login_allowed(user)
+        if isinstance(user, User) and user.is_demonstration and not is_from_this_machine(self.request):
+            raise ValidationError(self.error_messages["demonstration"], code="demonstration")
 
 
 class PersonForm(RegisterForm):

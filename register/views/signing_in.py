@@ -18,8 +18,8 @@ from register import access, beginning, entering, membership
 from register.auditing import Actor
 from register.forms.people import FirstAdministratorForm, SignInForm
 from register.models import User
+from register.proxies import is_from_this_machine
 from register.queries import demonstration_people
-from register.serving import is_loopback
 
 
 @sensitive_post_parameters("password")
@@ -39,7 +39,7 @@ def sign_in(request: HttpRequest) -> HttpResponse:
     context = {
         "form": form,
         "next": request.POST.get("next", request.GET.get("next", "")),
-        "demonstration": demonstration_people() if is_loopback(request.META.get("REMOTE_ADDR", "")) else [],
+        "demonstration": demonstration_people() if is_from_this_machine(request) else [],
     }
     return render(request, "register/sign_in.html", context)
 

@@ -40,6 +40,36 @@ def test_it_never_leads_to_another_site(cast: Cast, elsewhere: str) -> None:
     assert sign_in(Client(), "planner", PASSWORD, next=elsewhere).url == "/"
 
 
+@pytest.mark.parametrize("host", ["localhost", "localhost:8000", "127.0.0.1:8000", "[::1]:8000"])
+def test_demonstration_people_sign_in_at_this_machine(cast: Cast, host: str) -> None:
+    User.objects.filter(pk=cast.planner.pk).update(is_demonstration=True)
+    client = Client(HTTP_HOST=host)
+    assert "Demonstration people" in client.get("/sign-in/").content.decode()
+    assert sign_in(client, "planner", PASSWORD).url == "/"
+
+
+@pytest.mark.parametrize(
+    "reached",
+    [
+        {"HTTP_HOST": "testserver"},
+        {"HTTP_HOST": "localhost", "REMOTE_ADDR": "192.0.2.7"},
+        {"HTTP_HOST": "127.0.0.1:8000", "HTTP_X_FORWARDED_FOR": "192.0.2.7"},
+        {"HTTP_HOST": "127.0.0.1:8000", "HTTP_X_FORWARDED_HOST": "instruments.example"},
+        {"HTTP_HOST": "127.0.0.1:8000", "HTTP_FORWARDED": "for=192.0.2.7"},
+        {"HTTP_HOST": "127.0.0.1:8000", "HTTP_VIA": "1.1 gate"},
+    ],
+)
+def test_demonstration_people_are_neither_shown_nor_let_in_from_elsewhere(cast: Cast, reached: dict[str, str]) -> None:
+    """Whoever reaches the site by another name, or through a proxy on this machine that the site was not told of."""
+    User.objects.filter(pk=cast.planner.pk).update(is_demonstration=True)
+    client = Client(**reached)  # type: ignore[arg-type]
+    assert "Demonstration people" not in client.get("/sign-in/").content.decode()
+    refused = sign_in(client, "planner", PASSWORD)
+    assert "at the machine that serves them only" in refused.content.decode()
+    assert client.get("/password/").status_code == 302
+    assert sign_in(client, "technician", PASSWORD).url == "/", "people of one's own come in from anywhere"
+
+
 def test_signing_in_and_out_stand_in_the_trail_with_the_address(cast: Cast) -> None:
     client = Client(REMOTE_ADDR="192.0.2.7")
     sign_in(client, "technician", PASSWORD)

@@ -177,8 +177,8 @@ def test_demonstration_people_are_printed_and_shown_at_the_door_of_this_machine(
 ) -> None:
     User.objects.create(username="planner", printed_name="N. O.", is_demonstration=True)
     assert PASSWORD in start()
-    assert PASSWORD in client.get("/sign-in/").content.decode()
-    assert PASSWORD not in client.get("/sign-in/", REMOTE_ADDR="192.0.2.7").content.decode()
+    assert PASSWORD in client.get("/sign-in/", HTTP_HOST="localhost:8000").content.decode()
+    assert PASSWORD not in client.get("/sign-in/").content.decode()
 
 
 def test_others_never_reach_a_site_whose_passwords_are_public(db: None, served: list[Place]) -> None:
@@ -191,6 +191,45 @@ def test_others_never_reach_a_site_whose_passwords_are_public(db: None, served: 
     person.save()
     start(address="0.0.0.0")
     assert served[0].address == "0.0.0.0"
+
+
+@pytest.mark.parametrize(
+    ("variable", "value", "said"),
+    [
+        ("FOUNDLEFT_HOSTS", "localhost,instruments.example", "FOUNDLEFT_HOSTS names instruments.example"),
+        ("FOUNDLEFT_HOSTS", "192.0.2.7", "FOUNDLEFT_HOSTS names 192.0.2.7"),
+        ("FOUNDLEFT_PROXIES", "127.0.0.1", "FOUNDLEFT_PROXIES names a reverse proxy"),
+    ],
+)
+def test_a_proxy_does_not_open_a_site_whose_passwords_are_public(
+    db: None, served: list[Place], variable: str, value: str, said: str
+) -> None:
+    """The server answers loopback only, but what stands in front of it answers everybody."""
+    person = User.objects.create(username="planner", printed_name="N. O.", is_demonstration=True)
+    os.environ[variable] = value
+    with pytest.raises(CommandError, match=f"{said}.*passwords of the demonstration people are public"):
+        start()
+    assert not served
+    person.is_active = False
+    person.save()
+    start()
+    assert served
+
+
+def test_names_of_this_machine_alone_open_nothing(db: None, served: list[Place]) -> None:
+    User.objects.create(username="planner", printed_name="N. O.", is_demonstration=True)
+    os.environ["FOUNDLEFT_HOSTS"] = "localhost,127.0.0.1,[::1]"
+    start()
+    assert served
+
+
+def test_the_demonstration_is_not_loaded_where_its_people_could_not_stay(db: None, served: list[Place]) -> None:
+    os.environ["FOUNDLEFT_HOSTS"] = "instruments.example"
+    with pytest.raises(CommandError, match=r"start it with --empty"):
+        start()
+    assert not Plant.objects.exists()
+    start(empty=True)
+    assert served
 
 
 def test_lost_guards_stop_the_start(cast: Cast, served: list[Place]) -> None:

@@ -35,7 +35,7 @@ class Command(BaseCommand):
             serving.variables(place, os.environ)
         except serving.RefusedError as refusal:
             raise CommandError(str(refusal)) from refusal
-        self._prepare(empty=options["empty"])
+        self._prepare(place, empty=options["empty"])
         try:
             known = User.objects.filter(is_demonstration=True, is_active=True).exists()
             serving.check(place, demonstration_people=known)
@@ -71,13 +71,17 @@ class Command(BaseCommand):
         self.stdout.write("\n".join(words))
         self.stdout.flush()
 
-    def _prepare(self, *, empty: bool) -> None:
+    def _prepare(self, place: serving.Place, *, empty: bool) -> None:
         """Check, migrate, collect static files, load the demonstration."""
         self.check(databases=["default"])
         call_command("migrate", interactive=False, verbosity=0)
         call_command("collectstatic", interactive=False, verbosity=0)
         call_command("clearsessions", verbosity=0)
         if not empty and not Plant.objects.exists() and not User.objects.exists():
+            if way := serving.ways_in(place):
+                raise CommandError(
+                    f"{way}, and the passwords of the demonstration people are public: start it with --empty."
+                )
             self.stdout.write("Loading the demonstration plants, which takes a moment …")
             self.stdout.flush()
             call_command("demonstration", stdout=self.stdout, verbosity=0)
