@@ -5,7 +5,7 @@
 
 import os
 
-os.environ.setdefault("FOUNDLEFT_SECRET_KEY", "only-for-tests")
+os.environ.setdefault("FOUNDLEFT_SECRET_KEY", "only for tests " * 4)
 
 from register.settings import *  # noqa: F403
 

@@ -92,8 +92,16 @@ def test_the_secret_key_is_made_once_for_its_owner_only(monkeypatch: pytest.Monk
     assert len(key) > 60
     assert environment.secret_key(tmp_path) == key
     assert stat.S_IMODE((tmp_path / "secret_key").stat().st_mode) == 0o600
-    monkeypatch.setenv("FOUNDLEFT_SECRET_KEY", "given")
-    assert environment.secret_key(tmp_path) == "given"
+    given = "drawn by chance somewhere else " * 2
+    monkeypatch.setenv("FOUNDLEFT_SECRET_KEY", given)
+    assert environment.secret_key(tmp_path) == given.strip()
+
+
+@pytest.mark.parametrize("key", ["x", "n" * 49, "ab" * 40])
+def test_a_secret_key_that_can_be_guessed_is_refused(monkeypatch: pytest.MonkeyPatch, tmp_path: Path, key: str) -> None:
+    monkeypatch.setenv("FOUNDLEFT_SECRET_KEY", key)
+    with pytest.raises(ImproperlyConfigured, match="FOUNDLEFT_SECRET_KEY can be guessed: use 50 characters or more"):
+        environment.secret_key(tmp_path)
 
 
 def test_an_empty_secret_key_is_no_key(monkeypatch: pytest.MonkeyPatch, tmp_path: Path) -> None:
