@@ -4,19 +4,28 @@ from __future__ import annotations
 
 from typing import Any
 
+from django.core.exceptions import ValidationError
 from django.db import transaction
 from django.utils import timezone
 
 from calibration.models import GuidanceLine
+from calibration.models.guidance import GOOD_KEY
 from register.auditing import Act, Actor, snapshot
 from register.models import Plant
 
-FIELDS = ("part", "order", "key", "text", "applies", "answer", "required", "withdrawn_at")
+FIELDS = ("part", "order", "key", "text", "applies", "condensing", "answer", "required", "withdrawn_at")
 
 
 @transaction.atomic
 def add_line(*, by: Actor, plant: Plant, reason: str, **values: Any) -> GuidanceLine:
-    """Add a caution or checklist line; `values` are the model's columns but plant."""
+    """Add a caution or checklist line; `values` are the model's columns but plant.
+
+    Raises
+    ------
+    ValidationError
+        Answers cannot be kept under this short name, or the line would never be shown.
+    """
+    _checked(**values)
     line = GuidanceLine.objects.create(plant=plant, **values)
     act = Act(by=by, reason=reason)
     act.created(line, plant=plant)
@@ -30,6 +39,7 @@ def edit_line(*, by: Actor, line: GuidanceLine, reason: str, **values: Any) -> G
     before = snapshot(held, FIELDS)
     for name, value in values.items():
         setattr(held, name, value)
+    _checked(key=held.key, applies=held.applies, condensing=held.condensing)
     held.save()
     act = Act(by=by, reason=reason)
     act.changed(held, plant=held.plant_id, before=before, after=snapshot(held, FIELDS))
@@ -40,3 +50,15 @@ def edit_line(*, by: Actor, line: GuidanceLine, reason: str, **values: Any) -> G
 def withdraw_line(*, by: Actor, line: GuidanceLine, reason: str) -> GuidanceLine:
     """Take a line off new sheets; sheets already open keep it."""
     return edit_line(by=by, line=line, reason=reason, withdrawn_at=timezone.now())
+
+
+def _checked(*, key: str, applies: str = "", condensing: str = "", **others: Any) -> None:
+    errors = {}
+    try:
+        GOOD_KEY(key)
+    except ValidationError as error:
+        errors["key"] = error
+    if (applies, condensing) == (GuidanceLine.Applies.CONDENSING, GuidanceLine.Condensing.LEFT_OUT):
+        errors["condensing"] = ValidationError("A line for hot condensing service that is not shown there never shows.")
+    if errors:
+        raise ValidationError(errors)

@@ -11,6 +11,7 @@ from django.db import transaction
 from django.utils import timezone
 
 from calibration.models import Entry, GuidanceLine, PointList, Requirement, Sheet, Test
+from calibration.models.guidance import ISOLATION
 from calibration.queries.naming import instrument
 from calibration.records.basis import Basis
 from calibration.reopening import entries_of
@@ -323,16 +324,17 @@ def _guidance(
     for line in lines:
         if line.applies not in applies:
             continue
-        # Opening the equaliser would drain the condensate legs: the two lines must never stand side by side.
-        if condensing and line.key == "equaliser":
+        # Opening the equaliser would drain the condensate legs: a line that asks for it must not stand here.
+        if condensing and line.condensing == GuidanceLine.Condensing.LEFT_OUT:
             continue
         # On the bench the plant's lines are there to be read; there is nothing to isolate or to hand back.
-        required = line.required and tag is not None and not (condensing and line.key == "zero-at-line")
+        excused = tag is None or (condensing and line.condensing == GuidanceLine.Condensing.MAY_STAY_EMPTY)
+        required = line.required and not excused
         part = "cautions" if line.part == GuidanceLine.Part.CAUTION else "checklist"
         parts[part].append(_line(line.key, line.text, line.answer, required=required))
     steps = tag.isolation_sequence.splitlines() if tag is not None else ()
     parts["cautions"] += [
-        _line(f"isolation-{number}", step.strip(), GuidanceLine.Answer.TICK, required=True)
+        _line(f"{ISOLATION}{number}", step.strip(), GuidanceLine.Answer.TICK, required=True)
         for number, step in enumerate((step for step in steps if step.strip()), start=1)
     ]
     return parts

@@ -30,6 +30,11 @@ Part = GuidanceLine.Part
 Applies = GuidanceLine.Applies
 Answer = GuidanceLine.Answer
 
+#: What becomes of a line in hot condensing service, where that is another thing than elsewhere.
+CONDENSING: Final = {
+    "equaliser": GuidanceLine.Condensing.LEFT_OUT,
+    "zero-at-line": GuidanceLine.Condensing.MAY_STAY_EMPTY,
+}
 #: Part, key, text, when it applies, kind of answer.
 GUIDANCE: Final = (
     (
@@ -171,7 +176,16 @@ def provide_defaults(plant: Plant, by: Actor) -> None:
     for part, key, text, applies, answer in GUIDANCE:
         orders[part] += 10
         lines.append(
-            GuidanceLine(plant=plant, part=part, key=key, text=text, applies=applies, answer=answer, order=orders[part])
+            GuidanceLine(
+                plant=plant,
+                part=part,
+                key=key,
+                text=text,
+                applies=applies,
+                condensing=CONDENSING.get(key, GuidanceLine.Condensing.AS_ELSEWHERE),
+                answer=answer,
+                order=orders[part],
+            )
         )
     PointList.objects.bulk_create(lists)
     GuidanceLine.objects.bulk_create(lines)

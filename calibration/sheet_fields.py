@@ -6,6 +6,7 @@ import re
 from typing import Final
 
 from calibration.models import Run, Sheet
+from calibration.models.guidance import KEY
 
 Stage = Sheet.Stage
 ORDER: Final = (
@@ -36,7 +37,7 @@ _READING = re.compile(r"(as-found|as-left)\.([1-9][0-9]{0,2})(?:-([1-9]))?\.(app
 _CONDITION = re.compile(rf"(as-found|as-left)\.({'|'.join(CONDITIONS)})")
 _STANDARD = re.compile(r"(as-found|as-left)\.(applied|measured)-with")
 _CERTIFICATE = re.compile(r"(as-found|as-left)\.(applied|measured)-certificate")
-_ANSWER = re.compile(r"(caution|checklist)\.([-a-z0-9_]{1,60})")
+_ANSWER = re.compile(rf"(caution|checklist)\.({KEY})")
 _PLAIN: Final = {
     "confirm-tag": (Stage.CONFIRM,),
     "confirm-serial": (Stage.CONFIRM,),

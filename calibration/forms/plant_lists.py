@@ -7,6 +7,7 @@ from typing import Any
 from django import forms
 
 from calibration.models import GuidanceLine, PointList
+from calibration.models.guidance import GOOD_KEY
 from register.forms.fields import ReasonField, RegisterForm, WholeNumberField
 from register.models import Plant
 
@@ -51,11 +52,17 @@ class PointListForm(RegisterForm):
 class GuidanceForm(RegisterForm):
     part = forms.ChoiceField(choices=GuidanceLine.Part.choices)
     order = WholeNumberField(label="Place in the list", least=0, most=30000)
-    key = forms.SlugField(
-        max_length=40, label="Short name", help_text="Letters, digits and hyphens; answers are kept under it."
+    key = forms.CharField(
+        max_length=40, label="Short name", help_text="Small letters, digits and hyphens; answers are kept under it."
     )
     text = forms.CharField(max_length=400, widget=forms.Textarea(attrs={"rows": 3}))
     applies = forms.ChoiceField(choices=GuidanceLine.Applies.choices, label="Shown for")
+    condensing = forms.ChoiceField(
+        choices=GuidanceLine.Condensing.choices,
+        label="In hot condensing service",
+        help_text="The equaliser stays shut there: a line that asks to open it is not shown.",
+        initial=GuidanceLine.Condensing.AS_ELSEWHERE,
+    )
     answer = forms.ChoiceField(choices=GuidanceLine.Answer.choices, label="Answered by")
     required = forms.BooleanField(required=False, label="Must be answered")
     reason = ReasonField()
@@ -63,6 +70,11 @@ class GuidanceForm(RegisterForm):
     def __init__(self, *args: Any, plant: Plant, line: GuidanceLine | None = None, **kwargs: Any) -> None:
         self.plant, self.line = plant, line
         super().__init__(*args, **kwargs)
+
+    def clean_key(self) -> str:
+        key: str = self.cleaned_data["key"].lower()
+        GOOD_KEY(key)
+        return key
 
     def clean(self) -> dict[str, Any]:
         values = super().clean() or {}

@@ -2,9 +2,22 @@
 
 from __future__ import annotations
 
+from typing import Final
+
+from django.core.validators import RegexValidator
 from django.db import models
 
 from register.models import Plant
+
+#: A short name: the answers on a sheet are kept under it, so it stands in the names of fields.
+KEY: Final = "[a-z0-9_-]{1,40}"
+#: The steps of a tag's own isolation sequence stand among its cautions under names that begin so.
+ISOLATION: Final = "isolation-"
+GOOD_KEY = RegexValidator(
+    rf"\A(?!{ISOLATION}){KEY}\Z",
+    f"Small letters, digits and hyphens only, and not “{ISOLATION}” at the beginning: "
+    "the steps of a tag's own isolation sequence are named so.",
+)
 
 
 class GuidanceLine(models.Model):
@@ -25,6 +38,13 @@ class GuidanceLine(models.Model):
         TRACED = "traced", "heat-traced tags"
         SQUARE_ROOT = "square root", "square-root output"
 
+    class Condensing(models.TextChoices):
+        """What becomes of a line in hot condensing service, where the equaliser stays shut to keep the legs."""
+
+        AS_ELSEWHERE = "as elsewhere", "as elsewhere"
+        MAY_STAY_EMPTY = "may stay empty", "need not be answered"
+        LEFT_OUT = "left out", "not shown"
+
     class Answer(models.TextChoices):
         TICK = "tick", "a tick"
         TEXT = "text", "words"
@@ -33,9 +53,12 @@ class GuidanceLine(models.Model):
     plant = models.ForeignKey(Plant, on_delete=models.PROTECT, related_name="guidance")
     part = models.CharField(max_length=10, choices=Part.choices)
     order = models.PositiveSmallIntegerField()
-    key = models.SlugField(max_length=40)
+    key = models.CharField(max_length=40, validators=[GOOD_KEY])
     text = models.CharField(max_length=400)
     applies = models.CharField(max_length=12, choices=Applies.choices, default=Applies.ALWAYS)
+    condensing = models.CharField(
+        "in hot condensing service", max_length=14, choices=Condensing.choices, default=Condensing.AS_ELSEWHERE
+    )
     answer = models.CharField(max_length=8, choices=Answer.choices, default=Answer.TICK)
     required = models.BooleanField(default=True)
     withdrawn_at = models.DateTimeField(null=True, editable=False)

@@ -118,6 +118,7 @@ def test_guidance_lines_are_edited_by_the_engineer_and_read_by_the_auditor(cast:
     line = GuidanceLine.objects.get(key="permit")
     values = {
         "part": line.part, "order": "10", "key": "permit", "text": "Permit board signed.", "applies": "always",
+        "condensing": "as elsewhere",
         "answer": "tick", "required": "on", "reason": "house words",
     }  # fmt: skip
     assert client_as(cast.engineer).post(f"/guidance/{line.pk}/edit/", values).status_code == 302
