@@ -134,6 +134,18 @@ class RunEvaluation:
     independent_line: tuple[float, float]
     fit: ShiftFit
 
+    @property
+    def one_sided(self) -> bool:
+        """Whether a point asked for on the way up and down carries a measurement from one side only.
+
+        Its mean error then holds half of the hysteresis and cannot be compared with that of another run.
+        """
+        for level in self.levels:
+            asked = {int(way) for way in self.directions[self.points == level.point]}
+            if len(asked) == 2 and np.isnan(level.up) != np.isnan(level.down):
+                return True
+        return False
+
     def as_dict(self) -> dict[str, Any]:
         """The figures as plain JSON content, None for what cannot be said; without the readings."""
         plain: dict[str, Any] = {}

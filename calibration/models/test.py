@@ -55,7 +55,9 @@ class Test(models.Model):
     as_found_worst = models.FloatField(null=True, help_text="Signed error at the worst reading, % of output span.")
     as_left_worst = models.FloatField(null=True)
     as_found_ratio = models.FloatField(null=True, help_text="Signed worst error in multiples of its limit.")
-    as_left_ratio = models.FloatField(null=True)
+    as_left_ratio = models.FloatField(
+        null=True, help_text="As that of as-found in multiples of the MPE, though judged by the as-left tolerance."
+    )
 
     class Meta:
         ordering = ["-tested_on", "-id"]
@@ -80,7 +82,6 @@ class Record(Frozen):
     correction_reason = models.CharField(max_length=300, blank=True)
     plant = models.ForeignKey(Plant, on_delete=models.PROTECT, related_name="records")
     position = models.PositiveBigIntegerField()
-    content = models.TextField(help_text="RFC 8785 form of everything below: strings and whole numbers only.")
     previous_hash = models.CharField(max_length=64)
     hash = models.CharField(max_length=64)
     transcribed = models.BooleanField(default=False)
@@ -96,10 +97,12 @@ class Record(Frozen):
     transfer = models.CharField(max_length=12)
     low_cut_percent = models.FloatField(default=0.0)
     below_cut = models.CharField(max_length=8, default="linear")
+    # The long columns come last: SQLite then reads the others without them.
     basis = models.JSONField()
     answers = models.JSONField(
         default=dict, help_text="Confirmation, cautions, adjustment, checklist, remarks as typed."
     )
+    content = models.TextField(help_text="RFC 8785 form of everything above: strings and whole numbers only.")
 
     class Meta:
         ordering = ["plant", "-position"]
@@ -237,6 +240,9 @@ class RunFigures(models.Model):
     tested_on = models.DateField()
     verdict = models.CharField(max_length=20, choices=Verdict.choices)
     why = models.CharField(max_length=400)
+    complete = models.BooleanField(
+        help_text="Nothing is missing or undecided, and no point is known from one side only."
+    )
     worst = models.FloatField(null=True)
     worst_ratio = models.FloatField(null=True)
     zero_error = models.FloatField(null=True)

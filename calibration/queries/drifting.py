@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING, Any, Final
 
 from django.db.models import Q
 
-from calibration.models import Reading, RunFigures, Test, Verdict
+from calibration.models import Reading, RunFigures, Test
 from calibration.records.basis import Basis
 from register.models import Fitting, Intervention, MeasuringHead, Range, Tag, Transmitter
 
@@ -193,8 +193,8 @@ def _visit(test: Test, runs: dict[str, RunFigures], points: str, fittings: Seque
         when=test.tested_on,
         found=_values(found) if found else None,
         left=(_values(left) if left else {}) if test.adjusted or left else None,
-        complete_found=found is not None and found.verdict != Verdict.INCOMPLETE,
-        complete_left=left is not None and left.verdict != Verdict.INCOMPLETE,
+        complete_found=found is not None and found.complete,
+        complete_left=left is not None and left.complete,
         **keys,
     )
 

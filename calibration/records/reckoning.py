@@ -73,6 +73,7 @@ def figures_row(judged: JudgedRun, run: Run, test: Test, *, current: bool = True
         tested_on=run.tested_on,
         verdict=str(judgement.verdict),
         why=judgement.why[:400],
+        complete=_complete(judged),
         worst=_known(evaluation.worst_error),
         worst_ratio=_known(judgement.worst_ratio),
         zero_error=_known(evaluation.zero_error),
@@ -86,6 +87,13 @@ def figures_row(judged: JudgedRun, run: Run, test: Test, *, current: bool = True
             [float(level.point), float(level.mean)] for level in evaluation.levels if not math.isnan(level.mean)
         ],
     )
+
+
+def _complete(judged: JudgedRun) -> bool:
+    """Whether two runs like this may be compared point by point; a run with gaps may well have failed."""
+    evaluation = judged.evaluation
+    undecided = any(str(verdict) == Verdict.INCOMPLETE for verdict in judged.judgement.readings.verdicts)
+    return evaluation.complete and not undecided and not evaluation.one_sided
 
 
 def summarise(test: Test, *, outcome: str, adjusted: bool, runs: Mapping[str, JudgedRun], counts: bool = True) -> None:

@@ -168,6 +168,7 @@ def _load_runs(
         test_id=of,
         tested_on=days,
         verdict=[verdicts[place] for place in chosen.tolist()],
+        complete=[verdicts[place] != "incomplete" for place in chosen.tolist()],
         worst=_known(worst),
         worst_ratio=_known(worst / LIMIT),
         zero_error=_known(0.6 * worst),

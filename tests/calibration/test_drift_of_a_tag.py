@@ -15,7 +15,7 @@ from django.test.utils import CaptureQueriesContext
 
 from calibration.contexts import drift as drift_page
 from calibration.metrology.pairing import Break
-from calibration.models import Record, Test
+from calibration.models import Record, RunFigures, Test
 from calibration.opening import current_requirement
 from calibration.queries import drifting
 from calibration.recording import RunContent
@@ -160,6 +160,39 @@ def test_a_visit_without_a_test_is_listed_and_the_next_pair_spans_it(tag: Tag) -
     pairs = seen(tag).history.pairing.pairs
     assert pairs[-1].years == pytest.approx(2.0, abs=0.01)
     assert "no outage" in [line.words for line in drift_page.left_out_lines(seen(tag).history)]
+
+
+def test_a_failed_run_with_a_gap_gives_no_difference(tag: Tag) -> None:
+    """At 75 % only the reading on the way down is there: half of the opening between up and down would be drift."""
+    opening = (0.0, 0.1, 0.1, 0.1, 0.0, -0.1, -0.1, -0.1, 0.0)
+    yearly(tag, [0.0])
+    whole = a_test(tag, day("2020-03-10"), found=opening)
+    on = day("2021-03-10")
+    gap = [one for place, one in enumerate(readings((0.6, *opening[1:]))) if place != 3]
+    gone = a_test(tag, on, runs=(RunContent(kind="as-found", tested_on=on, readings=tuple(gap)),))
+    assert (whole.test.as_found_verdict, gone.test.as_found_verdict) == ("pass", "fail")
+    assert not RunFigures.objects.get(tested_on=on).complete
+    yearly(tag, [0.0], first=2022)
+    pairing = seen(tag, "75").history.pairing
+    assert [(pair.start, pair.end) for pair in pairing.pairs] == [
+        (day("2019-03-10"), day("2020-03-10")),
+        (day("2020-03-10"), day("2022-03-10")),
+    ]
+    assert [one.reason for one in pairing.left_out] == [Break.FIRST, Break.INCOMPLETE_FOUND]
+
+
+def test_a_run_with_a_point_limited_by_the_signal_on_one_side_is_not_complete(tag: Tag) -> None:
+    """20.5 mA on the way up is a bound (NAMUR NE 43), so only the way down says what the error is at 100 %."""
+    assert tag.current_range and tag.current_fitting
+    yearly(tag, [0.0])
+    on = day("2020-03-10")
+    nine = list(readings())
+    rows = (*nine[:4], replace(nine[4], measured="20.5000"), replace(nine[4], direction="down"), *nine[5:])
+    head = tag.current_fitting.transmitter.head
+    terms = Basis.of(used=tag.current_range, requirement=tag.requirements.get(), head=head)
+    basis = replace(terms, points="0 25 50 75 100 100 75 50 25 0")
+    a_test(tag, on, basis=basis, runs=(RunContent(kind="as-found", tested_on=on, readings=rows),))
+    assert not RunFigures.objects.get(tested_on=on).complete
 
 
 def test_other_points_cannot_be_compared_also_where_no_list_was_stated(tag: Tag) -> None:
