@@ -91,6 +91,9 @@ def open_correction(*, by: Actor, reason: str, test: Test, sheet_id: uuid.UUID) 
     ValidationError
         No reason, the test is transcribed, or a correction is already open.
     """
+    if test.tag_id is not None:
+        # The new sheet names the tag, which locks it too, and the tag comes before the test.
+        Tag.objects.select_for_update().get(pk=test.tag_id)
     locked = (
         Test.objects.select_for_update(of=("self",))
         .select_related("plant", "tag", "transmitter", "fitting", "current_record")
@@ -355,7 +358,7 @@ def _applies(tag: Tag | None, transmitter: Transmitter, transfer: str) -> set[st
             Applies.TRIP: bool(tag.trip_function),
             Applies.HAZARDOUS: bool(tag.hazardous_area),
             Applies.TRACED: bool(tag.tracing_temperature),
-            Applies.SQUARE_ROOT: transfer == "square root" or tag.root_extraction != "none",
+            Applies.SQUARE_ROOT: transfer == "square root" or tag.root_extraction not in ("", "none"),
         }
     return {key.value for key, applies in on.items() if applies}
 

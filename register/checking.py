@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any, Final, TypeVar
 from django.db.models import Model, QuerySet
 
 from register.bulk import among
-from register.models import Area, MeasuringHead, Plant, Range, Tag, Transmitter, TransmitterType
+from register.models import Area, Measurand, MeasuringHead, Plant, Range, Tag, Transmitter, TransmitterType
 
 if TYPE_CHECKING:
     from register.engineering.findings import Finding
@@ -50,6 +50,7 @@ OTHERS: Final = (
     "pk",
     "pressure_reference",
     "root_extraction",
+    "measurand",
     "current_range__reference",
     "current_range__transfer",
     "current_fitting__transmitter__head_id",
@@ -119,7 +120,7 @@ def fleet_of(tag_ids: Iterable[int]) -> tuple[list[int], Fleet]:
     chosen = among("pk", sorted(set(tag_ids)))
     rows = list(Tag.objects.filter(**chosen).order_by("pk").values_list(*OTHERS, *NUMBERS))
     columns = list(zip(*rows, strict=True)) if rows else [()] * (len(OTHERS) + len(NUMBERS))
-    ids, references, places, range_references, transfers, head_ids, type_ids = columns[: len(OTHERS)]
+    ids, references, places, measurands, range_references, transfers, head_ids, type_ids = columns[: len(OTHERS)]
     number = dict(zip(NUMBERS, np.array(columns[len(OTHERS) :], dtype=float), strict=True))
     heads, types = _indexed(MeasuringHead, head_ids), _indexed(TransmitterType, type_ids)
     head = _limits(heads, head_ids, HEAD_NUMBERS)
@@ -145,6 +146,7 @@ def fleet_of(tag_ids: Iterable[int]) -> tuple[list[int], Fleet]:
         range_reference=codes(range_references, REFERENCES),
         square_root=np.array([transfer == Range.Transfer.SQUARE_ROOT for transfer in transfers], dtype=bool),
         root_extraction=codes(places, PLACES),
+        of_flow=np.array([measurand == Measurand.FLOW for measurand in measurands], dtype=bool),
         fitted=np.array([head_id is not None for head_id in head_ids], dtype=bool),
         head_reference=codes(measures, REFERENCES),
         **head,
@@ -292,5 +294,6 @@ def setting_of(tag: Tag, range_: Range) -> RangeSetting:
         reference=range_.reference,
         transfer=range_.transfer,
         root_extraction=tag.root_extraction,
+        of_flow=tag.measurand == Measurand.FLOW,
         source="range",
     )

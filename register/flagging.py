@@ -1,8 +1,8 @@
 """Keeps the flags of tags: one row per tag and check, recomputed whenever an input changes, accepted by an engineer.
 
 An acceptance holds for the finding that was accepted. It ends when its end date has passed, when the finding
-clears, or when it gets worse: a higher severity, or a smaller margin than before. It survives every other
-recomputing, and an accepted flag stays visible.
+clears, or when it gets worse than it was on the day of the acceptance: a higher severity, or a smaller margin. It
+survives every other recomputing, and an accepted flag stays visible.
 """
 
 from __future__ import annotations
@@ -26,6 +26,8 @@ if TYPE_CHECKING:
     from register.engineering.findings import Finding
 
 ACCEPTANCE = ("accepted_by", "accepted_at", "accepted_reason", "accepted_until")
+#: What was accepted, kept beside an acceptance so that what comes later can be compared with it.
+ACCEPTED = ("accepted_severity", "accepted_margin")
 #: Columns that recomputing may write.
 COMPUTED = (
     "severity",
@@ -105,7 +107,9 @@ def accept_flag(*, by: Actor, reason: str, flag: Flag, until: datetime.date) -> 
     before = snapshot(flag, ACCEPTANCE)
     flag.accepted_by, flag.accepted_at = by.person, act.at
     flag.accepted_reason, flag.accepted_until = reason, until
-    flag.save(update_fields=ACCEPTANCE)
+    flag.accepted_severity = flag.severity
+    flag.accepted_margin = _margin_si(flag.demanded, flag.limit, flag.margin)
+    flag.save(update_fields=(*ACCEPTANCE, *ACCEPTED))
     act.changed(flag, plant=flag.tag.plant_id, before=before, after=snapshot(flag, ACCEPTANCE))
     act.write()
     announce([flag.tag_id])
@@ -120,7 +124,7 @@ def withdraw_acceptance(*, by: Actor, reason: str, flag: Flag) -> Flag:
         raise ValidationError("This flag is not accepted.")
     act = Act(by, reason)
     _end(flag, act)
-    flag.save(update_fields=ACCEPTANCE)
+    flag.save(update_fields=(*ACCEPTANCE, *ACCEPTED))
     announce([flag.tag_id])
     return flag
 
@@ -138,7 +142,7 @@ def _end_lapsed(by: Actor, plant: Plant, today: datetime.date) -> int:
     act = Act(by, "the end date of the acceptance has passed")
     for flag in flags:
         _end(flag, act)
-    Flag.objects.bulk_update(flags, ACCEPTANCE, batch_size=CHUNK)
+    Flag.objects.bulk_update(flags, (*ACCEPTANCE, *ACCEPTED), batch_size=CHUNK)
     announce(ids)
     return len(flags)
 
@@ -178,7 +182,7 @@ def _recompute(ids: list[int], act: Act) -> None:
         act.changed(tag, plant=tag.plant_id, before={"flags": before}, after={"flags": _listed(known.values())})
     columns = columns_of(Flag)
     insert(Flag, columns, values_of(added, columns))
-    Flag.objects.bulk_update(altered, [*COMPUTED, *ACCEPTANCE], batch_size=CHUNK)
+    Flag.objects.bulk_update(altered, [*COMPUTED, *ACCEPTANCE, *ACCEPTED], batch_size=CHUNK)
 
 
 def _concerns(ids: list[int]) -> dict[int, list[str]]:
@@ -244,9 +248,10 @@ def _why_acceptance_ends(flag: Flag, finding: Finding) -> str:
         return "the end date of the acceptance has passed"
     if severity == Flag.Severity.CLEAR:
         return "the finding that was accepted has cleared"
-    if severity > flag.severity:
-        return f"worse than when accepted: {Flag.Severity(flag.severity).label} became {severity.label}"
-    was, now = _margin_si(flag.demanded, flag.limit, flag.margin), finding.margin_si
+    accepted = flag.accepted_severity
+    if accepted is not None and severity > accepted:
+        return f"worse than when accepted: {Flag.Severity(accepted).label} became {severity.label}"
+    was, now = flag.accepted_margin, finding.margin_si
     if was is not None and now is not None and now < was - NOISE * max(abs(was), abs(now)):
         return f"worse than when accepted: {finding.sentence}"
     return ""
@@ -265,6 +270,7 @@ def _end(flag: Flag, act: Act, why: str = "") -> None:
     before = snapshot(flag, ACCEPTANCE)
     flag.accepted_by = flag.accepted_at = flag.accepted_until = None
     flag.accepted_reason = ""
+    flag.accepted_severity = flag.accepted_margin = None
     note = Act(act.by, why or act.reason, id=act.id, at=act.at)
     note.changed(flag, plant=flag.tag.plant_id, before=before, after=snapshot(flag, ACCEPTANCE))
     note.write()

@@ -343,7 +343,7 @@ def _signal(tag: Tag) -> list[Fact]:
         facts.append(Fact("Low cut", f"{used.low_cut_percent:g}", "% of input", note=used.get_below_cut_display()))
     scale = _span_words(tag.scale_low, tag.scale_high)
     facts += [
-        Fact("Square root taken", tag.get_root_extraction_display() if _may_take_root(tag) else ""),
+        Fact("Square root taken", RootExtraction(tag.root_extraction).label if _may_take_root(tag) else ""),
         Fact("Control-system scale", scale, tag.scale_unit),
         Fact("Loop supply", "" if tag.supply_v is None else f"{tag.supply_v:g}", "V"),
         Fact("Loop resistance", "" if tag.loop_ohm is None else f"{tag.loop_ohm:g}", "Ω"),
@@ -353,7 +353,8 @@ def _signal(tag: Tag) -> list[Fact]:
 
 def _may_take_root(tag: Tag) -> bool:
     """Where a square root is out of the question, saying that none is taken is noise."""
-    return tag.root_extraction != RootExtraction.NONE or tag.measurand in (Measurand.FLOW, Measurand.DIFFERENTIAL)
+    said = tag.root_extraction not in (RootExtraction.NONE, RootExtraction.NOT_RECORDED)
+    return said or tag.measurand in (Measurand.FLOW, Measurand.DIFFERENTIAL)
 
 
 def _span_words(low: str, high: str) -> str:

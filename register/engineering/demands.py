@@ -86,7 +86,7 @@ class RangeSetting:
     """Range in force: range-values [Pa] against `reference`.
 
     `root_extraction` is where the tag says the square root is taken: "transmitter", "control system", "none",
-    or "" where it says nothing.
+    or "" where it says nothing; `of_flow` whether the tag measures a flow.
     """
 
     lrv_si: float
@@ -95,6 +95,7 @@ class RangeSetting:
     reference: str
     transfer: str = LINEAR
     root_extraction: str = ""
+    of_flow: bool = False
     source: str = "range"
 
 

@@ -71,6 +71,7 @@ class Fleet:
     range_reference: Codes
     square_root: Mask
     root_extraction: Codes
+    of_flow: Mask
     fitted: Mask
     head_reference: Codes
     lrl_si: Numbers
@@ -153,6 +154,8 @@ def _square_root(fleet: Fleet) -> Codes:
 
 def _square_root_place(fleet: Fleet) -> Codes:
     codes = _PLACE_SEVERITY[fleet.root_extraction, fleet.square_root.astype(np.intp)]
+    called_for = fleet.square_root | (fleet.of_flow & (fleet.range_reference == _DIFFERENTIAL))
+    codes = np.where((fleet.root_extraction == PLACES[""]) & ~called_for, CLEAR, codes)
     return np.where(fleet.ranged, codes, CANNOT_CHECK)
 
 

@@ -195,9 +195,16 @@ def _square_root(check: str, inputs: TagInputs) -> Finding:
 def _square_root_place(check: str, inputs: TagInputs) -> Finding:
     setting = range_in_force(inputs)
     place = setting.root_extraction
+    rooted = setting.transfer == SQUARE_ROOT
     if not place:
-        raise LackingError(("where the square root is taken",))
-    severity, sentence = _PLACES[setting.transfer == SQUARE_ROOT, place]
+        if rooted or (setting.of_flow and setting.reference == Reference.DIFFERENTIAL):
+            raise LackingError(("where the square root is taken",))
+        said = Said(
+            "No square root is called for: this is no flow measured by a differential pressure.",
+            f"{setting.source}: transfer {setting.transfer}, {setting.reference}",
+        )
+        return Finding(check, Severity.CLEAR, said)
+    severity, sentence = _PLACES[rooted, place]
     said = Said(
         sentence,
         f"{setting.source}: transfer {setting.transfer}",

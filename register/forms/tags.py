@@ -134,7 +134,12 @@ class TagFields(RegisterForm):
     loop_ohm = NumberField(
         label="Loop resistance (Ω)", required=False, least=0, most=10_000, help_text="Outside the transmitter."
     )
-    root_extraction = forms.ChoiceField(label="Square root taken", choices=RootExtraction.choices)
+    root_extraction = forms.ChoiceField(
+        label="Square root taken",
+        choices=RootExtraction.choices,
+        required=False,
+        help_text="Of a flow measured by differential pressure: once, in one place.",
+    )
     scale_low = TypedNumberField(label="Control-system scale, low", required=False)
     scale_high = TypedNumberField(label="Control-system scale, high", required=False)
     scale_unit = forms.CharField(

@@ -203,10 +203,10 @@ COLUMNS: Final[tuple[Column, ...]] = (
         "root_extraction",
         "Square root taken",
         Choice(
-            tuple(RootExtraction.choices),
+            tuple(choice for choice in RootExtraction.choices if choice[0]),
             (("none", "no"), ("none", "not"), ("control system", "dcs"), ("control system", "system")),
         ),
-        "transmitter, control system or none.",
+        "transmitter, control system or none. A flow by differential pressure cannot be checked until this is said.",
         "none",
         LOOP,
     ),

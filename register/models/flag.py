@@ -35,6 +35,10 @@ class Flag(models.Model):
     accepted_at = models.DateTimeField(null=True)
     accepted_reason = models.CharField(max_length=300, blank=True)
     accepted_until = models.DateField(null=True)
+    accepted_severity = models.SmallIntegerField(
+        choices=Severity.choices, null=True, help_text="What was accepted: severity …"
+    )
+    accepted_margin = models.FloatField(null=True, help_text="… and margin [SI], negative beyond the limit.")
 
     class Meta:
         ordering = ["tag", "-severity", "check_key"]

@@ -28,6 +28,9 @@ class Measurand(models.TextChoices):
 
 
 class RootExtraction(models.TextChoices):
+    """Where the square root is taken; empty where nobody said."""
+
+    NOT_RECORDED = "", "not recorded"
     NONE = "none", "nowhere"
     TRANSMITTER = "transmitter", "in the transmitter"
     CONTROL_SYSTEM = "control system", "in the control system"
@@ -97,7 +100,11 @@ class Tag(TypedQuantities):
     scale_high = models.CharField("control-system scale, high", max_length=40, blank=True)
     scale_unit = models.CharField("control-system unit", max_length=20, blank=True)
     root_extraction = models.CharField(
-        "square root taken", max_length=16, choices=RootExtraction.choices, default=RootExtraction.NONE
+        "square root taken",
+        max_length=16,
+        choices=RootExtraction.choices,
+        blank=True,
+        default=RootExtraction.NOT_RECORDED,
     )
 
     isolation_sequence = models.TextField(blank=True)

@@ -183,7 +183,7 @@ def _file(rows: int) -> bytes:
                 tag.get("process_max", "60"),
                 "24",
                 "250",
-                tag.get("root_extraction", "none"),
+                tag.get("root_extraction", ""),
                 span["lrv"],
                 span["urv"],
                 span["unit"],

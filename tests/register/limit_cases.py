@@ -73,6 +73,7 @@ RANGE = RangeSetting(
     reference="differential",
     transfer="square root",
     root_extraction="transmitter",
+    of_flow=True,
     source="range",
 )
 LOOP = LoopSupply(supply_v=24.0, loop_ohm=400.0, source="tag")
@@ -148,6 +149,7 @@ _ranges = st.builds(
     reference=_references,
     transfer=st.sampled_from(["linear", "square root"]),
     root_extraction=st.sampled_from(["", "none", "transmitter", "control system"]),
+    of_flow=st.booleans(),
 )
 
 #: Any tag at all, sound or not, with any of its numbers missing.

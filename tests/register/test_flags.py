@@ -106,6 +106,24 @@ def test_an_acceptance_survives_a_smaller_excess(by: Actor, tag: Tag, until: dat
     assert upper(tag).accepted_until == until
 
 
+def test_an_acceptance_holds_for_the_excess_that_was_accepted(by: Actor, tag: Tag, until: datetime.date) -> None:
+    """Less meanwhile, then as it was when accepted: nothing got worse than what was accepted."""
+    flagging.accept_flag(by=by, reason="?", flag=upper(tag), until=until)
+    set_upper(tag, "18")
+    set_upper(tag, "20")
+    assert upper(tag).accepted_until == until
+    set_upper(tag, "20.1")
+    assert upper(tag).accepted_until is None
+
+
+def test_many_small_steps_are_compared_with_what_was_accepted(by: Actor, tag: Tag, until: datetime.date) -> None:
+    """Each step is within the noise of floating point, all of them together are not."""
+    flagging.accept_flag(by=by, reason="?", flag=upper(tag), until=until)
+    for step in range(1, 5):
+        set_upper(tag, f"{20 + step * 3e-9:.9f}")
+    assert upper(tag).accepted_until is None
+
+
 def test_an_acceptance_ends_when_the_excess_grows(by: Actor, tag: Tag, until: datetime.date) -> None:
     flagging.accept_flag(by=by, reason="?", flag=upper(tag), until=until)
     set_upper(tag, "21")

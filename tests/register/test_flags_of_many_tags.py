@@ -49,7 +49,8 @@ def some_tags(cast: Cast, count: int) -> list[Tag]:
             tracing_temperature=chance.choice(["", "", "100", "118", "160"]),
             supply_v=chance.choice([None, 9.0, 24.0]),
             loop_ohm=chance.choice([None, 250.0, 580.0, 700.0]),
-            root_extraction=chance.choice(["none", "transmitter", "control system"]),
+            root_extraction=chance.choice(["", "none", "transmitter", "control system"]),
+            measurand=chance.choice(["flow", "pressure"]),
         )
         if chance.random() < 0.8:
             make_range(

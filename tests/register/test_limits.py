@@ -95,11 +95,18 @@ def test_square_root_belongs_on_a_differential_pressure_only() -> None:
         ("linear", "control system", Severity.CLEAR),
         ("linear", "none", Severity.CLEAR),
         ("linear", "", Severity.CANNOT_CHECK),
+        ("square root", "", Severity.CANNOT_CHECK),
     ],
 )
 def test_the_square_root_is_taken_in_exactly_one_place(transfer: str, place: str, severity: Severity) -> None:
     inputs = changed(range={"transfer": transfer, "root_extraction": place})
     assert finding("square_root_place", inputs).severity is severity
+
+
+@pytest.mark.parametrize("range_", [{"of_flow": False}, {"reference": "gauge"}])
+def test_nobody_needs_to_say_where_the_root_is_taken_of_what_has_none(range_: dict[str, object]) -> None:
+    inputs = changed(range={"transfer": "linear", "root_extraction": "", **range_})
+    assert finding("square_root_place", inputs).severity is Severity.CLEAR
 
 
 def test_static_pressure_is_held_against_the_derated_body() -> None:

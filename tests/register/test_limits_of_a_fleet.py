@@ -55,6 +55,7 @@ def fleet_of(tags: Sequence[TagInputs]) -> Fleet:
         range_reference=codes(lambda tag: REFERENCES[tag.range.reference] if tag.range else 0),
         square_root=np.array([tag.range is not None and tag.range.transfer == "square root" for tag in tags]),
         root_extraction=codes(lambda tag: PLACES[tag.range.root_extraction] if tag.range else 0),
+        of_flow=np.array([tag.range is not None and tag.range.of_flow for tag in tags]),
         fitted=np.array([tag.head is not None for tag in tags]),
         head_reference=codes(lambda tag: REFERENCES[tag.head.reference] if tag.head else 0),
         lrl_si=head("lrl_si"),
