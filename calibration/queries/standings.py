@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import datetime
 import re
-from collections import defaultdict
+from collections import defaultdict, namedtuple
 from collections.abc import Collection, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from functools import lru_cache
@@ -27,7 +27,9 @@ if TYPE_CHECKING:
 #: Interventions after which the transmitter must prove itself again before it counts as tested.
 RESTARTS = (Intervention.Kind.REPAIR, Intervention.Kind.NEW_HEAD)
 Phase = Standing.Phase
-_OF_A_RANGE = ("effective_from", "lrv_si", "urv_si", "reference", "transfer", "low_cut_percent", "below_cut")
+_SETTING = ("lrv_si", "urv_si", "reference", "transfer", "low_cut_percent", "below_cut")
+_OF_A_RANGE = ("effective_from", *_SETTING)
+_MadeAs = namedtuple("_MadeAs", (*_SETTING, "head_id"))
 _PIECES = re.compile(r"[^\W\d_]+|\d+")
 _EDGES = re.compile(r"^\W+|\W+$")
 _DIGITS = re.compile(r"\d+")
@@ -44,8 +46,10 @@ class History:
     ranges: dict[int, list[Any]] = field(default_factory=lambda: defaultdict(list))
     restarts: dict[int, list[datetime.date]] = field(default_factory=lambda: defaultdict(list))
     tests: dict[int, list[Mapping[str, Any]]] = field(default_factory=lambda: defaultdict(list))
-    #: LRV, URV and transfer of tests made on the very day from which a transmitter must prove itself, by test.
-    made_in: dict[int, tuple[float | None, float | None, str | None]] = field(default_factory=dict)
+    #: Heads that were taken out of a transmitter.
+    taken_out: dict[int, set[int]] = field(default_factory=lambda: defaultdict(set))
+    #: Newest test that shows that the transmitter is right as it is fitted, ranged and headed now, by tag.
+    proofs: dict[int, Mapping[str, Any]] = field(default_factory=dict)
     deferrals: dict[int, list[Deferral]] = field(default_factory=lambda: defaultdict(list))
     flags: dict[int, list[tuple[int, bool]]] = field(default_factory=lambda: defaultdict(list))
 
@@ -61,12 +65,14 @@ def read(tag_ids: Collection[int]) -> History:
     for row in ranges.values_list("tag_id", *_OF_A_RANGE, named=True):
         history.ranges[row.tag_id].append(row)
     fitted = sorted({tag.current_fitting.transmitter_id for tag in history.tags if tag.current_fitting})
-    for transmitter_id, done_on in (
+    for transmitter_id, done_on, taken_out in (
         Intervention.objects.filter(**among("transmitter_id", fitted), kind__in=RESTARTS, withdrawn_at__isnull=True)
         .order_by()
-        .values_list("transmitter_id", "done_on")
+        .values_list("transmitter_id", "done_on", "head_before_id")
     ):
         history.restarts[transmitter_id].append(done_on)
+        if taken_out is not None:
+            history.taken_out[transmitter_id].add(taken_out)
     for test in _tests(ids):
         history.tests[test["tag_id"]].append(test)
     for deferral in Deferral.objects.filter(
@@ -79,20 +85,48 @@ def read(tag_ids: Collection[int]) -> History:
         .values_list("tag_id", "severity", "accepted_at")
     ):
         history.flags[tag_id].append((severity, accepted_at is not None))
-    history.made_in = _ranges_of_the_day(history)
+    _find_proofs(history)
     return history
 
 
-def _ranges_of_the_day(history: History) -> dict[int, tuple[float | None, float | None, str | None]]:
-    """Ranges of the few tests of which it matters; those of all tests would be read from as many long records."""
-    ids = []
+def _find_proofs(history: History) -> None:
+    """Find the newest test of each tag that proves its transmitter as it is now.
+
+    Only records of tests that could be it are looked at: the newest of each tag, and of the few tags where that was
+    made in another range or with another head, those before it.
+    """
+    candidates = {}
     for tag in history.tags:
         if tag.current_fitting is not None:
             since = restarted_on(tag, tag.current_fitting, history)
-            ids += [test["id"] for test in history.tests.get(tag.pk, []) if test["tested_on"] == since]
-    columns = ("id", "current_record__lrv_si", "current_record__urv_si", "current_record__transfer")
-    rows = Test.objects.filter(pk__in=ids).order_by().values_list(*columns)
-    return {test_id: (lrv, urv, transfer) for test_id, lrv, urv, transfer in rows}
+            tests = [test for test in history.tests.get(tag.pk, []) if _belongs(test, tag.current_fitting)]
+            candidates[tag.pk] = [test for test in reversed(tests) if _counts(test, since)]
+    made_as = _made_as(tests[0]["id"] for tests in candidates.values() if tests)
+    left = _proven(history, {pk: tests[:1] for pk, tests in candidates.items()}, made_as)
+    made_as = _made_as(test["id"] for pk in left for test in candidates[pk][1:])
+    _proven(history, {pk: candidates[pk][1:] for pk in left}, made_as)
+
+
+def _proven(
+    history: History, candidates: Mapping[int, Sequence[Mapping[str, Any]]], made_as: Mapping[int, Any]
+) -> set[int]:
+    """Note the first candidate of each tag that was made as the transmitter is now; the tags that have none."""
+    left = set()
+    for tag in history.tags:
+        tests = candidates.get(tag.pk, ())
+        proof = next((test for test in tests if _is_as_now(made_as.get(test["id"]), tag, history)), None)
+        if proof is not None:
+            history.proofs[tag.pk] = proof
+        elif tests:
+            left.add(tag.pk)
+    return left
+
+
+def _made_as(test_ids: Iterable[int]) -> dict[int, Any]:
+    """Range and head that tests were made in, by test; a test without a record has none."""
+    columns = [f"current_record__{name}" for name in (*_SETTING, "head_id")]
+    rows = Test.objects.filter(**among("pk", sorted(test_ids)), current_record__isnull=False).order_by()
+    return {test_id: _MadeAs(*made) for test_id, *made in rows.values_list("pk", *columns)}
 
 
 def _tests(ids: Sequence[int]) -> Iterable[Mapping[str, Any]]:
@@ -167,8 +201,9 @@ def _tested(standing: Standing, tag: Tag, fitting: Fitting, history: History) ->
     """Fill in what the tests of the fitted transmitter at this tag say, and when the next is due."""
     since = restarted_on(tag, fitting, history)
     tests = [test for test in history.tests.get(tag.pk, []) if _belongs(test, fitting)]
-    if tests:
-        last = tests[-1]
+    counted = [test for test in tests if test["state"] != Test.State.SENT_BACK]
+    if counted:
+        last = counted[-1]
         standing.last_test_id = last["id"]
         standing.last_tested_on = last["tested_on"]
         standing.last_verdict = last["as_left_verdict"] or last["as_found_verdict"]
@@ -177,16 +212,16 @@ def _tested(standing: Standing, tag: Tag, fitting: Fitting, history: History) ->
         standing.as_left_ratio = last["as_left_ratio"]
         ratio = last["as_left_ratio"] if last["as_left_verdict"] else last["as_found_ratio"]
         standing.error_rank = NO_ERROR if ratio is None else -abs(ratio)
-    accepted = [test["tested_on"] for test in tests if _proves(test, since, tag.current_range, history)]
-    standing.last_accepted_on = accepted[-1] if accepted else None
+    proof = history.proofs.get(tag.pk)
+    standing.last_accepted_on = proof["tested_on"] if proof else None
     requirement = history.requirements.get(tag.pk)
-    if not accepted:
+    if proof is None:
         standing.phase, standing.due_on = Phase.NEVER_TESTED, since
     elif requirement is None:
         standing.phase = Phase.NO_REQUIREMENT
     else:
         standing.phase = Phase.SCHEDULED
-        _schedule(standing, requirement, accepted[-1])
+        _schedule(standing, requirement, proof["tested_on"])
         standing.deferred_until = _deferred(standing, tag, history.deferrals.get(tag.pk, []))
     if tag.out_of_service_on is not None:
         standing.phase = Phase.NOT_IN_SERVICE
@@ -228,19 +263,23 @@ def _belongs(test: Mapping[str, Any], fitting: Fitting) -> bool:
     return bool(test["transmitter_id"] == fitting.transmitter_id and test["tested_on"] >= fitting.fitted_on)
 
 
-def _proves(test: Mapping[str, Any], since: datetime.date, span: Range | None, history: History) -> bool:
-    """Whether a test shows that the transmitter is right as it is fitted and ranged now.
+def _counts(test: Mapping[str, Any], since: datetime.date) -> bool:
+    """Whether a test of the fitted transmitter is good and young enough to prove it."""
+    return bool(test["accepted"] and test["state"] != Test.State.SENT_BACK and test["tested_on"] >= since)
 
-    A test of the very day on which the work was done counts where it was made in the present range.
+
+def _is_as_now(made: Any, tag: Tag, history: History) -> bool:
+    """Whether a test was made in the range that the tag has now, and not with a head that was taken out.
+
+    A head that was written down wrongly and put right in the register was never taken out.
     """
-    if not test["accepted"] or test["state"] == Test.State.SENT_BACK or test["tested_on"] < since:
+    if made is None:
+        return True
+    assert tag.current_fitting is not None
+    transmitter = tag.current_fitting.transmitter
+    if made.head_id != transmitter.head_id and made.head_id in history.taken_out.get(transmitter.pk, ()):
         return False
-    if test["tested_on"] > since or span is None:
-        return True
-    lrv, urv, transfer = history.made_in[test["id"]]
-    if lrv is None or urv is None:
-        return True
-    return transfer == span.transfer and _equal(span.lrv_si, span.urv_si, lrv, urv)
+    return tag.current_range is None or _same_range(tag.current_range, made)
 
 
 def _schedule(standing: Standing, requirement: Requirement, last_accepted: datetime.date) -> None:

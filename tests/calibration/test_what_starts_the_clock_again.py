@@ -2,16 +2,23 @@
 
 from __future__ import annotations
 
-import pytest
+import datetime
+from dataclasses import replace
+from zoneinfo import ZoneInfo
 
-from calibration import scheduling
-from calibration.models import ScheduleState, Standing, Test
+import pytest
+import time_machine
+
+from calibration import scheduling, signing
+from calibration.models import ScheduleState, Sheet, Standing, Test
 from calibration.queries import drifting
 from calibration.recording import ReadingContent, RunContent
-from register import fitting, intervening, reranging
+from calibration.records.basis import Basis
+from register import editing, fitting, intervening, reranging
 from register.auditing import Actor
-from register.models import Intervention, Tag, Transmitter
+from register.models import Intervention, Range, Tag, Transmitter
 from tests import cast as people
+from tests.calibration import at_work
 from tests.calibration.described import NINE
 from tests.calibration.scheduled import a_test, day, state_of
 
@@ -136,3 +143,86 @@ def test_a_test_in_the_old_range_on_the_day_of_the_new_one_does_not_count(tag: T
     people.make_range(tag, "0", "16", effective_from=day("2026-03-09"))
     scheduling.refresh([tag.pk])
     assert state_of(tag, TODAY) == ScheduleState.NEVER_TESTED
+
+
+def at(text: str) -> time_machine.travel:
+    """A moment of the plant's day."""
+    return time_machine.travel(datetime.datetime.fromisoformat(text).replace(tzinfo=ZoneInfo("UTC")), tick=False)
+
+
+def test_a_sheet_of_the_old_range_read_after_the_new_one_began_does_not_prove_the_new_one(
+    scheduled: Tag, engineer: Actor, cast: people.Cast
+) -> None:
+    with at("2026-04-06T08:00"):
+        device = at_work.opened(scheduled, cast.technician)
+    with at("2026-04-07T08:00"):
+        reranging.set_range(
+            by=engineer, reason="load", tag=scheduled, values=RANGE, effective_from=scheduled.plant.today()
+        )
+    with at("2026-04-08T08:00"):
+        at_work.to_signature(device)
+        told = [change.token for change in signing.changes_since(Sheet.objects.get(pk=device.sheet.pk))]
+        record = signing.sign(by=device.by, sheet_id=device.sheet.pk, acknowledged=told)
+    assert record.test.accepted
+    standing = Standing.objects.get(pk=scheduled.pk)
+    assert standing.state(TODAY) == ScheduleState.NEVER_TESTED
+    assert (standing.due_on, standing.last_accepted_on) == (day("2026-04-07"), None)
+
+
+def test_a_test_in_another_range_does_not_hide_the_one_before_it(scheduled: Tag) -> None:
+    """A past test brought in with LRV and URV of its own."""
+    a_test(scheduled, day("2026-05-01"), basis=_basis(scheduled, urv="16"))
+    standing = Standing.objects.get(pk=scheduled.pk)
+    assert (standing.last_accepted_on, standing.last_tested_on) == (day("2026-03-09"), day("2026-05-01"))
+
+
+@pytest.mark.parametrize("on", ["2026-04-01", "2026-04-02"])
+def test_a_test_of_the_head_that_was_taken_out_does_not_prove_the_new_one(
+    scheduled: Tag, engineer: Actor, on: str
+) -> None:
+    device, basis = fitted(scheduled), _basis(scheduled)
+    head = people.make_head(device.type, url="40", code="bigger")
+    intervening.change_head(by=engineer, reason="range grows", transmitter=device, head=head, on=day("2026-04-01"))
+    a_test(scheduled, day(on), basis=basis)
+    assert state_of(scheduled, TODAY) == ScheduleState.NEVER_TESTED
+    a_test(scheduled, day(on))
+    assert state_of(scheduled, TODAY) == ScheduleState.NOT_DUE, "tested with the new head"
+
+
+def test_a_head_that_was_only_written_down_wrongly_takes_no_test_away(scheduled: Tag, engineer: Actor) -> None:
+    device = fitted(scheduled)
+    head = people.make_head(device.type, url="40", code="bigger")
+    editing.correct_head(by=engineer, reason="read off again", transmitter=device, head=head)
+    assert state_of(scheduled, TODAY) == ScheduleState.NOT_DUE
+
+
+@pytest.mark.parametrize(
+    "other", [{"reference": "absolute"}, {"transfer": "square root"}, {"low_cut_percent": 2.0}, {"below_cut": "zero"}]
+)
+def test_every_setting_of_the_range_is_compared(tag: Tag, other: dict[str, str | float]) -> None:
+    root = "low_cut_percent" in other or "below_cut" in other
+    transfer = "square root" if root else "linear"
+    Range.objects.filter(tag=tag).update(reference="differential", transfer=transfer)
+    tag = Tag.objects.get(pk=tag.pk)
+    first, second = day("2026-03-09"), day("2026-03-10")
+    a_test(tag, first, runs=_without_error(first, transfer))
+    assert state_of(tag, TODAY) == ScheduleState.NOT_DUE
+    runs = _without_error(second, str(other.get("transfer", transfer)))
+    assert a_test(tag, second, basis=_basis(tag, **other), runs=runs).test.accepted
+    assert Standing.objects.get(pk=tag.pk).last_accepted_on == first
+
+
+def _without_error(on: datetime.date, transfer: str) -> tuple[RunContent, ...]:
+    taken = up_to(10)
+    if transfer == "square root":
+        taken = tuple(replace(one, measured=f"{4 + 16 * (float(one.applied) / 10) ** 0.5:.6f}") for one in taken)
+    return (RunContent(kind="as-found", tested_on=on, readings=taken),)
+
+
+def _basis(tag: Tag, **other: str | float) -> Basis:
+    """The basis of a test of a tag as it is now, save for what is named."""
+    held = Tag.objects.select_related("current_range", "current_fitting__transmitter__head").get(pk=tag.pk)
+    assert held.current_range is not None and held.current_fitting is not None
+    requirement = held.requirements.select_related("point_list").get()
+    basis = Basis.of(used=held.current_range, requirement=requirement, head=held.current_fitting.transmitter.head)
+    return replace(basis, **other)  # type: ignore[arg-type]
