@@ -87,7 +87,8 @@ def write_records(contents: Sequence[RecordContent], *, act: Act) -> list[Record
 
     Notes
     -----
-    Locks the tags, then the chain of the plant. The standings of the tags are refreshed before it returns.
+    Locks the tags, the tests that get a further version, then the chain of the plant. The standings of the tags are
+    refreshed before it returns.
     """
     if not contents:
         return []
@@ -99,11 +100,12 @@ def write_records(contents: Sequence[RecordContent], *, act: Act) -> list[Record
     with transaction.atomic():
         list(Tag.objects.select_for_update().filter(pk__in=tag_ids).order_by("pk").values_list("pk", flat=True))
         plant = Plant.objects.get(pk=plants.pop())
+        earlier = _locked_tests([content.test_id for content in contents if content.test_id is not None])
         chain = _locked_chain(plant)
         written: list[Record] = []
         for start in range(0, len(contents), _AT_ONCE):
             batch = judged[start : start + _AT_ONCE]
-            written += _write_batch(batch, plant=plant, chain=chain)
+            written += _write_batch(batch, earlier, plant=plant, chain=chain)
         ChainHead.objects.filter(pk=plant.pk).update(position=chain.position, hash=chain.hash)
         for record in written:
             act.created(record, plant=plant)
@@ -160,15 +162,12 @@ def _judged(content: RecordContent, place: int) -> _Judged:
     return _Judged(content=content, columns=columns, readings=readings, runs=runs)
 
 
-def _write_batch(batch: Sequence[_Judged], *, plant: Plant, chain: ChainHead) -> list[Record]:
+def _write_batch(
+    batch: Sequence[_Judged], earlier: Mapping[int, Test], *, plant: Plant, chain: ChainHead
+) -> list[Record]:
     named = Names.of([judged.content for judged in batch])
-    earlier = {
-        test.pk: test
-        for test in Test.objects.filter(pk__in=[j.content.test_id for j in batch if j.content.test_id is not None])
-        .select_for_update(of=("self",))
-        .select_related("current_record")
-    }
     tests = [_test(judged, earlier) for judged in batch]
+    corrected = [test for test in tests if not test._state.adding]
     Test.objects.bulk_create([test for test in tests if test._state.adding])
     records: list[Record] = []
     signatures: list[tuple[Record, Signature]] = []
@@ -186,15 +185,15 @@ def _write_batch(batch: Sequence[_Judged], *, plant: Plant, chain: ChainHead) ->
         [_belonging(reading, run) for run, judged, _ in runs for reading in judged.readings[run.kind]]
     )
     StandardUse.objects.bulk_create([use for run, judged, _ in runs for use in _uses(run, judged.content)])
-    RunFigures.objects.filter(test__in=list(earlier)).update(current=False)
+    RunFigures.objects.filter(test__in=corrected).update(current=False)
     RunFigures.objects.bulk_create(
         [figures_row(judged.runs[run.kind], run, test) for run, judged, test in runs if run.kind in judged.runs]
     )
     for record, signature in signatures:
         signature.record = record
     Signature.objects.bulk_create([signature for _, signature in signatures])
-    if earlier:
-        Test.objects.bulk_update(list(earlier.values()), _SUMMARY)
+    if corrected:
+        Test.objects.bulk_update(corrected, _SUMMARY)
     newest = Record.objects.filter(test=OuterRef("pk")).order_by("-version").values("pk")[:1]
     Test.objects.filter(pk__in=[test.pk for test in tests]).update(current_record=Subquery(newest))
     for test, record in zip(tests, records, strict=True):
@@ -322,6 +321,11 @@ def _signature(record: Record, signed: SignatureContent, chain: ChainHead, plant
         previous_hash=previous,
         hash=chain.hash,
     )
+
+
+def _locked_tests(test_ids: Sequence[int]) -> dict[int, Test]:
+    rows = Test.objects.filter(pk__in=test_ids).order_by("pk").select_for_update(of=("self",))
+    return {test.pk: test for test in rows.select_related("current_record")}
 
 
 def _locked_chain(plant: Plant) -> ChainHead:

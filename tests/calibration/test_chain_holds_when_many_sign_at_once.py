@@ -7,14 +7,22 @@ import sqlite3
 import subprocess
 import sys
 import threading
+import time
+import uuid
+from collections.abc import Callable
 from pathlib import Path
+from typing import Any
 
 import pytest
-from django.db import connections
+from django.db import connections, transaction
 
-from calibration.models import ChainHead, Record
+from calibration import opening, recording, reviewing
+from calibration.models import ChainHead, Record, Sheet
 from calibration.queries.verifying import Checked, verify
+from calibration.recording import write_record
+from register.auditing import Act, Actor
 from tests import cast as people
+from tests.calibration.described import described
 from tests.calibration.signing_at_once import work
 
 WORKERS, EACH = 4, 5
@@ -82,3 +90,100 @@ def test_threads_on_postgresql() -> None:
     assert Record.objects.count() == WORKERS * EACH
     assert ChainHead.objects.get(plant=cast.plant).position == 2 * WORKERS * EACH
     assert list(verify(cast.plant, Checked())) == []
+
+
+class AtTheSameTime:
+    """Runs acts in threads of their own, and keeps what they raise."""
+
+    def __init__(self) -> None:
+        self.failures: list[BaseException] = []
+        self.threads: list[threading.Thread] = []
+
+    def do(self, act: Callable[[], Any], name: str) -> None:
+        def run() -> None:
+            try:
+                act()
+            except BaseException as error:
+                self.failures.append(error)
+            finally:
+                connections.close_all()
+
+        self.threads.append(threading.Thread(target=run, name=name))
+        self.threads[-1].start()
+
+    def end(self) -> None:
+        for thread in self.threads:
+            thread.join(30)
+            assert not thread.is_alive()
+
+
+@pytest.mark.postgresql
+@pytest.mark.django_db(transaction=True)
+def test_a_review_and_a_correction_of_one_bench_test_do_not_lock_each_other(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Both take the test before the chain: no tag stands before them to be taken first."""
+    cast = people.make_cast()
+    tag = people.make_ready_tag(people.make_area(cast.plant), "PT-0")
+
+    def recorded(**values: Any) -> Record:
+        act = Act(by=Actor(person=cast.technician), reason="misread")
+        with transaction.atomic():
+            record = write_record(
+                described(tag, signer=cast.technician, tag_id=None, fitting_id=None, **values), act=act
+            )
+            act.write()
+        return record
+
+    record = recorded()
+    test_is_taken, chain_is_taken = threading.Event(), threading.Event()
+    locked_chain, write_signature = recording._locked_chain, recording.write_signature
+
+    def take_chain(plant: Any) -> ChainHead:
+        chain = locked_chain(plant)
+        if threading.current_thread().name == "correction":
+            chain_is_taken.set()
+        return chain
+
+    def sign_late(*arguments: Any) -> Any:
+        test_is_taken.set()
+        chain_is_taken.wait(1)
+        return write_signature(*arguments)
+
+    monkeypatch.setattr(recording, "_locked_chain", take_chain)
+    monkeypatch.setattr(reviewing, "write_signature", sign_late)
+    together = AtTheSameTime()
+    by = Actor(person=cast.reviewer)
+    together.do(lambda: reviewing.review(by=by, test=record.test, record_id=record.pk), "review")
+    assert test_is_taken.wait(10)
+    together.do(lambda: recorded(test_id=record.test_id, correction_reason="misread"), "correction")
+    together.end()
+    assert together.failures == []
+    assert chain_is_taken.is_set()
+    assert Record.objects.get(supersedes=record).version == 2
+    assert list(verify(cast.plant, Checked())) == []
+
+
+@pytest.mark.postgresql
+@pytest.mark.django_db(transaction=True)
+def test_a_review_and_the_opening_of_a_correction_do_not_lock_each_other(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Both take the tag before the test: a new sheet takes it too, as it names it."""
+    cast = people.make_cast()
+    tag = people.make_ready_tag(people.make_area(cast.plant), "PT-0")
+    act = Act(by=Actor(person=cast.technician))
+    record = write_record(described(tag, signer=cast.technician), act=act)
+    together = AtTheSameTime()
+    entries_of = opening.entries_of
+
+    def meanwhile(*arguments: Any, **more: Any) -> Any:
+        by = Actor(person=cast.reviewer)
+        together.do(lambda: reviewing.review(by=by, test=record.test, record_id=record.pk), "review")
+        time.sleep(0.5)
+        return entries_of(*arguments, **more)
+
+    monkeypatch.setattr(opening, "entries_of", meanwhile)
+    number = uuid.uuid4()
+    opening.open_correction(by=Actor(person=cast.technician), reason="misread", test=record.test, sheet_id=number)
+    together.end()
+    assert together.failures == []
+    assert Sheet.objects.get(pk=number).corrects == record.test
+    record.test.refresh_from_db()
+    assert record.test.state == "reviewed"
