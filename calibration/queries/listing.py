@@ -78,10 +78,11 @@ def page(plant: Plant, asked: Asked, today: datetime.date, columns: Sequence[str
     elif len(conditions) == 1:
         total = counts[0]
     else:
-        total, seen, counted_all = _sampled(plant, conditions, in_order, order, down=down)
+        sample = _sampled(plant, conditions, in_order, order, down=down)
+        total, counted_all = sample.found, sample.is_all
         farthest = FARTHEST if sum(len(condition.words) for condition in conditions) < 2 else FARTHEST_FOR_WORDS
-        if not counted_all and total * farthest < PAGE * seen:
-            driver, conditions = _gathering(plant, conditions)
+        if not counted_all and total * farthest < PAGE * sample.seen:
+            driver, conditions = _gathering(plant, conditions, sample)
             gathered = driver is not in_order or bool(driver.words)
     cursor = _read_cursor(asked.before or asked.after, order)
     backward = bool(asked.before and cursor)
@@ -132,10 +133,23 @@ def total_text(count: int) -> str:
     return f"{CEILING:,}+" if count > CEILING else f"{count:,}"
 
 
-def _gathering(plant: Plant, conditions: list[Condition]) -> tuple[Condition, list[Condition]]:
-    """The condition that the fewest tags meet, together with other words that are not common, and all conditions."""
+@dataclass(frozen=True, slots=True)
+class _Sample:
+    """How many of the first rows of a list were seen and match, whether these are all, and how many match each."""
+
+    found: int
+    seen: int
+    is_all: bool
+    alone: Sequence[int] = ()
+
+
+def _gathering(plant: Plant, conditions: list[Condition], sample: _Sample) -> tuple[Condition, list[Condition]]:
+    """The condition that the fewest tags meet, together with other words that are not common, and all conditions.
+
+    Of conditions that too many meet to be counted, the one that fewest rows of the sample meet.
+    """
     counts = _counts(plant, conditions, far=True)
-    rarest = conditions[counts.index(min(counts))]
+    rarest = conditions[min(range(len(conditions)), key=lambda place: (counts[place], sample.alone[place]))]
     near = [
         condition
         for condition, count in zip(conditions, counts, strict=True)
@@ -266,22 +280,36 @@ def _count(found: Statement) -> int:
 
 def _sampled(
     plant: Plant, conditions: Sequence[Condition], in_order: Condition | None, order: Sequence[str], *, down: bool
-) -> tuple[int, int, bool]:
-    """How many of the first rows of the list match, how many rows that were, and whether these were all of them."""
+) -> _Sample:
+    """Look at the first rows of the list, along the index of a condition that keeps its order if there is one."""
     text, values = _matching(plant, [in_order] if in_order else [], in_order)
-    others = [term for condition in conditions if condition is not in_order for term in condition.terms]
+    others = [condition for condition in conditions if condition is not in_order]
     if not others:
         counted = _count((text, values))
-        return counted, counted, True
-    ceiling = EXAMINED_FOR_WORDS if any(condition.words for condition in conditions) else EXAMINED
+        return _Sample(counted, counted, is_all=True)
+    by_words = any(condition.words for condition in conditions)
+    ceiling = EXAMINED_FOR_WORDS if by_words else EXAMINED
     # Only columns that the index holds are named, so that no row itself is read.
-    needed = {"tag_id", *(column for term in others for column in _COLUMN.findall(term.text))}
+    needed = {"tag_id"} | {
+        column for condition in others for term in condition.terms for column in _COLUMN.findall(term.text)
+    }
     ordering = ", ".join(f"{PLAIN[column]}{' DESC' if down else ''}" for column in order)
     rows = f"SELECT {', '.join(sorted(needed))} {text} ORDER BY {ordering} LIMIT {ceiling}"
-    matches = " AND ".join(term.text.format_map(PLAIN) for term in others)
-    values = [value for term in others for value in term.values] + values
-    found, seen = _read(f"SELECT COUNT(CASE WHEN {matches} THEN 1 END), COUNT(*) FROM ({rows}) s", values)[0]
-    return found, seen, seen < ceiling
+    # Words are counted well enough by themselves, and dear to look up twice.
+    singly = [condition for condition in others if not condition.words]
+    looks = [_compared(others), *(_compared([condition]) for condition in singly)]
+    matches = ", ".join(f"COUNT(CASE WHEN {look} THEN 1 END)" for look, _ in looks)
+    values = [value for _, more in looks for value in more] + values
+    seen, found, *each = _read(f"SELECT COUNT(*), {matches} FROM ({rows}) s", values)[0]
+    alone = [each[singly.index(condition)] if condition in singly else seen for condition in conditions]
+    return _Sample(found, seen, seen < ceiling, alone)
+
+
+def _compared(conditions: Sequence[Condition]) -> Statement:
+    """The comparisons of some conditions, all of which must hold."""
+    terms = [term for condition in conditions for term in condition.terms]
+    text = " AND ".join(term.text.format_map(PLAIN) for term in terms)
+    return text, [value for term in terms for value in term.values]
 
 
 def _spans(plant: Plant) -> tuple[int, int]:
