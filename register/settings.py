@@ -42,6 +42,7 @@ MIDDLEWARE = [
     "django.contrib.messages.middleware.MessageMiddleware",
     "django.middleware.clickjacking.XFrameOptionsMiddleware",
     "django_htmx.middleware.HtmxMiddleware",
+    "register.caching.PrivateMiddleware",
     "register.access.PermissionMiddleware",
     "axes.middleware.AxesMiddleware",
 ]
@@ -147,7 +148,6 @@ STORAGES = {
 CONTENT_SECURITY_POLICY = {
     "DIRECTIVES": {
         "default-src": [SELF],
-        "img-src": [SELF, "blob:"],
         "object-src": [NONE],
         "base-uri": [SELF],
         "form-action": [SELF],

@@ -52,7 +52,6 @@ def sign_out(request: HttpRequest) -> HttpResponse:
 
 
 @sensitive_post_parameters()
-@never_cache
 @require_http_methods(["GET", "POST"])
 def password(request: HttpRequest) -> HttpResponse:
     """Change one's own password; other sessions of the person end."""

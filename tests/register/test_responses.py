@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import ipaddress
+import json
 import re
 from collections.abc import Callable
 from pathlib import Path
@@ -27,7 +28,7 @@ def test_only_the_site_itself_may_give_scripts_styles_and_frames(cast: Cast, cli
     assert rules["frame-ancestors"] == "'none'"
     assert rules["base-uri"] == rules["form-action"] == "'self'"
     assert "unsafe" not in policy
-    assert not {"script-src", "style-src", "connect-src"} & set(rules), "these fall back to 'self'"
+    assert not {"script-src", "style-src", "connect-src", "img-src"} & set(rules), "these fall back to 'self'"
 
 
 def test_no_template_holds_a_script_or_a_style_of_its_own() -> None:
@@ -54,6 +55,32 @@ def test_static_files_are_served_without_a_session(cast: Cast) -> None:
     assert answer.status_code == 200
     assert b"@layer" in b"".join(answer.streaming_content)  # type: ignore[attr-defined]
     assert not answer.cookies
+    assert "no-store" not in answer.get("Cache-Control", "")
+
+
+@pytest.mark.parametrize("page", ["/", "/audit/", "/people/", "/password/", "/no-such-page/", "/plants/south/edit/"])
+def test_what_a_signed_in_person_sees_is_kept_by_no_browser(cast: Cast, client_as: SignIn, page: str) -> None:
+    """Whoever takes the tablet next must not get it by going back."""
+    client = client_as(cast.administrator)
+    assert "no-store" in client.get(page)["Cache-Control"]
+    part = client.get(page, headers={"HX-Request": "true"})
+    assert "no-store" in part["Cache-Control"]
+
+
+def test_htmx_keeps_no_pages_in_the_browser(cast: Cast, client_as: SignIn) -> None:
+    page = client_as(cast.planner).get("/audit/").content.decode()
+    settings = json.loads(page.split('name="htmx-config" content=\'')[1].split("'")[0])
+    assert settings["historyCacheSize"] == 0
+
+
+def test_going_back_brings_the_whole_page_where_htmx_asks_for_it(cast: Cast, client_as: SignIn) -> None:
+    """Both with and without the header that asks for a part, as the browser's history mixes the two."""
+    client = client_as(cast.planner)
+    for asked in ({"HX-History-Restore-Request": "true"}, {"HX-Request": "true", "HX-History-Restore-Request": "true"}):
+        answer = client.get("/audit/", headers=asked)
+        assert "<html" in answer.content.decode()
+        assert "HX-Request" in answer["Vary"]
+    assert "<html" not in client.get("/audit/", headers={"HX-Request": "true"}).content.decode()
 
 
 def test_a_view_without_a_permission_is_refused_even_to_an_administrator(
