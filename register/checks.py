@@ -16,7 +16,7 @@ from django.utils.module_loading import import_string
 
 from register import environment, guards
 
-HOOKS: Final = ("AFTER_REGISTER_CHANGE", "AFTER_PLANT_CREATED")
+HOOKS: Final = ("AFTER_REGISTER_CHANGE", "AFTER_PLANT_CREATED", "BEFORE_BACKDATING", "EVERY_DAY")
 
 
 @register()
