@@ -34,6 +34,11 @@ def signed(value: Number | None, decimals: int) -> str:
     return "+" + text
 
 
+def places_of(text: str) -> int:
+    """How many digits stand behind the decimal point of a figure as it is shown."""
+    return len(text.partition(".")[2])
+
+
 def aligned(text: str | Number | None, decimals: int) -> SafeString:
     """Text as typed, filled up to `decimals` with unseen digits, so that decimal points stand in one line.
 

@@ -11,13 +11,13 @@ from django.utils.safestring import SafeString
 from calibration.drawing.marks import error_bar
 from calibration.records.basis import Basis
 from calibration.records.judging import judge_one
-from register.figures import signed
+from register.figures import places_of
 
 if TYPE_CHECKING:
     from calibration.metrology.verdicts import ReadingJudgement
 
 DECIMALS_MA = 3
-DECIMALS_ERROR = 3
+_HELD = "the square-root output is held at 4 mA: the error at the input is not known"
 _WORDS = {
     "pass": ("inside", "ok"),
     "conditional pass": ("inside, within the guard band", "near"),
@@ -48,28 +48,30 @@ class Result:
 
 def result_of(judged: ReadingJudgement, index: int, *, up: bool | None = None) -> Result:
     """The result of one reading out of those judged together."""
+    from calibration.metrology.explaining import shown
     from calibration.metrology.tolerance import Quantity
     from calibration.metrology.verdicts import VERDICTS
+    from calibration.metrology.writing import fixed
 
-    error = float(judged.error[index])
-    limit = float(judged.judged_limit[index])
+    said = shown(judged, index)
     ratio = float(judged.ratio[index])
-    word, css = _WORDS[VERDICTS[int(judged.codes[index])]]
-    failure = _failure(float(judged.measured[index]))
+    verdict = VERDICTS[int(judged.codes[index])]
+    word, css = _WORDS[verdict]
+    measured = float(judged.measured[index])
+    if verdict == "incomplete" and not _at_the_edge(measured):
+        word = _HELD
+    failure = _failure(measured)
     if failure:
         word, css = failure, "out"
-    by_input = judged.tolerance.quantity is Quantity.INPUT
-    in_input = float(judged.judged_error[index]) if by_input else math.nan
-    unit = judged.unit
-    stated = f"{signed(in_input, DECIMALS_ERROR)} {unit}" if by_input and not math.isnan(in_input) else ""
-    limit_words = f"±{limit:.4g}"
-    words = f"error {stated or signed(error, DECIMALS_ERROR) + ' % of span'}, limit {limit_words} {unit}: {word}"
+    known = judged.tolerance.quantity is Quantity.INPUT and not math.isnan(float(judged.judged_error[index]))
+    stated = f"{said.error} {said.unit}" if known else ""
+    words = f"error {stated or said.output_error + ' % of span'}, limit {said.limit} {said.unit}: {word}"
     return Result(
-        error=signed(error, DECIMALS_ERROR),
+        error=said.output_error,
         in_input=stated,
-        expected=f"{float(judged.limits.ideal_ma[index]):.{DECIMALS_MA}f}",
-        limit=limit_words,
-        limit_unit=unit,
+        expected=fixed(float(judged.limits.ideal_ma[index]), max(DECIMALS_MA, places_of(said.output_error))),
+        limit=said.limit,
+        limit_unit=said.unit,
         word=word,
         css=css,
         bar=error_bar(None if math.isnan(ratio) else ratio, words, up=up),
@@ -79,6 +81,12 @@ def result_of(judged: ReadingJudgement, index: int, *, up: bool | None = None) -
 def result_now(basis: Basis, kind: str, applied: float, measured: float, *, up: bool | None = None) -> Result:
     """The result of a reading as it is typed: input in the unit of the range, output in mA."""
     return result_of(judge_one(basis, kind, applied, measured), 0, up=up)
+
+
+def _at_the_edge(measured: float) -> bool:
+    from calibration.metrology.signal import saturated
+
+    return bool(saturated(measured))
 
 
 def _failure(measured: float) -> str:

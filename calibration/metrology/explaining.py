@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -11,51 +12,58 @@ from calibration.metrology.pointlist import UP, percent_text
 from calibration.metrology.signal import SignalState, classify, saturated
 from calibration.metrology.tolerance import Quantity
 from calibration.metrology.verdicts import ReadingJudgement, Verdict
+from calibration.metrology.writing import beside, plain
 
 
-def signed(value: float, limit: float) -> str:
-    """A figure with its sign, with as many places as its limit deserves and as it takes to tell them apart.
+@dataclass(frozen=True)
+class Shown:
+    """Error and limit of a reading as they are written, without their unit.
 
-    Parameters
+    Attributes
     ----------
-    value, limit : float
-        Both in one unit.
-
-    Returns
-    -------
-    str
-        For example "+0.310" beside a limit of 0.25; with a true minus sign.
+    error : str
+        In the quantity in which the tolerance is stated, or "–" where it is not defined there.
+    output_error : str
+        In % of output span.
+    limit : str
+        "±0.25", or "−0.24 to +0.26" where the limits differ above and below.
+    side : str
+        The limit on the side on which the error lies: "±0.25" or "+0.26".
+    unit : str
+        Unit of `error` and `limit`.
     """
-    places = 3
-    if math.isfinite(limit) and limit > 0.0:
-        places = max(0, 2 - math.floor(math.log10(limit)))
-        apart = abs(abs(value) - limit)
-        while places < 10 and apart > 1e-10 and abs(float(f"{abs(value):.{places}f}") - limit) < apart / 2:
-            places += 1
-    return f"{value:+.{places}f}".replace("-", "−")
+
+    error: str
+    output_error: str
+    limit: str
+    side: str
+    unit: str
 
 
-def plain(value: float) -> str:
-    """A figure without a sign and without trailing zeros, with a true minus sign if it is negative."""
-    return f"{value:.6g}".replace("-", "−")
-
-
-def _percent_limit(reading: ReadingJudgement, index: int) -> str:
-    """The output limit at a reading: ± where it is even, else the side on which the error lies."""
-    lower, upper = float(reading.limits.lower[index]), float(reading.limits.upper[index])
-    if abs(lower + upper) <= 1e-9 * max(abs(lower), abs(upper), 1.0):
-        return f"±{plain(upper)} % of span"
-    return f"{signed(upper if reading.error[index] > 0.0 else lower, upper - lower)} % of span"
+def shown(reading: ReadingJudgement, index: int) -> Shown:
+    """How error and limit of a reading are written, so that a reader comes to the same verdict."""
+    error, judged = float(reading.error[index]), float(reading.judged_error[index])
+    lower, upper = -float(reading.limits.lower[index]), float(reading.limits.upper[index])
+    output_error, near = beside(error, upper if error > 0.0 else lower)
+    if reading.tolerance.quantity is Quantity.INPUT:
+        judged_error, limit = beside(judged, float(reading.judged_limit[index]))
+        return Shown(judged_error, output_error, f"±{limit}", f"±{limit}", reading.unit)
+    if abs(lower - upper) <= 1e-9 * max(abs(lower), abs(upper), 1.0):
+        return Shown(output_error, output_error, f"±{near}", f"±{near}", reading.unit)
+    sides = [near if (error > 0.0) == above else plain(side, 4) for side, above in ((lower, False), (upper, True))]
+    side = f"+{near}" if error > 0.0 else f"−{near}"
+    return Shown(output_error, output_error, f"−{sides[0]} to +{sides[1]}", side, reading.unit)
 
 
 def _error_and_limit(reading: ReadingJudgement, index: int) -> tuple[str, str]:
     """Error and limit at a reading, in the quantity in which the tolerance is stated if it is defined."""
-    judged = float(reading.judged_error[index])
-    if reading.tolerance.quantity is Quantity.INPUT and math.isfinite(judged):
-        limit = float(reading.judged_limit[index])
-        return f"{signed(judged, limit)} {reading.unit}", f"±{plain(limit)} {reading.unit}"
-    side = float(reading.limits.upper[index] if reading.error[index] > 0.0 else -reading.limits.lower[index])
-    return f"{signed(float(reading.error[index]), side)} % of span", _percent_limit(reading, index)
+    said = shown(reading, index)
+    if said.error != "–":
+        return f"{said.error} {said.unit}", f"{said.side} {said.unit}"
+    error = float(reading.error[index])
+    side = float(reading.limits.upper[index] if error > 0.0 else -reading.limits.lower[index])
+    written, limit = beside(error, side)
+    return f"{written} % of span", f"{'+' if error > 0.0 else '−'}{limit} % of span"
 
 
 def _beyond_acceptance(reading: ReadingJudgement, index: int) -> str:

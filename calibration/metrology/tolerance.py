@@ -17,7 +17,8 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from calibration.metrology.signal import SPAN_MA, Signal, error_percent
+from calibration.metrology.signal import SPAN_MA, ZERO_MA, Signal, error_percent
+from calibration.metrology.writing import plain
 
 Floats = NDArray[np.float64]
 
@@ -65,6 +66,15 @@ class OutputLimits:
     upper_ma: Floats
     lower: Floats
     upper: Floats
+
+    @property
+    def least(self) -> Floats:
+        """`lower`, but -inf where it is the held output of a square-root signal, for a tolerance stated in the input.
+
+        No reading can fall below the held output and mean anything.
+        """
+        held = self.tolerance.quantity is Quantity.INPUT and self.signal.is_square_root
+        return np.where(held & (self.lower_ma <= ZERO_MA), -np.inf, self.lower)
 
 
 @dataclass(frozen=True)
@@ -272,12 +282,12 @@ class Tolerance:
         """The tolerance in words, e.g. "±0.25 % of span" or "±0.5 % of reading, at least 0.2 kPa"."""
         tail = f" {unit}" if unit else " (input units)"
         if self.form is Form.SPAN:
-            return f"±{self.percent:g} % of span"
+            return f"±{plain(self.percent)} % of span"
         if self.form is Form.ABSOLUTE:
-            return f"±{self.amount:g}{tail}"
+            return f"±{plain(self.amount)}{tail}"
         if self.form is Form.READING:
-            floor = f", at least {self.amount:g}{tail}" if self.amount else ""
-            return f"±{self.percent:g} % of reading{floor}"
+            floor = f", at least {plain(self.amount)}{tail}" if self.amount else ""
+            return f"±{plain(self.percent)} % of reading{floor}"
         one, other = (part.words(unit) for part in self.parts)
         return f"the larger of {one} and {other}" if self.form is Form.LARGER else f"{one} plus {other}"
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import dataclasses
 import random
+from decimal import Decimal
 
 import pytest
 from hypothesis import given, settings
@@ -11,6 +12,7 @@ from hypothesis import strategies as st
 
 from calibration.contexts.results import result_now, result_of
 from calibration.contexts.sheet import Viewer, reading_views, verdict_words
+from calibration.metrology.writing import beside
 from calibration.models import RunFigures, Sheet
 from calibration.queries.drafts import Draft
 from calibration.records.basis import Basis, StatedTolerance
@@ -89,3 +91,75 @@ def test_an_error_on_the_limit_is_inside_everywhere(tablet: Device) -> None:
     assert verdict_words(draft, "as-found")[0] == "pass, in tolerance"
     views = reading_views(draft, "as-found", Viewer(tablet.person))
     assert not any(view.result.outside for view in views if view.result)
+
+
+def _number(text: str) -> Decimal:
+    return Decimal(text.replace("−", "-").removeprefix("±"))
+
+
+@pytest.mark.parametrize(
+    ("basis", "applied", "measured", "error", "limit"),
+    [
+        # 0.0251 kPa off, with 0.025 kPa allowed.
+        (
+            dataclasses.replace(
+                BASIS, urv="0.01", unit="MPa", mpe=StatedTolerance("absolute", amount="0.025", unit="kPa")
+            ),
+            0.005,
+            12 + 0.0251 * 1.6,
+            "+0.0000251 MPa",
+            "±0.000025",
+        ),
+        (
+            dataclasses.replace(BASIS, mpe=StatedTolerance("percent of span", percent="0.1")),
+            5.0,
+            12.01602,
+            "+0.1001",
+            "±0.1",
+        ),
+        (
+            dataclasses.replace(BASIS, mpe=StatedTolerance("percent of span", percent="0.1")),
+            5.0,
+            12.016,
+            "+0.100",
+            "±0.1",
+        ),
+    ],
+)
+def test_the_figures_shown_give_the_verdict_beside_them(
+    basis: Basis, applied: float, measured: float, error: str, limit: str
+) -> None:
+    result = result_now(basis, "as-found", applied, measured)
+    assert (result.in_input or result.error, result.limit) == (error, limit)
+    assert result.outside == (abs(_number(error.partition(" ")[0])) > _number(limit))
+
+
+@given(st.floats(1e-6, 1e6), st.floats(-2, 2), st.floats(-1e-3, 1e-3))
+def test_an_error_beside_its_limit_passes_it_just_where_it_is_outside(
+    limit: float, share: float, little: float
+) -> None:
+    for error in (share * limit, (1 + little) * limit, -limit):
+        shown, allowed = beside(error, limit)
+        assert "e" not in shown + allowed.lower()
+        if abs(abs(error) / limit - 1) > 2e-8 or error == -limit:
+            assert (abs(_number(shown)) > _number(allowed)) == (abs(error) > limit)
+
+
+def test_limits_that_differ_above_and_below_are_both_shown() -> None:
+    """On a square root 0.1 bar more lifts the output less than 0.1 bar less lowers it."""
+    basis = dataclasses.replace(
+        BASIS, transfer="square root", mpe=StatedTolerance("sum", percent="0.1", amount="0.1", unit="bar")
+    )
+    above, below = (result_now(basis, "as-found", 1.0, 4 + 16 * (0.1**0.5 + off)) for off in (0.01, -0.01))
+    # √0.11 − √0.1 = 1.543 %, √0.1 − √0.09 = 1.623 %; 0.1 % added.
+    assert above.limit == below.limit == "−1.723 to +1.643"
+    why = judge(dataclasses.replace(basis, points=""), "as-found", [Point(1.0, 4 + 16 * 0.33, 1)]).judgement.why
+    assert why.endswith("+1.38 % of span within +1.643 % of span.")
+
+
+def test_an_output_held_at_4_ma_is_not_called_the_edge_of_the_signal() -> None:
+    basis = dataclasses.replace(
+        BASIS, transfer="square root", mpe=StatedTolerance("absolute", amount="0.01", unit="bar")
+    )
+    assert "held at 4 mA" in result_now(basis, "as-found", 0.0, 4.0).word
+    assert "edge of the signal" in result_now(basis, "as-found", -0.1, 3.7).word
