@@ -24,6 +24,8 @@
       if (event.key === "Escape" && event.target.matches("[data-search]")) event.target.blur();
       return;
     }
+    // Speech input types what was not meant as a key.
+    if (document.documentElement.dataset.shortcuts === "off") return;
     if (event.key === "/") {
       const search = document.querySelector("[data-search]");
       if (!search) return;

@@ -4,8 +4,13 @@
   if (!sheet || sheet.dataset.live !== "yes") return;
 
   // One queue per sheet and person, kept on the device until the server has said that it holds each entry.
+  // What the server did not take is kept beside it until somebody has read it.
   const KEY = `foundleft.sheet.${sheet.dataset.sheet}.${sheet.dataset.person}`;
+  const waitingOnes = shelf(KEY);
+  const refusedOnes = shelf(`${KEY}.refused`);
   const RETRY_MS = 5000;
+  // Browsers send no more than 64 KiB for a page that is being hidden.
+  const PART_BYTES = 48000;
   const state = document.getElementById("saving");
   const refusedBox = document.getElementById("refused");
   const device = `${deviceId()}.${Math.random().toString(36).slice(2, 10)}`;
@@ -15,17 +20,57 @@
   let signedOut = false;
   let timer = 0;
   let flushing = false;
+  let submitting = false;
   const typing = new Set();
   const handed = new Map();
   const waiting = new Map();
 
+  // A list on the device; where the device is full or keeps nothing, it lives in this page alone.
+  function shelf(key) {
+    let here = null;
+    return {
+      get keeps() {
+        return here === null;
+      },
+      read() {
+        if (here) return here;
+        try {
+          return JSON.parse(localStorage.getItem(key)) || [];
+        } catch {
+          return [];
+        }
+      },
+      write(list) {
+        try {
+          if (list.length) localStorage.setItem(key, JSON.stringify(list));
+          else localStorage.removeItem(key);
+          here = null;
+        } catch {
+          here = list;
+        }
+      },
+    };
+  }
+
+  function queue() {
+    return waitingOnes.read();
+  }
+
+  function keep(entries) {
+    waitingOnes.write(entries);
+  }
+
   function deviceId() {
-    let id = localStorage.getItem("foundleft.device");
-    if (!id) {
-      id = newId();
-      localStorage.setItem("foundleft.device", id);
+    const name = "foundleft.device";
+    try {
+      const known = localStorage.getItem(name);
+      if (known) return known;
+      const id = newId();
+      localStorage.setItem(name, id);
+      return id;
+    } catch {
+      return newId();
     }
-    return id;
   }
 
   function newId() {
@@ -38,32 +83,24 @@
     return hex.replace(/^(.{8})(.{4})(.{4})(.{4})(.{12})$/, "$1-$2-$3-$4-$5");
   }
 
-  function queue() {
-    try {
-      return JSON.parse(localStorage.getItem(KEY)) || [];
-    } catch {
-      return [];
-    }
-  }
-
-  function keep(entries) {
-    if (entries.length) localStorage.setItem(KEY, JSON.stringify(entries));
-    else localStorage.removeItem(KEY);
-  }
-
   function say(kind, words) {
     state.className = kind ? `saving ${kind}` : "saving";
     if (state.textContent !== words) state.textContent = words;
   }
 
+  const KEEPS_NOTHING = "This tablet keeps nothing: stay on this page until all is saved.";
+
   function show(at) {
     const kept = queue().length;
-    if (failing && (kept || signedOut)) say("failed", kept ? `${failing} ${kept} kept on this device` : failing);
-    else if (kept) say("pending", "Saving…");
-    else if (typing.size) say("pending", "Not saved yet");
+    const keeps = waitingOnes.keeps && refusedOnes.keeps;
+    if (failing && (kept || signedOut)) {
+      const where = keeps ? "kept on this device" : `on this page alone. ${KEEPS_NOTHING}`;
+      say("failed", kept ? `${failing} ${kept} ${where}` : failing);
+    } else if (kept) say("pending", keeps ? "Saving…" : `Saving… ${KEEPS_NOTHING}`);
+    else if (typing.size) say("pending", keeps ? "Not saved yet" : `Not saved yet. ${KEEPS_NOTHING}`);
     else {
       if (at) calm = `All saved ${at}`;
-      say("", calm);
+      say(keeps ? "" : "pending", keeps ? calm : `${calm}. ${KEEPS_NOTHING}`);
     }
   }
 
@@ -97,19 +134,54 @@
 
   function told(answer) {
     const gone = new Set([...answer.saved, ...answer.refused.map((one) => one.id)]);
-    keep(queue().filter((entry) => !gone.has(entry.uuid)));
+    const before = queue();
+    const refused = answer.refused.map((one) => ({ ...one, entry: before.find((entry) => entry.uuid === one.id) }));
+    // What was typed over an entry that was not taken stands on what that one was typed over.
+    const stoodOn = new Map(refused.filter((one) => one.entry).map((one) => [one.id, one.entry.base]));
+    keep(
+      before
+        .filter((entry) => !gone.has(entry.uuid))
+        .map((entry) => (stoodOn.has(entry.base) ? { ...entry, base: stoodOn.get(entry.base) } : entry)),
+    );
+    for (const seen of document.querySelectorAll('input[name^="seen."]')) {
+      while (stoodOn.has(seen.value)) seen.value = stoodOn.get(seen.value);
+    }
     failing = "";
     signedOut = false;
-    if (answer.refused.length) {
-      refusedBox.hidden = false;
-      for (const one of answer.refused) {
-        const line = document.createElement("p");
-        line.className = "errors";
-        line.textContent = `Not taken: ${one.why}`;
-        refusedBox.append(line);
-      }
+    const fresh = refused.filter((one) => one.entry);
+    if (fresh.length) {
+      for (const { entry } of fresh) if (handed.get(entry.field) === entry.text) handed.delete(entry.field);
+      const lines = fresh.map((one) => ({ id: one.id, what: one.what, why: one.why, text: one.entry.text }));
+      refusedOnes.write([...refusedOnes.read(), ...lines]);
     }
+    showRefused();
     show(answer.at);
+  }
+
+  function showRefused() {
+    const list = refusedBox.querySelector("ul");
+    list.replaceChildren(...refusedOnes.read().map(refusedLine));
+    refusedBox.hidden = !list.children.length;
+  }
+
+  function refusedLine(one) {
+    const line = document.createElement("li");
+    const why = document.createElement("p");
+    why.className = "errors";
+    why.textContent = one.why;
+    const text = document.createElement("p");
+    text.className = "typed";
+    text.textContent = one.text || "(emptied)";
+    const button = document.createElement("button");
+    button.type = "button";
+    button.textContent = "Read: take it away";
+    button.setAttribute("aria-label", `Read: take away what was typed at ${one.what}`);
+    button.addEventListener("click", () => {
+      refusedOnes.write(refusedOnes.read().filter((other) => other.id !== one.id));
+      showRefused();
+    });
+    line.append(why, text, button);
+    return line;
   }
 
   function failed(status) {
@@ -128,24 +200,46 @@
     return match ? decodeURIComponent(match[1]) : JSON.parse(document.body.getAttribute("hx-headers"))["X-CSRFToken"];
   }
 
+  function firstPart(entries) {
+    let bytes = 0;
+    const size = (entry) => new TextEncoder().encode(JSON.stringify(entry)).length + 1;
+    const end = entries.findIndex((entry) => (bytes += size(entry)) > PART_BYTES);
+    return end < 0 ? entries : entries.slice(0, Math.max(1, end));
+  }
+
+  function post(entries, keepalive) {
+    return fetch(sheet.dataset.entries, {
+      method: "POST",
+      headers: { "Content-Type": "application/json", Accept: "application/json", "X-CSRFToken": token() },
+      body: JSON.stringify({ entries }),
+      keepalive,
+    });
+  }
+
   async function flush() {
-    const entries = queue();
-    if (flushing || !entries.length) return;
+    if (flushing || !queue().length) return;
     flushing = true;
     try {
-      const answer = await fetch(sheet.dataset.entries, {
-        method: "POST",
-        headers: { "Content-Type": "application/json", Accept: "application/json", "X-CSRFToken": token() },
-        body: JSON.stringify({ entries }),
-        keepalive: true,
-      });
-      if (answer.ok) told(await answer.json());
-      else failed(answer.status);
+      for (let left = queue().length; left; left = queue().length) {
+        const answer = await post(firstPart(queue()), false);
+        if (!answer.ok) return failed(answer.status);
+        told(await answer.json());
+        if (queue().length >= left) break;
+      }
     } catch {
       failed(0);
     } finally {
       flushing = false;
     }
+  }
+
+  // A page that is being hidden may never run again: what it can still send, the browser sends for it.
+  function flushOnLeaving() {
+    const entries = queue();
+    if (!entries.length || submitting) return;
+    post(firstPart(entries), true)
+      .then((answer) => (answer.ok ? answer.json().then(told) : failed(answer.status)))
+      .catch(() => failed(0));
   }
 
   // The entry is kept before htmx hears of the change: its request may have to wait, the entry may not.
@@ -187,11 +281,16 @@
   document.addEventListener("focusout", (event) => leaveField(event.target));
 
   document.addEventListener("visibilitychange", () => {
-    if (document.visibilityState === "hidden") leaveField(document.activeElement);
-    else flush();
+    if (document.visibilityState !== "hidden") return flush();
+    leaveField(document.activeElement);
+    flushOnLeaving();
   });
   window.addEventListener("pagehide", () => leaveField(document.activeElement));
   window.addEventListener("online", flush);
+  window.addEventListener("pageshow", () => (submitting = false));
+  window.addEventListener("beforeunload", (event) => {
+    if (!waitingOnes.keeps && queue().length && !submitting) event.preventDefault();
+  });
 
   document.addEventListener("htmx:configRequest", (event) => {
     const detail = event.detail;
@@ -224,6 +323,7 @@
   document.addEventListener("submit", (event) => {
     const form = event.target;
     if (!form.matches(".sheet-form")) return;
+    submitting = true;
     let field = form.elements.queue;
     if (!field) {
       field = document.createElement("input");
@@ -248,23 +348,29 @@
   // What an earlier load of this page could not hand over is shown again and sent first.
   function takeUp() {
     for (const entry of queue()) {
-      const field = document.querySelector(`[data-field][name="${CSS.escape(entry.field)}"]`);
-      if (!field) continue;
-      if (field.type === "checkbox") field.checked = entry.text === field.value;
-      else if (field.type !== "radio") field.value = entry.text;
+      const fields = [...document.querySelectorAll(`[data-field][name="${CSS.escape(entry.field)}"]`)];
+      if (!fields.length) continue;
+      for (const field of fields) {
+        if (field.type === "checkbox" || field.type === "radio") field.checked = entry.text === field.value;
+        else field.value = entry.text;
+      }
       handed.set(entry.field, entry.text);
-      const seen = seenOf(field);
+      const seen = seenOf(fields[0]);
       if (seen) seen.value = entry.uuid;
     }
+    showRefused();
     show();
     flush();
   }
 
   function announce() {
     const key = `${KEY}.present`;
-    const last = Number(sessionStorage.getItem(key) || 0);
-    if (Date.now() - last < 600000) return;
-    sessionStorage.setItem(key, String(Date.now()));
+    try {
+      if (Date.now() - Number(sessionStorage.getItem(key) || 0) < 600000) return;
+      sessionStorage.setItem(key, String(Date.now()));
+    } catch {
+      // Kept nowhere: announced with each load.
+    }
     sequence += 1;
     const entry = { uuid: newId(), field: "present", text: "", device, sequence, base: "" };
     keep([...queue(), { ...entry, typed_at: new Date().toISOString(), schema_version: 1 }]);

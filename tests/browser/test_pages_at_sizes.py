@@ -135,3 +135,27 @@ def test_the_keyboard_finds_a_tag_and_walks_a_list(crew: Crew) -> None:
     page.keyboard.press("Tab")
     expect(page.get_by_role("link", name="To the page")).to_be_focused()
     assert not planner.problems, "\n".join(planner.problems)
+
+
+def test_keys_that_speech_input_would_press_can_be_turned_off(crew: Crew) -> None:
+    planner = crew("planner", PASSWORD)
+    page = planner.goes_to("/register/")
+    said = page.get_by_text("down and up a list, ")
+    expect(said).to_be_visible()
+    page.locator("summary", has_text="Nell Orrowby").click()
+    page.get_by_label("Keys / j k").select_option("off")
+    page.keyboard.press("Escape")
+    expect(said).to_be_hidden()
+    for _ in range(2):
+        for key in ("/", "j", "k"):
+            page.keyboard.press(key)
+        expect(page.locator("tr.at")).to_have_count(0)
+        expect(page.get_by_role("searchbox", name="Tag or serial number")).not_to_be_focused()
+        planner.goes_to("/register/")
+        expect(said).to_be_hidden()
+    page.locator("summary", has_text="Nell Orrowby").click()
+    page.get_by_label("Keys / j k").select_option("")
+    page.keyboard.press("Escape")
+    page.keyboard.press("/")
+    expect(page.get_by_role("searchbox", name="Tag or serial number")).to_be_focused()
+    assert not planner.problems, "\n".join(planner.problems)

@@ -1,17 +1,18 @@
-// The choice is kept in a cookie, so that the server draws the next page in it from the first paint.
+// The choices are kept in cookies, so that the server draws the next page in them from the first paint.
 (() => {
   "use strict";
   const YEAR = 31536000;
 
-  function choose(theme) {
+  function keep(name, value, shown) {
     const secure = location.protocol === "https:" ? "; Secure" : "";
-    document.cookie = `theme=${theme}; Path=/; Max-Age=${theme ? YEAR : 0}; SameSite=Lax${secure}`;
-    if (theme) document.documentElement.dataset.theme = theme;
-    else delete document.documentElement.dataset.theme;
+    document.cookie = `${name}=${value}; Path=/; Max-Age=${value ? YEAR : 0}; SameSite=Lax${secure}`;
+    if (value) document.documentElement.dataset[shown] = value;
+    else delete document.documentElement.dataset[shown];
   }
 
   document.addEventListener("change", (event) => {
-    if (event.target.matches("[data-theme-choice]")) choose(event.target.value);
+    if (event.target.matches("[data-theme-choice]")) keep("theme", event.target.value, "theme");
+    if (event.target.matches("[data-keys-choice]")) keep("shortcuts", event.target.value, "shortcuts");
   });
 
   // A menu closes when another place is touched or Escape is pressed.
