@@ -26,7 +26,7 @@ def entries_from_json(body: bytes | str) -> list[NewEntry]:
     """
     try:
         sent = json.loads(body)
-    except ValueError as error:
+    except (ValueError, RecursionError) as error:
         raise ValidationError("The entries are not readable JSON.") from error
     rows = sent.get("entries") if isinstance(sent, dict) else None
     if not isinstance(rows, list) or not all(isinstance(row, dict) for row in rows):
@@ -67,7 +67,7 @@ def _entry(row: Mapping[str, Any]) -> NewEntry:
         return NewEntry(
             id=uuid.UUID(str(row["uuid"])),
             field=readable(str(row["field"]))[:80],
-            text=readable(str(row.get("text", ""))),
+            text=str(row.get("text", "")),
             device=device,
             sequence=sequence,
             base=uuid.UUID(str(row["base"])) if row.get("base") else None,

@@ -30,6 +30,7 @@ CONDITIONS: Final = (
 COULD_NOT_TEST: Final = "could-not-test"
 PRESENT: Final = "present"
 REMARKS: Final = "remarks"
+CORRECTION_REASON: Final = "correct.reason"
 ADJUSTED: Final = "adjusted"
 NOT_ADJUSTED: Final = "not adjusted"
 
@@ -44,7 +45,7 @@ _PLAIN: Final = {
     "adjust.choice": (Stage.ADJUST,),
     "adjust.log": (Stage.ADJUST, Stage.AS_LEFT),
     REMARKS: (*ORDER[3:], Stage.CORRECT),
-    "correct.reason": (Stage.CORRECT, Stage.SIGN),
+    CORRECTION_REASON: (Stage.CORRECT, Stage.SIGN),
     PRESENT: (*ORDER, Stage.CORRECT),
 }
 
@@ -152,6 +153,6 @@ _WORDS: Final = {
     "adjust.log": "what was adjusted",
     COULD_NOT_TEST: "why it could not be tested",
     REMARKS: "remarks",
-    "correct.reason": "reason for the correction",
+    CORRECTION_REASON: "reason for the correction",
     PRESENT: "sheet open",
 }

@@ -5,7 +5,6 @@ from __future__ import annotations
 import datetime
 import re
 import uuid
-from collections.abc import Mapping
 from typing import Any
 
 from django.core.exceptions import ValidationError
@@ -14,8 +13,19 @@ from django.utils import timezone
 
 from calibration.models import Run, Sheet, Standard
 from calibration.queries.choosing import candidates, exception_field, number_of, part_words, unfit
-from calibration.queries.drafts import Draft
-from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, ENDED, KINDS, NOT_ADJUSTED, ORDER, PARTS, label
+from calibration.queries.drafts import LONGEST_REASON, Draft, output_in_ma
+from calibration.sheet_fields import (
+    ADJUSTED,
+    CORRECTION_REASON,
+    COULD_NOT_TEST,
+    ENDED,
+    KINDS,
+    NOT_ADJUSTED,
+    ORDER,
+    PARTS,
+    RUN_STAGE,
+    label,
+)
 from calibration.storing_entries import locked, store
 from register import access
 from register.auditing import Act, Actor
@@ -105,6 +115,8 @@ def allow_exception(*, by: Actor, reason: str, sheet_id: uuid.UUID, standard: St
         raise ValidationError(f"{person} works on this sheet: somebody else must allow the exception.")
     if not reason.strip():
         raise ValidationError({"reason": "Say why the lapsed certificate may be relied on: it stays with the record."})
+    if len(reason.strip()) > LONGEST_REASON:
+        raise ValidationError({"reason": f"At most {LONGEST_REASON} characters stay with the record: shorten it."})
     offered = {c.standard.pk: c for c in candidates(sheet.plant, sheet.plant.today())}
     candidate = offered.get(standard.pk)
     if candidate is None or not candidate.lapsed:
@@ -177,12 +189,11 @@ def return_to_service(*, by: Actor, sheet_id: uuid.UUID) -> Sheet:
 def finish_correction(*, by: Actor, sheet_id: uuid.UUID) -> Sheet:
     """Go on to the signature once everything corrected can be read."""
     draft = _at(sheet_id, Stage.CORRECT)
-    if not draft.text("correct.reason"):
-        raise ValidationError({"correct.reason": "Say why the record is corrected: the reason stays with it."})
+    if not draft.text(CORRECTION_REASON):
+        raise ValidationError({CORRECTION_REASON: "Say why the record is corrected: the reason stays with it."})
     _no_clash(draft, "")
-    problems = [words for run in draft.runs.values() for words in run.problems]
-    if problems:
-        raise ValidationError(problems)
+    if draft.problems:
+        raise ValidationError(dict[str, Any](draft.problems))
     for kind in KINDS:
         if any(row.point is not None for row in draft.runs[kind].readings):
             store(draft.sheet, _checked_standards(draft, kind), by=_person(by))
@@ -211,6 +222,13 @@ def could_not_test(*, by: Actor, reason: str, sheet_id: uuid.UUID) -> Sheet:
         raise ValidationError("A correction changes a test that was made; abandon it if it is not needed.")
     if not reason.strip():
         raise ValidationError({"reason": "Say why it could not be tested."})
+    _no_clash(draft, "")
+    # What the run holds so far goes into the record, and can be mended only while the run is open.
+    unclear = [
+        f"{label(name)}: {words}" for kind in _open_runs(sheet) for name, words in draft.problems_of(kind).items()
+    ]
+    if unclear:
+        raise ValidationError(["Mend or empty this on the sheet first:", *unclear])
     store(sheet, {COULD_NOT_TEST: reason.strip()}, by=_person(by))
     touched = ORDER.index(Stage(sheet.stage)) >= ORDER.index(Stage.STANDARDS)
     return _moved(by, sheet, Stage.RETURN if touched else Stage.SIGN, reason=reason)
@@ -229,6 +247,10 @@ def abandon(*, by: Actor, reason: str, sheet_id: uuid.UUID) -> Sheet:
 _CARRIED = (
     "unit", "ambient-unit", "height", "height-unit", "static-unit", "digital-unit",
 )  # fmt: skip
+
+
+def _open_runs(sheet: Sheet) -> list[str]:
+    return [kind for kind, stage in RUN_STAGE.items() if sheet.stage == stage]
 
 
 def _live(sheet_id: uuid.UUID) -> Draft:
@@ -296,10 +318,8 @@ def _answered(draft: Draft, part: str, prefix: str) -> None:
 
 
 def _reading_problem(draft: Draft, name: str, text: str) -> dict[str, str]:
-    from calibration.records.judging import measured_in_ma
-
     try:
-        measured_in_ma(text, "mA", draft.basis)
+        output_in_ma(text, draft.basis)
     except ValueError as error:
         return {name: str(error)}
     return {}
@@ -344,11 +364,8 @@ def _day_of_use(draft: Draft) -> datetime.date:
 def _closable(by: Actor, draft: Draft, kind: str, with_gaps: bool) -> None:
     _no_clash(draft, f"{kind}.")
     run = draft.runs[kind]
-    errors: Mapping[str, str] = {
-        f"{kind}.{row.key}.{what}": words for row in run.readings for what, words in row.problems.items()
-    }
-    if errors:
-        raise ValidationError(dict(errors))
+    if errors := draft.problems_of(kind):
+        raise ValidationError(dict[str, Any](errors))
     fixed = _checked_standards(draft, kind)
     if run.missing and not with_gaps:
         raise ValidationError(

@@ -23,7 +23,7 @@ from calibration.queries.entries import when
 from calibration.recording import write_record
 from calibration.records.content import RecordContent, SignatureContent, UseContent
 from calibration.reopening import placed
-from calibration.sheet_fields import ADJUSTED, COULD_NOT_TEST, PARTS, PRESENT, REMARKS, label
+from calibration.sheet_fields import ADJUSTED, CORRECTION_REASON, COULD_NOT_TEST, PARTS, PRESENT, REMARKS, label
 from calibration.storing_entries import locked
 from register.auditing import Act, Actor
 from register.models import Fitting, Tag, Transmitter, User
@@ -160,7 +160,7 @@ def _corrected(draft: Draft, test: Test, *, signer: User, at: datetime.datetime)
         signatures=(_performed(signer, at, sheet),),
         sheet_id=sheet.pk,
         test_id=test.pk,
-        correction_reason=draft.text("correct.reason")[:300],
+        correction_reason=draft.text(CORRECTION_REASON),
     )
 
 
@@ -176,6 +176,7 @@ def _ready(draft: Draft, signer: User, acknowledged: Collection[str]) -> list[Ch
     if draft.clashes:
         found = "; ".join(label(kept.name) for kept in draft.clashes)
         raise ValidationError(f"Two versions differ and must be settled first: {found}.", code="clash")
+    _sound(draft)
     for kind in _kinds(draft):
         for use in _uses(draft, kind):
             if use.exception_by_id == signer.pk:
@@ -188,6 +189,16 @@ def _ready(draft: Draft, signer: User, acknowledged: Collection[str]) -> list[Ch
             code="changed",
         )
     return changes
+
+
+def _sound(draft: Draft) -> None:
+    """Refuse what a record could not keep, or would keep as something that it is not."""
+    asked = (*(f"{kind}." for kind in _kinds(draft)), CORRECTION_REASON)
+    found = [f"{label(name)}: {words}" for name, words in draft.problems.items() if name.startswith(asked)]
+    if draft.sheet.corrects_id is not None and not draft.text(CORRECTION_REASON):
+        found.append("Say why the record is corrected: the reason stays with it.")
+    if found:
+        raise ValidationError(["Go back and mend this first:", *found])
 
 
 def _kinds(draft: Draft) -> list[str]:
@@ -215,7 +226,7 @@ def _uses(draft: Draft, kind: str) -> tuple[UseContent, ...]:
                 part=part,
                 standard_id=number,
                 certificate_id=number_of(certificate),
-                exception=allowed.text[:300] if allowed else "",
+                exception=allowed.text if allowed else "",
                 exception_by_id=allowed.entry.person_id if allowed else None,
             )
         )

@@ -10,6 +10,7 @@ from dataclasses import dataclass, field
 from django.db import transaction
 from django.utils import timezone
 
+from calibration.arriving import readable
 from calibration.models import Entry, Run, Sheet
 from calibration.queries.drafts import Draft
 from calibration.queries.entries import NewEntry
@@ -64,6 +65,7 @@ def add_entries(*, by: Actor, sheet_id: uuid.UUID, entries: Sequence[NewEntry]) 
     known = {entry.id: entry for entry in Entry.objects.filter(pk__in=[new.id for new in entries])}
     used = set(sheet.entries.values_list("device", "sequence"))
     rows: list[Entry] = []
+    replaced_by_refused: dict[uuid.UUID, uuid.UUID | None] = {}
     now = _after(sheet)
     for new in sorted(entries, key=lambda new: (new.device, new.sequence)):
         if (old := known.get(new.id)) is not None:
@@ -76,8 +78,9 @@ def add_entries(*, by: Actor, sheet_id: uuid.UUID, entries: Sequence[NewEntry]) 
             continue
         if why:
             stored.refused.append((new.id, why))
+            replaced_by_refused[new.id] = new.base
             continue
-        row = _row(sheet, new, by, now)
+        row = _row(sheet, new, by, now, base=_standing_on(new.base, replaced_by_refused))
         rows.append(row)
         known[row.id] = row
         used.add((row.device, row.sequence))
@@ -175,7 +178,9 @@ def _refusal(draft: Draft, new: NewEntry, used: Iterable[tuple[str, int]]) -> st
     if new.schema_version != SCHEMA_VERSION:
         return "This page is of another version of the program: load it again. What was typed is kept on this device."
     if len(new.text) > LONGEST:
-        return f"{label(new.field)}: at most {LONGEST} characters fit here."
+        return f"{label(new.field)}: at most {LONGEST} characters fit here, {len(new.text)} were typed."
+    if readable(new.text) != new.text:
+        return f"{label(new.field)}: a character in it can be kept nowhere; type it again by hand."
     if (new.device, new.sequence) in used:
         return "This device has used this number before; load the page again."
     if why := refusal(sheet, new.field, points=draft.points):
@@ -216,7 +221,16 @@ def _unit_change(draft: Draft, new: NewEntry) -> str:
     return ""
 
 
-def _row(sheet: Sheet, new: NewEntry, by: Actor, now: datetime.datetime) -> Entry:
+def _standing_on(base: uuid.UUID | None, refused: Mapping[uuid.UUID, uuid.UUID | None]) -> uuid.UUID | None:
+    """What an entry replaces where it was typed over one that was not taken."""
+    for _ in range(len(refused)):
+        if base is None or base not in refused:
+            break
+        base = refused[base]
+    return base
+
+
+def _row(sheet: Sheet, new: NewEntry, by: Actor, now: datetime.datetime, *, base: uuid.UUID | None) -> Entry:
     assert by.person is not None
     return Entry(
         id=new.id,
@@ -225,7 +239,7 @@ def _row(sheet: Sheet, new: NewEntry, by: Actor, now: datetime.datetime) -> Entr
         text=new.text.strip(),
         device=new.device,
         sequence=new.sequence,
-        base=new.base,
+        base=base,
         typed_at=new.typed_at,
         received_at=now,
         person=by.person,

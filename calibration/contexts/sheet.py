@@ -119,10 +119,15 @@ class Step:
 
 @dataclass(frozen=True)
 class Viewer:
-    """Who looks at a sheet, and what happened when he last tried to go on."""
+    """Who looks at a sheet, and what happened when he last tried to go on.
+
+    `typed` holds what was not taken, by field: it stays in its field. `met` gathers the fields that the page shows.
+    """
 
     person: User
     errors: Mapping[str, Sequence[str]] = field(default_factory=dict)
+    typed: Mapping[str, str] = field(default_factory=dict)
+    met: set[str] = field(default_factory=set)
 
 
 def steps(draft: Draft) -> list[Step]:
@@ -164,17 +169,19 @@ def others(draft: Draft, viewer: User, now: datetime.datetime) -> list[Other]:
 def field_view(draft: Draft, name: str, viewer: Viewer, error: str = "") -> FieldView:
     """A field as it stands, for one viewer."""
     kept = draft.fields.get(name)
-    told = error or "; ".join(viewer.errors.get(name, ()))
+    told = error or "; ".join(viewer.errors.get(name, ())) or draft.problems.get(name, "")
     ident = "f-" + name.replace(".", "-")
+    viewer.met.add(name)
     if kept is None:
-        return FieldView(name, ident, "", "", told)
+        return FieldView(name, ident, viewer.typed.get(name, ""), "", told)
     entry = kept.entry
     note = (
         ""
         if entry.person_id == viewer.person.pk or not entry.text
         else (f"{entry.person}, {clock(entry.received_at, draft.zone)}")
     )
-    return FieldView(name, ident, kept.text, str(entry.id), told, note, _versions(draft, kept, viewer.person))
+    text = viewer.typed.get(name, kept.text)
+    return FieldView(name, ident, text, str(entry.id), told, note, _versions(draft, kept, viewer.person))
 
 
 def reading_views(draft: Draft, kind: str, viewer: Viewer, *, repeat: str = "") -> list[ReadingView]:
@@ -291,8 +298,7 @@ def _versions(draft: Draft, kept: Field, person: User) -> tuple[Version, ...]:
 def _reading_view(draft: Draft, kind: str, row: DraftReading, viewer: Viewer, result: Result | None) -> ReadingView:
     ident = f"r-{kind}-{row.key}"
     fields = {
-        what: field_view(draft, reading(kind, row.key, what), viewer, row.problems.get(what, ""))
-        for what in ("applied", "measured", "digital")
+        what: field_view(draft, reading(kind, row.key, what), viewer) for what in ("applied", "measured", "digital")
     }
     nominal, expected = nominal_of(draft, kind, row.percent)
     clashes = any(view.versions for view in fields.values())

@@ -15,8 +15,13 @@ from calibration.queries.entries import Field, standing, when
 from calibration.records.basis import Basis
 from calibration.records.content import ReadingContent, RunContent, UseContent
 from calibration.records.judging import JudgedRun, Point, applied_in_range_unit, judge, measured_in_ma
-from calibration.sheet_fields import PARTS, reading, reading_of
+from calibration.sheet_fields import CORRECTION_REASON, PARTS, reading, reading_of
 
+#: As much as a record keeps of a figure as typed, and of the reason for a correction [characters].
+LONGEST_FIGURE: Final = 40
+LONGEST_REASON: Final = 300
+#: Beyond this [% of range, % of output span] nothing was read: a slip of the decimal mark, or of the unit.
+ABSURD_PERCENT: Final = 1000.0
 #: Beyond this distance from its point [% of input range] an applied input is probably mistyped.
 FAR_PERCENT: Final = 5.0
 
@@ -62,10 +67,6 @@ class DraftRun:
         """Points of the list without a usable reading."""
         return [row for row in self.readings if not row.repeated and row.point is None]
 
-    @property
-    def problems(self) -> list[str]:
-        return [f"{row.label}: {words}" for row in self.readings for words in row.problems.values()]
-
     def index_of(self, key: str) -> int | None:
         """Place of a reading in the judged arrays."""
         place = 0
@@ -99,6 +100,33 @@ class Draft:
     @cached_property
     def runs(self) -> dict[str, DraftRun]:
         return {kind: self._run(kind) for kind in Run.Kind.values}
+
+    @cached_property
+    def problems(self) -> dict[str, str]:
+        """By field, what is wrong with what was typed there: it stays as typed, and no record is made with it."""
+        found = {
+            reading(kind, row.key, what): words
+            for kind, run in self.runs.items()
+            for row in run.readings
+            for what, words in row.problems.items()
+        }
+        for kind in Run.Kind.values:
+            for condition in _CONDITIONS:
+                name = f"{kind}.{condition}"
+                if (text := self.text(name)) and (
+                    words := self._condition_problem(text, self.unit_of(kind, condition))
+                ):
+                    found[name] = words
+        reason = self.text(CORRECTION_REASON)
+        if len(reason) > LONGEST_REASON:
+            found[CORRECTION_REASON] = (
+                f"At most {LONGEST_REASON} characters stay with the record, here are {len(reason)}: shorten it."
+            )
+        return found
+
+    def problems_of(self, kind: str) -> dict[str, str]:
+        """Those of `problems` that belong to one run."""
+        return {name: words for name, words in self.problems.items() if name.startswith(f"{kind}.")}
 
     @property
     def points(self) -> int:
@@ -147,6 +175,16 @@ class Draft:
                 "static": usual.get("static", "bar"),
             }[condition]
         )
+
+    def _condition_problem(self, text: str, unit: str) -> str:
+        from register.engineering.typed import parse_number
+        from register.engineering.units import to_si
+
+        try:
+            value = parse_number(_short(text), decimal_comma=self.basis.decimal_comma)
+        except ValueError as error:
+            return str(error)
+        return "" if math.isfinite(to_si(value, unit)) else _absurd(text)
 
     def _conditions(self, kind: str) -> dict[str, str]:
         columns: dict[str, str] = {}
@@ -209,7 +247,7 @@ class Draft:
         )
         figures, problems = readable(self.basis, applied, unit, measured)
         if digital:
-            problems |= _digital_problem(digital, self.basis)
+            problems |= _digital_problem(digital, self.text(f"{kind}.digital-unit"), self.basis)
         if measured and not applied:
             problems["applied"] = "Type the input that was applied: the error counts from it."
         point = None
@@ -228,14 +266,58 @@ def readable(basis: Basis, applied: str, unit: str, measured: str) -> tuple[tupl
             continue
         try:
             if name == "applied":
-                figures[place] = applied_in_range_unit(text, unit, basis)
+                figures[place] = input_in_range_unit(text, unit, basis)
             else:
-                figures[place] = measured_in_ma(text, "mA", basis)
+                figures[place] = output_in_ma(text, basis)
         except ValueError as error:
             problems[name] = str(error)
     if any(math.isnan(figure) for figure in figures):
         return None, problems
     return (figures[0], figures[1]), problems
+
+
+def input_in_range_unit(text: str, unit: str, basis: Basis) -> float:
+    """An input typed on a sheet, in the unit of the range.
+
+    Raises
+    ------
+    ValueError
+        No number, too long for a record, or so far outside the range that it cannot have been read.
+    """
+    value = applied_in_range_unit(_short(text), unit, basis)
+    signal = basis.signal()
+    return _sane(value, (value - signal.lrv) / (signal.urv - signal.lrv) * 100.0, text)
+
+
+def output_in_ma(text: str, basis: Basis) -> float:
+    """An output typed on a sheet [mA].
+
+    Raises
+    ------
+    ValueError
+        No number, too long for a record, or so far outside 4 to 20 mA that it cannot have been read.
+    """
+    value = measured_in_ma(_short(text), "mA", basis)
+    return _sane(value, (value - 4.0) / 0.16, text)
+
+
+def _sane(value: float, percent: float, text: str) -> float:
+    if not abs(percent) <= ABSURD_PERCENT:
+        raise ValueError(_absurd(text))
+    return value
+
+
+def _absurd(text: str) -> str:
+    return f"“{text}” is far beyond anything that can be read here: look at the decimal mark and at the unit."
+
+
+def _short(text: str) -> str:
+    if len(text) > LONGEST_FIGURE:
+        raise ValueError(
+            f"“{text[:LONGEST_FIGURE]}…” is longer than {LONGEST_FIGURE} characters: type the number alone; "
+            "words belong into the remarks."
+        )
+    return text
 
 
 def far_from(basis: Basis, percent: float, applied: float) -> str:
@@ -246,11 +328,9 @@ def far_from(basis: Basis, percent: float, applied: float) -> str:
     return f"{at:.4g} % of range was applied where the list asks for {percent:g} %."
 
 
-def _digital_problem(text: str, basis: Basis) -> dict[str, str]:
-    from register.engineering.typed import parse_number
-
+def _digital_problem(text: str, unit: str, basis: Basis) -> dict[str, str]:
     try:
-        parse_number(text, decimal_comma=basis.decimal_comma)
+        input_in_range_unit(text, unit, basis)
     except ValueError as error:
         return {"digital": str(error)}
     return {}

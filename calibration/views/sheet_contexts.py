@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from typing import Any
 
 from calibration.contexts.sheet import (
+    FieldView,
     Viewer,
     field_view,
     line_views,
@@ -63,6 +64,8 @@ def stage_context(draft: Draft, viewer: Viewer, *, repeat: str) -> dict[str, Any
 
 
 def _end_context(draft: Draft, viewer: Viewer) -> dict[str, Any]:
+    password_error = "; ".join(viewer.errors.get("password", ()))
+    viewer = Viewer(viewer.person)
     return {
         "runs": [finished(draft, kind, viewer) for kind in runs_shown(draft)],
         "not_tested": draft.text("could-not-test"),
@@ -71,7 +74,7 @@ def _end_context(draft: Draft, viewer: Viewer) -> dict[str, Any]:
         "lines": [line for line in line_views(draft, "checklist", viewer) if line.field.text],
         "remarks": field_view(draft, "remarks", viewer),
         "reason": field_view(draft, "correct.reason", viewer),
-        "password_error": "; ".join(viewer.errors.get("password", ())),
+        "password_error": password_error,
     }
 
 
@@ -94,6 +97,19 @@ def run_context(draft: Draft, kind: str, viewer: Viewer, *, repeat: str = "") ->
     from register.engineering.units import label as unit_label
 
     run = draft.runs[kind]
+    standards = standard_views(draft, kind, viewer)
+    unit_field = field_view(draft, f"{kind}.unit", viewer)
+    digital_unit_field = field_view(draft, f"{kind}.digital-unit", viewer)
+    conditions = [
+        _condition(draft, kind, viewer, "ambient", "Ambient temperature", choices(TEMPERATURE)),
+        _condition(draft, kind, viewer, "height", "Standard below the transmitter by", choices(LENGTH)),
+        _condition(draft, kind, viewer, "static", "Static pressure during the run", choices(PRESSURE)),
+    ]
+    folded = [
+        *(choice.field for choice in standards),
+        *(unit_field, digital_unit_field),
+        *(condition[name] for condition in conditions for name in ("field", "unit_field")),
+    ]
     return run_state(draft, kind, viewer, repeat=repeat) | {
         "limit": draft.basis.tolerance(kind).words(_unit(draft)),
         "unit": unit_label(run.unit),
@@ -101,24 +117,23 @@ def run_context(draft: Draft, kind: str, viewer: Viewer, *, repeat: str = "") ->
         "with_digital": draft.sheet.basis.get("digital") == "yes",
         "digital_unit": unit_label(draft.text(f"{kind}.digital-unit") or draft.basis.unit),
         "square_root": draft.basis.transfer == "square root",
-        "standards": standard_views(draft, kind, viewer),
-        "unit_field": field_view(draft, f"{kind}.unit", viewer),
-        "unit_chosen": run.unit,
+        "standards": standards,
+        "unit_field": unit_field,
+        "unit_chosen": _chosen(unit_field, choices(PRESSURE), run.unit),
         "pressure_units": choices(PRESSURE),
-        "digital_unit_field": field_view(draft, f"{kind}.digital-unit", viewer),
-        "digital_unit_chosen": draft.text(f"{kind}.digital-unit") or draft.basis.unit,
-        "conditions": [
-            _condition(draft, kind, viewer, "ambient", "Ambient temperature", choices(TEMPERATURE)),
-            _condition(draft, kind, viewer, "height", "Standard below the transmitter by", choices(LENGTH)),
-            _condition(draft, kind, viewer, "static", "Static pressure during the run", choices(PRESSURE)),
-        ],
+        "digital_unit_field": digital_unit_field,
+        "digital_unit_chosen": _chosen(digital_unit_field, choices(PRESSURE), draft.basis.unit),
+        "conditions_open": any(view.error or view.versions for view in folded),
+        "problems": draft.problems_of(kind),
+        "conditions": conditions,
     }
 
 
 def finished(draft: Draft, kind: str, viewer: Viewer) -> dict[str, Any]:
-    """A closed run as a table."""
+    """A closed run as a table: nothing can be typed there."""
     from register.engineering.units import label as unit_label
 
+    viewer = Viewer(viewer.person)
     verdict, css, why = verdict_words(draft, kind)
     return {
         "kind": kind,
@@ -135,13 +150,19 @@ def finished(draft: Draft, kind: str, viewer: Viewer) -> dict[str, Any]:
 def _condition(
     draft: Draft, kind: str, viewer: Viewer, name: str, label: str, units: Sequence[tuple[str, str]]
 ) -> dict[str, Any]:
+    unit_field = field_view(draft, f"{kind}.{name}-unit", viewer)
     return {
         "label": label,
         "field": field_view(draft, f"{kind}.{name}", viewer),
-        "unit_field": field_view(draft, f"{kind}.{name}-unit", viewer),
+        "unit_field": unit_field,
         "units": units,
-        "unit": draft.unit_of(kind, name),
+        "unit": _chosen(unit_field, units, draft.unit_of(kind, name)),
     }
+
+
+def _chosen(view: FieldView, offered: Sequence[tuple[str, str]], usual: str) -> str:
+    """The unit that stands in a choice: also one that was not taken, as long as it can be shown."""
+    return view.text if view.text in dict(offered) else usual
 
 
 def _unit(draft: Draft) -> str:

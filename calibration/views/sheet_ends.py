@@ -21,7 +21,7 @@ from calibration.queries.drafts import Draft
 from calibration.queries.entries import NewEntry
 from calibration.sheet_fields import label
 from calibration.storing_entries import add_entries, uuid_of
-from calibration.views.sheet import SHEETS, keep_form
+from calibration.views.sheet import SHEETS, keep_form, shown
 from register import access
 from register.auditing import Actor
 
@@ -87,7 +87,8 @@ def sheet_exception(request: HttpRequest, pk: object, standard: int) -> HttpResp
 def sheet_settle(request: HttpRequest, pk: object) -> HttpResponse:
     """Decide between the versions of a field that the page showed."""
     held = access.get(request, SHEETS, "test", pk=pk)
-    keep_form(request, held)
+    if refused := keep_form(request, held):
+        return shown(request, access.get(request, SHEETS, "test", pk=pk), refused=refused)
     draft = Draft(held)
     name = request.POST.get("settle", "").partition(" ")[0]
     kept = draft.fields.get(name)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import datetime
 import json
+from collections.abc import Sequence
 from typing import Any
 
 from django.core.exceptions import ValidationError
@@ -40,7 +41,7 @@ def sheet_entries(request: HttpRequest, pk: object) -> HttpResponse:
         return JsonResponse({"error": error.messages[0]}, status=400)
     stored = add_entries(by=Actor.of(request), sheet_id=held.pk, entries=entries)
     if as_json:
-        return JsonResponse(_told(stored))
+        return JsonResponse(_told(stored, entries))
     return _fragment(request, stored, entries[0])
 
 
@@ -151,14 +152,15 @@ def _fragment(request: HttpRequest, stored: Stored, new: NewEntry) -> HttpRespon
     else:
         context["field"] = sheet_page.field_view(draft, new.field, viewer, "; ".join(refused))
         response = render(request, "calibration/sheet.html#note", context)
-    response["HX-Trigger"] = json.dumps({"entries-told": _told(stored)})
+    response["HX-Trigger"] = json.dumps({"entries-told": _told(stored, [new])})
     return response
 
 
-def _told(stored: Stored) -> dict[str, Any]:
+def _told(stored: Stored, entries: Sequence[NewEntry]) -> dict[str, Any]:
+    called = {entry.id: label(entry.field) for entry in entries}
     return {
         "saved": [str(number) for number in stored.saved],
-        "refused": [{"id": str(number), "why": why} for number, why in stored.refused],
+        "refused": [{"id": str(number), "what": called[number], "why": why} for number, why in stored.refused],
         "clashes": [kept.name for kept in stored.draft.clashes],
         "stage": stored.draft.sheet.stage,
         "at": sheet_page.clock(timezone.now(), stored.draft.zone),

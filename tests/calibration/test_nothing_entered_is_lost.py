@@ -101,3 +101,16 @@ def test_the_unit_of_the_applied_input_cannot_change_under_readings(tablet: Devi
     tablet.type({"as-found.1.applied": "0"})
     refused = tablet.send(tablet.entry("as-found.unit", "bar")).refused
     assert "already typed in the present unit" in refused[0][1]
+
+
+def test_what_was_typed_over_something_refused_replaces_what_that_would_have_replaced(tablet: Device) -> None:
+    to_as_found(tablet)
+    tablet.type({"remarks": "first"})
+    standing = Draft(Sheet.objects.get()).fields["remarks"].entry
+    later = Device(tablet.person, tablet.sheet, "tablet-after-a-reload")
+    long = later.entry("remarks", "x" * 2001, base=standing.id)
+    longer = later.entry("remarks", "y" * 2002, base=long.id)
+    short = later.entry("remarks", "second", base=longer.id)
+    assert later.send(long, longer, short).saved == [short.id]
+    kept = Draft(Sheet.objects.get()).fields["remarks"]
+    assert (kept.clashes, kept.text) == (False, "second")

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 import uuid
 from collections.abc import Callable
 from typing import Any
@@ -12,10 +13,11 @@ from django.test import Client
 from django.urls import reverse
 from django.utils import timezone
 
+from calibration import sheets
 from calibration.models import Entry, Record, Sheet, Standard, Test
 from calibration.queries.drafts import Draft
 from tests import cast as people
-from tests.calibration.at_work import Device, run_texts, signed, standards_of, to_as_found, to_signature
+from tests.calibration.at_work import Device, run_texts, signed, standards_of, to_adjustment, to_as_found, to_signature
 
 ClientAs = Callable[[people.User], Client]
 
@@ -180,6 +182,8 @@ def test_a_queue_is_taken_as_json_and_again(client: Client, tablet: Device) -> N
         '{"entries": 3}',
         '{"entries": [3]}',
         '{"entries": [{}]}',
+        "[" * 200_000,
+        '{"entries": ' + "[" * 200_000,
         '{"entries": [{"uuid": "x", "field": "a", "device": "d", "sequence": 1, "typed_at": "2026-01-01T00:00:00Z"}]}',
         '{"entries": [{"uuid": "6f9619ff-8b86-d011-b42d-00cf4fc964ff", "field": "a", "device": "d", "sequence": 1e400,'
         ' "typed_at": "2026-01-01T00:00:00Z"}]}',
@@ -395,3 +399,129 @@ def test_a_form_with_broken_hidden_fields_is_answered(client: Client, tablet: De
     assert client.post(reverse("sheet-step", args=[tablet.sheet.pk, "confirm"]), values).status_code == 200
     assert client.post(reverse("sheet-settle", args=[tablet.sheet.pk]), {"settle": "x y"}).status_code == 302
     assert client.post(reverse("sheet-step", args=[tablet.sheet.pk, "nowhere"])).status_code == 404
+
+
+LONG = "x" * 2001
+
+
+def test_a_step_waits_for_what_was_not_taken(client: Client, tablet: Device) -> None:
+    to_as_found(tablet)
+    tablet.type(run_texts("as-found"))
+    sheets.close_as_found(by=tablet.by, sheet_id=tablet.sheet.pk)
+    tablet.type({"adjust.choice": "not adjusted"})
+    sheets.record_adjustment(by=tablet.by, sheet_id=tablet.sheet.pk)
+    answers = {f"checklist.{line['key']}": "yes" for line in tablet.sheet.basis["checklist"]}
+    text = send(client, tablet.sheet, "return", answers | {"remarks": LONG}).content.decode()
+    assert Sheet.objects.get().stage == "return"
+    assert f">{LONG}</textarea>" in text
+    assert "Not gone on" in text
+    assert text.index("2001 were typed") > text.index('id="f-remarks-note"')
+    assert send(client, tablet.sheet, "return", {"remarks": "short"}).status_code == 302
+    assert Sheet.objects.get().stage == "sign"
+
+
+def test_a_run_is_not_closed_in_a_unit_that_its_reader_changed(client: Client, tablet: Device) -> None:
+    to_as_found(tablet)
+    tablet.type(run_texts("as-found"))
+    response = send(client, tablet.sheet, "close-as-found", {"as-found.unit": "kPa"})
+    text = response.content.decode()
+    assert Sheet.objects.get().stage == "as-found"
+    assert '<option value="kPa" selected>' in text
+    assert '<details class="conditions" open>' in text
+    assert text.index("already typed in the present unit") > text.index('id="f-as-found-unit-note"')
+    assert send(client, tablet.sheet, "close-as-found", {"as-found.unit": "bar"}).status_code == 302
+
+
+def queue_of(tablet: Device, texts: dict[str, str]) -> str:
+    rows = [
+        {
+            "uuid": str(entry.id),
+            "field": entry.field,
+            "text": entry.text,
+            "device": entry.device,
+            "sequence": entry.sequence,
+            "base": "",
+            "typed_at": entry.typed_at.isoformat(),
+        }
+        for entry in (tablet.entry(name, text) for name, text in texts.items())
+    ]
+    return json.dumps({"entries": rows})
+
+
+def test_a_sheet_is_not_signed_over_something_that_was_not_taken(client: Client, tablet: Device) -> None:
+    to_signature(tablet)
+    queue = queue_of(tablet, {"as-found.3.measured": "12.04"})
+    url = reverse("sheet-sign", args=[tablet.sheet.pk])
+    text = client.post(url, {"password": people.PASSWORD, "queue": queue}).content.decode()
+    assert not Record.objects.exists()
+    assert "the as-found run is closed" in text
+    assert '<p class="typed">12.04</p>' in text
+    assert client.post(url, {"password": people.PASSWORD}).status_code == 302
+
+
+def test_nothing_is_settled_over_something_that_was_not_taken(
+    client: Client, tablet: Device, cast: people.Cast
+) -> None:
+    to_as_found(tablet)
+    name = "as-found.3.measured"
+    other = Device(cast.engineer, tablet.sheet, "tablet-b")
+    tablet.send(tablet.entry(name, "12.01"))
+    other.send(other.entry(name, "12.02"))
+    versions = Draft(Sheet.objects.get()).fields[name].versions
+    values = {"settle": f"{name} {versions[1].id}", f"versions.{name}": [str(version.id) for version in versions]}
+    url = reverse("sheet-settle", args=[tablet.sheet.pk])
+    text = client.post(url, values | {"remarks": LONG, "seen.remarks": ""}).content.decode()
+    assert LONG in text
+    assert Draft(Sheet.objects.get()).fields[name].clashes
+
+
+@pytest.mark.parametrize("bad", ["4\x00.01", "4.01\ud800"])
+def test_a_character_that_no_database_keeps_is_refused_and_nothing_else_is(
+    client: Client, tablet: Device, bad: str
+) -> None:
+    to_as_found(tablet)
+    queue = json.loads(queue_of(tablet, {"as-found.1.measured": bad, "as-found.2.measured": "8.001"}))
+    url = reverse("sheet-entries", args=[tablet.sheet.pk])
+    answer = client.post(url, json.dumps(queue), content_type="application/json").json()
+    assert [one["what"] for one in answer["refused"]] == ["as-found, reading 1, measured"]
+    assert "can be kept nowhere" in answer["refused"][0]["why"]
+    draft = Draft(Sheet.objects.get())
+    assert "as-found.1.measured" not in draft.fields
+    assert draft.text("as-found.2.measured") == "8.001"
+
+
+def test_a_form_with_such_a_character_is_shown_again(client: Client, tablet: Device) -> None:
+    response = send(client, tablet.sheet, "confirm", {"confirm-tag": "PT\x00-100", "confirm-serial": "S"})
+    text = response.content.decode()
+    assert 'value="PT-100"' in text
+    assert "can be kept nowhere" in text
+    assert Sheet.objects.get().stage == "confirm"
+
+
+def test_nobody_reads_a_session_key_in_the_entries(client: Client, tablet: Device, cast: people.Cast) -> None:
+    send(client, tablet.sheet, "save", {"confirm-tag": "PT-100"})
+    key = client.session.session_key
+    device = Entry.objects.get(field="confirm-tag").device
+    assert key and device.startswith("form-")
+    assert not any(key[start : start + 4] in device for start in range(len(key) - 3))
+    send(client, tablet.sheet, "save", {"confirm-serial": "S"})
+    assert Entry.objects.get(field="confirm-serial").device == device
+
+
+def test_adjusted_or_not_is_one_question(client: Client, tablet: Device) -> None:
+    to_adjustment(tablet)
+    text = page(client, tablet.sheet)
+    question = text[text.index('<fieldset class="choices">') : text.index("</fieldset>")]
+    assert "<legend><h2>Was it adjusted?</h2></legend>" in question
+    assert question.count('type="radio"') == question.count('aria-describedby="f-adjust-choice-note"') == 2
+    assert len(set(re.findall(r'<input[^>]* id="([^"]*)"', question))) == 2
+
+
+def test_every_button_and_choice_of_the_surroundings_says_of_what(client: Client, tablet: Device) -> None:
+    to_as_found(tablet)
+    text = page(client, tablet.sheet)
+    pairs = text[text.index('<div class="pairs">') :].partition("</details>")[0]
+    names = re.findall(r'aria-label="([^"]*)"', pairs)
+    assert len(names) == len(set(names)) == 6
+    assert "Change the sign of ambient temperature" in names
+    assert "Unit of ambient temperature" in names
