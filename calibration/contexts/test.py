@@ -6,19 +6,28 @@ import datetime
 import math
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
-from typing import Any
+from typing import TYPE_CHECKING, Any, Final
 from zoneinfo import ZoneInfo
 
 from django.utils.safestring import SafeString
 
 from calibration.contexts.figures import Figure, figures_of
 from calibration.contexts.results import Result, result_of
-from calibration.models import Record, Run, Signature, StandardUse, Test
+from calibration.models import Record, Run, Signature, StandardUse, Standing, Test
 from calibration.queries.rereading import ReadRun, judged_run
 from calibration.records.basis import Basis
 from calibration.records.canonical import FIRST_HASH
 from register.engineering.typed import NumberError, decimals_of, format_significant
+from register.figures import places_of
 
+if TYPE_CHECKING:
+    from calibration.drawing.charts import LimitPoint
+
+#: Inputs at which the limits of a plot are worked out.
+_NODES: Final = 161
+
+MILLIAMPS: Final = "mA"
+OF_SPAN: Final = "% of span"
 CSS: Mapping[str, str] = {
     "pass": "ok",
     "conditional pass": "near",
@@ -31,21 +40,26 @@ CSS: Mapping[str, str] = {
 
 @dataclass(frozen=True, slots=True)
 class Row:
-    """One reading as the table shows it; a point without reading has no result."""
+    """One reading as the table shows it, expected in the unit in which the output was measured.
+
+    A point without reading has no result.
+    """
 
     point: str
-    applied: str
-    applied_unit: str
-    expected: str
-    measured: str
-    digital: str
-    result: Result | None
-    entered: str
+    applied: str = ""
+    applied_unit: str = ""
+    expected: str = ""
+    measured: str = ""
+    output_unit: str = ""
+    digital: str = ""
+    digital_unit: str = ""
+    result: Result | None = None
+    entered: str = ""
 
 
 @dataclass(frozen=True, slots=True)
 class RunView:
-    """A run with its table, its verdict and its figures."""
+    """A run with its table, its verdict and its figures; a unit is empty where its rows have several."""
 
     kind: str
     tested_on: datetime.date
@@ -56,11 +70,13 @@ class RunView:
     limit: str
     limit_unit: str
     unit: str
+    output_unit: str
+    formula: str
     rows: tuple[Row, ...]
     figures: tuple[Figure, ...]
     conditions: tuple[tuple[str, str], ...]
     standards: tuple[StandardUse, ...]
-    decimals: tuple[int, int, int]
+    decimals: Mapping[str, int]
     by_input: bool
     with_digital: bool
     digital_unit: str
@@ -108,6 +124,23 @@ def view_of(record: Record) -> TestView:
     )
 
 
+def acceptance_of(test: Test, standing: Standing | None) -> str:
+    """What a test means for the due date of its tag, as the tag stands now."""
+    if not test.accepted:
+        return "Not accepted: the due date stays where it was."
+    if test.tag_id is None or standing is None:
+        return "Accepted; a test on the bench moves no due date."
+    last = standing.last_accepted_on if standing.transmitter_id == test.transmitter_id else None
+    if last == test.tested_on:
+        return f"Accepted: the next due date counts from {test.tested_on}."
+    if last is not None and last > test.tested_on:
+        return f"Accepted; the next due date counts from the later test of {last}."
+    return (
+        "Accepted, but the due date does not count from it: it was made in another range or with another head than the "
+        "tag has now, or before the transmitter was fitted, repaired, re-ranged or given its head."
+    )
+
+
 def plot_of(record: Record) -> SafeString | None:
     """Errors against their limits as a picture; None where nothing was read."""
     from calibration.drawing.charts import ErrorPoint, error_plot
@@ -129,6 +162,7 @@ def plot_of(record: Record) -> SafeString | None:
                 error=float(readings.error[place]),
                 up=judged.points[place].direction > 0,
                 clipped=bool(edge[place]),
+                outside=bool(readings.outside[place]),
             )
             for place in range(len(judged.points))
             if not math.isnan(float(readings.error[place]))
@@ -136,15 +170,14 @@ def plot_of(record: Record) -> SafeString | None:
         applied += [point.input for point in series[run.kind]]
     if not any(series.values()):
         return None
-    ends = (min(applied), max(applied))
     shows_left = basis.as_left is not None and Run.Kind.AS_LEFT in series
     return error_plot(
         title=f"Errors of the test of {record.test.tested_on}",
         description="Error of each reading against the input applied, between the limits of the tolerance.",
         found=series.get(Run.Kind.AS_FOUND, []),
         left=series.get(Run.Kind.AS_LEFT, []),
-        limits=_limits(basis, Run.Kind.AS_FOUND, ends),
-        left_limits=_limits(basis, Run.Kind.AS_LEFT, ends) if shows_left else [],
+        limits=_limits(basis, Run.Kind.AS_FOUND, applied),
+        left_limits=_limits(basis, Run.Kind.AS_LEFT, applied) if shows_left else [],
         input_unit=label(basis.unit),
     )
 
@@ -199,14 +232,15 @@ CSV_HEAD = (
 )  # fmt: skip
 
 
-def _limits(basis: Basis, kind: str, ends: tuple[float, float]) -> list[tuple[float, float]]:
-    """Half-width of the tolerance [% of span] between two inputs, close enough that the lines between look right."""
+def _limits(basis: Basis, kind: str, applied: Sequence[float]) -> list[LimitPoint]:
+    """Limits of the error [% of span] at the inputs applied and between them, so close that the curve shows."""
     import numpy as np
 
-    signal = basis.signal()
-    inputs = np.linspace(*ends, 41)
-    limits = basis.tolerance(kind).limits(inputs, signal)
-    return [(float(p), float(upper)) for p, upper in zip(inputs, limits.upper, strict=True)]
+    from calibration.drawing.charts import LimitPoint
+
+    inputs = np.union1d(np.linspace(min(applied), max(applied), _NODES), applied)
+    limits = basis.tolerance(kind).limits(inputs, basis.signal())
+    return [LimitPoint(*map(float, at)) for at in zip(inputs, limits.least, limits.upper, strict=True)]
 
 
 def _run_view(read: ReadRun, basis: Basis, zone: ZoneInfo) -> RunView:
@@ -218,6 +252,7 @@ def _run_view(read: ReadRun, basis: Basis, zone: ZoneInfo) -> RunView:
     figures = getattr(run, "figures", None)
     verdict = figures.verdict if figures else ""
     rows = tuple(_rows(read, zone))
+    outputs = [row.output_unit for row in rows if row.result]
     return RunView(
         kind=run.kind,
         tested_on=run.tested_on,
@@ -227,24 +262,50 @@ def _run_view(read: ReadRun, basis: Basis, zone: ZoneInfo) -> RunView:
         why=figures.why if figures else "",
         limit=tolerance.words(label(basis.unit)),
         limit_unit=label(basis.unit) if tolerance.quantity is Quantity.INPUT else "% of span",
-        unit=label(read.readings[0].applied_unit if read.readings else basis.unit),
+        unit=_shared([row.applied_unit for row in rows if row.result], label(basis.unit)),
+        output_unit=_shared(outputs, MILLIAMPS),
+        formula=_formula(outputs),
         rows=rows,
         figures=tuple(figures_of(judged)) if judged else (),
         conditions=tuple(_conditions(run)),
         standards=tuple(run.standards.all()),
-        decimals=(
-            _decimals([row.applied for row in rows]),
-            _decimals([row.measured for row in rows]),
-            _decimals([row.digital for row in rows]),
-        ),
+        decimals={
+            "applied": _decimals([row.applied for row in rows]),
+            "expected": _decimals([row.expected for row in rows]),
+            "measured": _decimals([row.measured for row in rows]),
+            "digital": _decimals([row.digital for row in rows]),
+            "error": _decimals([row.result.error for row in rows if row.result]),
+        },
         by_input=tolerance.quantity is Quantity.INPUT,
         with_digital=any(row.digital for row in rows),
-        digital_unit=label(next((row.digital_unit for row in read.readings if row.digital_unit), basis.unit)),
+        digital_unit=_shared([row.digital_unit for row in rows if row.digital], label(basis.unit)),
         differs=judged is not None and bool(verdict) and str(judged.judgement.verdict) != verdict,
     )
 
 
+def _shared(units: Sequence[str], otherwise: str) -> str:
+    """The one unit of a column, empty where there are several."""
+    found = set(units) or {otherwise}
+    return found.pop() if len(found) == 1 else ""
+
+
+def _formula(outputs: Sequence[str]) -> str:
+    """How the errors come about from the columns beside them."""
+    ways = {
+        MILLIAMPS: "(measured − expected) / 16 mA · 100 %",
+        OF_SPAN: "measured − expected",
+    }
+    said = [ways[unit] for unit in ways if unit in outputs]
+    if len(said) == 1:
+        how = said[0]
+    else:
+        how = f"{said[0]} where the output was read in mA, {said[1]} where it was read in % of span" if said else ""
+    return f"Error = {how}. Expected is the ideal output for the input actually applied." if how else ""
+
+
 def _rows(read: ReadRun, zone: ZoneInfo) -> Iterator[Row]:
+    from calibration.metrology.signal import percent_of_current
+    from calibration.metrology.writing import fixed
     from register.engineering.units import label
 
     if read.judged is None:
@@ -252,18 +313,24 @@ def _rows(read: ReadRun, zone: ZoneInfo) -> Iterator[Row]:
     readings = read.judged.judgement.readings
     for place, row in enumerate(read.readings):
         point = read.judged.points[place]
+        result = result_of(readings, place, up=point.direction > 0)
+        ideal, in_percent = float(readings.limits.ideal_ma[place]), row.measured_unit == "percent"
+        # Two places more of a current, whose percent is 0.16 mA: the error can be worked out from what is shown.
+        places = places_of(result.error) + (1 if in_percent else 2)
         yield Row(
             point=_point_words(point.nominal_percent, point.direction, point.cycle),
             applied=row.applied,
             applied_unit=label(row.applied_unit),
-            expected=f"{float(readings.limits.ideal_ma[place]):.4f}",
+            expected=fixed(float(percent_of_current(ideal)) if in_percent else ideal, places),
             measured=row.measured,
+            output_unit=OF_SPAN if in_percent else MILLIAMPS,
             digital=row.digital,
-            result=result_of(readings, place, up=point.direction > 0),
+            digital_unit=label(row.digital_unit) if row.digital_unit else "",
+            result=result,
             entered=row.entered_at.astimezone(zone).strftime("%H:%M:%S") if row.entered_at else "",
         )
     for point in read.judged.points[len(read.readings) :]:
-        yield Row(_point_words(point.nominal_percent, point.direction, point.cycle), "", "", "", "", "", None, "")
+        yield Row(_point_words(point.nominal_percent, point.direction, point.cycle))
 
 
 def _point_words(percent: float | None, direction: int, cycle: int) -> str:

@@ -1,4 +1,4 @@
-"""Figures in words: never an exponent, a true minus sign, and an error beside its limit so that both can be compared."""
+"""Figures in words: no exponent, a true minus sign, an error beside its limit so that both can be compared."""
 
 from __future__ import annotations
 

@@ -17,7 +17,7 @@ from django.views.decorators.http import require_GET
 from calibration import reviewing
 from calibration.contexts import test as test_page
 from calibration.forms.sheets import ReviewForm, SendBackForm
-from calibration.models import Record, Sheet, Test
+from calibration.models import Record, Sheet, Standing, Test
 from calibration.passwords import confirmed
 from calibration.queries.choosing import number_of
 from register import access, exporting
@@ -91,6 +91,7 @@ def _shown(request: HttpRequest, held: Test, *, form: ReviewForm | None = None, 
         "plot": test_page.plot_of(record),
         "versions": _versions(held, zone),
         "newest": newest,
+        "acceptance": test_page.acceptance_of(held, Standing.objects.filter(tag=held.tag_id).first()),
         "changes": _changes(record),
         "made": record.made_at.astimezone(zone),
         "may_review": mine and held.state == Test.State.SIGNED,

@@ -15,10 +15,10 @@ from django.test import Client
 from django.test.utils import CaptureQueriesContext
 from django.urls import reverse
 
-from calibration import sheets, signing
+from calibration import scheduling, sheets, signing
 from calibration.models import Record, Sheet, Test
 from calibration.opening import open_bench_sheet
-from calibration.recording import write_record, write_records
+from calibration.recording import ReadingContent, RunContent, write_record, write_records
 from register.auditing import Act, Actor
 from register.models import AuditEntry
 from tests import cast as people
@@ -82,6 +82,64 @@ def test_the_figures_can_be_added_up_again_by_hand(tablet: Device, auditor: Clie
     assert figures["Zero error"] == "+0.150"
     assert figures["Span error"] == "+0.050"
     assert figures["Hysteresis"] == "0.400"
+
+
+def told_rows(client: Client, record: Record) -> tuple[list[str], list[list[str]], str]:
+    """Head and rows of the table of readings, and the sentence below it."""
+    text = text_of(client, "test", record.test_id)
+    table = text[text.index("readings-table") :]
+    head, body = table.split("<tbody>", 1)
+    plain = re.compile(r"<svg.*?</svg>|<span class=\"pad\".*?</span>|<[^>]+>", re.DOTALL)
+
+    def cells(row: str) -> list[str]:
+        return [
+            " ".join(plain.sub("", cell).split()) for cell in re.findall(r"<t[hd][^>]*>(.*?)</t[hd]>", row, re.DOTALL)
+        ]
+
+    rows = [cells(row) for row in body.partition("</tbody>")[0].split("<tr>")[1:]]
+    return cells(head), rows, plain.sub("", body[body.index('<p class="quiet">') :].partition("</p>")[0])
+
+
+def mixed(tag: people.Tag, *, percent: bool) -> Record:
+    """A run with inputs in bar and kPa, and outputs in % of span, all or but the first."""
+    on = datetime.date(2016, 5, 1)
+    texts = [("0", "bar"), ("250.3", "kPa"), ("5.004", "bar"), ("1000", "kPa")]
+    outputs = [("0.11", "percent"), ("25.13", "percent"), ("50.21", "percent"), ("100.07", "percent")]
+    if not percent:
+        outputs[0] = ("4.0176", "mA")
+    taken = tuple(
+        ReadingContent(applied, measured, "up", float(point), applied_unit=unit, measured_unit=output)
+        for (applied, unit), (measured, output), point in zip(texts, outputs, (0, 25, 50, 100), strict=True)
+    )
+    act = Act(by=Actor(person=None), reason="earlier history")
+    content = described(tag, on=on, runs=(RunContent(kind="as-found", tested_on=on, readings=taken),))
+    return write_record(content, act=act)
+
+
+@pytest.mark.parametrize("percent", [True, False])
+def test_rows_in_several_units_say_theirs_and_their_errors_can_be_worked_out(
+    tag: people.Tag, auditor: Client, percent: bool
+) -> None:
+    head, rows, formula = told_rows(auditor, mixed(tag, percent=percent))
+    assert head[1] == "Applied"
+    assert [row[1] for row in rows[:3]] == ["0 bar", "250.3 kPa", "5.004 bar"]
+    assert head[3] == ("Measured % of span" if percent else "Measured")
+    assert formula.startswith("Error = measured − expected." if percent else "Error = (measured − expected) / 16 mA")
+    units = [] if percent else ["mA", "% of span", "% of span", "% of span"]
+    assert [row[3].partition(" ")[2] for row in rows[:4] if not percent] == units
+    for row in rows[:4]:
+        expected, measured, error = (float(cell.split(" ")[0].replace("−", "-")) for cell in row[2:5])
+        scale = 100 / 16 if "mA" in row[3] else 1
+        assert round((measured - expected) * scale, 3) == error
+
+
+def test_a_test_that_does_not_prove_the_range_of_today_says_so(tablet: Device, auditor: Client) -> None:
+    record = signed(tablet)
+    assert "the next due date counts from" in text_of(auditor, "test", record.test_id)
+    assert tablet.sheet.tag is not None
+    people.make_range(tablet.sheet.tag, "0", "16", effective_from=record.test.tested_on)
+    scheduling.refresh([tablet.sheet.tag.pk])
+    assert "the due date does not count from it" in text_of(auditor, "test", record.test_id)
 
 
 def test_a_transcribed_test_says_so_and_offers_no_review(
