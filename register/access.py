@@ -9,18 +9,22 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from typing import Any, Final, TypeVar
+from urllib.parse import urlencode
 
 from django.conf import settings
 from django.contrib.auth.views import redirect_to_login
-from django.core.exceptions import PermissionDenied
+from django.core.exceptions import BadRequest, PermissionDenied
 from django.db import models
 from django.http import Http404, HttpRequest, HttpResponse, JsonResponse
 from django.http.response import HttpResponseBase
 from django.shortcuts import get_object_or_404, redirect, resolve_url
+from django.urls import reverse
 
+from register.fragments import wants_part
 from register.models import Area, Flag, Membership, Plant, Role, Tag, Transmitter, User
 
 READ: Final = "read"
+SAFE: Final = frozenset({"GET", "HEAD", "OPTIONS"})
 YEAR: Final = 365 * 24 * 3600
 PERMISSIONS: Final[dict[str, frozenset[str]]] = {
     "read": frozenset(Role.values),
@@ -242,14 +246,48 @@ def keep_plant(response: HttpResponse, code: str) -> None:
     )
 
 
-def chosen_plant(request: HttpRequest) -> Plant:
-    """The plant a list shows, as `shown_plant`; 404 without any, or where the address names another's plant."""
+def chosen_plant(request: HttpRequest, permission: str = READ) -> Plant:
+    """The plant of a page that no single thing decides: the one its address names, else as `shown_plant`.
+
+    From here on the address names it, so that every form, part and page that this one leads to stays in this plant
+    whatever is looked at in another window. What is sent, and what asks for a part of a page, must name it itself
+    where the person has a choice: a cookie that another window may have changed decides nothing that is kept.
+
+    Parameters
+    ----------
+    permission : str
+        An unnamed plant is one in which the person has this.
+
+    Raises
+    ------
+    Http404
+        The address names a plant of others, or there is none.
+    PermissionDenied
+        The address names a plant in which the person has not that permission.
+    BadRequest
+        Something is sent that does not say for which of several plants.
+    """
+    user = person(request)
+    wanted = request.GET.get("plant")
+    if not wanted and len(readable_plants(user)) > 1 and (request.method not in SAFE or wants_part(request)):
+        raise BadRequest("This does not say for which plant it is.")
     plant = shown_plant(request)
     if plant is None:
         raise Http404("You have no role in any plant yet: ask an administrator.")
-    if request.GET.get("plant") not in (None, "", plant.code):
+    if wanted and wanted != plant.code:
         raise Http404
+    if not wanted and not may(user, permission, plant.pk):
+        plant = plants(user, permission).first() or plant
+    in_plant(request, plant.pk, permission)
+    named = request.GET.copy()
+    named["plant"] = plant.code
+    request.GET = named  # type: ignore[assignment]
     return plant
+
+
+def address_in(plant: Plant, name: str, *args: Any) -> str:
+    """The address of a page, in that plant."""
+    return f"{reverse(name, args=args)}?{urlencode({'plant': plant.code})}"
 
 
 def person(request: HttpRequest) -> User:

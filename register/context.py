@@ -88,8 +88,16 @@ def _once(make: Callable[[], T]) -> Callable[[], T]:
 def _sections(request: HttpRequest, person: User) -> list[Link]:
     match = request.resolver_match
     here = (match.url_name if match else "") or ""
+    shown = access.shown_plant(request) if len(access.readable_plants(person)) > 1 else None
+
+    def address(section: Section) -> str:
+        """In the plant of this page, where the person has a choice, whatever another window shows."""
+        if shown is not None and access.may(person, section.permission, shown.pk):
+            return access.address_in(shown, section.url_name)
+        return reverse(section.url_name)
+
     return [
-        Link(section.label, reverse(section.url_name), section.holds(here))
+        Link(section.label, address(section), section.holds(here))
         for section in SECTIONS
         if access.may_anywhere(person, section.permission)
     ]
@@ -99,11 +107,13 @@ def _plants(request: HttpRequest, person: User) -> list[Link]:
     shown = access.shown_plant(request)
     match = request.resolver_match
     # A list stays where it is and shows the other plant; a single thing has no counterpart there.
-    back = request.path if match and not match.kwargs and request.method == "GET" else reverse("home")
-    return [
-        Link(plant.name, f"{reverse('plant-choose', args=[plant.code])}?{urlencode({'next': back})}", plant == shown)
-        for plant in access.readable_plants(person)
-    ]
+    is_list = match is not None and not match.kwargs and request.method == "GET"
+
+    def address(plant: Plant) -> str:
+        back = f"{request.path}?{urlencode({'plant': plant.code})}" if is_list else reverse("home")
+        return f"{reverse('plant-choose', args=[plant.code])}?{urlencode({'next': back})}"
+
+    return [Link(plant.name, address(plant), plant == shown) for plant in access.readable_plants(person)]
 
 
 def _today(request: HttpRequest) -> datetime.date:

@@ -3,10 +3,10 @@
 from __future__ import annotations
 
 from django.contrib import messages
+from django.core.exceptions import ValidationError
 from django.db import IntegrityError, transaction
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import redirect, render
-from django.urls import reverse
 
 from calibration import guiding as acts
 from calibration.forms.plant_lists import GuidanceForm
@@ -17,7 +17,7 @@ from register.auditing import Actor
 from register.models import User
 
 LINES = GuidanceLine.objects.select_related("plant")
-COLUMNS = ("part", "order", "key", "text", "applies", "answer", "required")
+COLUMNS = ("part", "order", "key", "text", "applies", "condensing", "answer", "required")
 SAME_KEY = "Another line of this part has this short name already."
 
 
@@ -29,6 +29,7 @@ def guidance(request: HttpRequest) -> HttpResponse:
         request,
         "calibration/guidance.html",
         {
+            "plant": plant,
             "parts": [(part.label, [line for line in lines if line.part == part]) for part in GuidanceLine.Part],
             "may_edit": access.may(request.user, "edit guidance", plant.pk),
         },
@@ -43,12 +44,14 @@ def guidance_new(request: HttpRequest) -> HttpResponse:
         try:
             with transaction.atomic():
                 acts.add_line(by=Actor.of(request), plant=plant, reason=form.cleaned_data["reason"], **form.values())
+        except ValidationError as error:
+            form.refuse(error)
         except IntegrityError:
             form.add_error("key", SAME_KEY)
         else:
             messages.success(request, "The line stands on sheets opened from now on.")
-            return redirect("guidance")
-    return render(request, "calibration/guidance_form.html", {"form": form, "line": None})
+            return redirect(access.address_in(plant, "guidance"))
+    return render(request, "calibration/guidance_form.html", {"form": form, "plant": plant, "line": None})
 
 
 def guidance_edit(request: HttpRequest, pk: int) -> HttpResponse:
@@ -60,12 +63,14 @@ def guidance_edit(request: HttpRequest, pk: int) -> HttpResponse:
         try:
             with transaction.atomic():
                 acts.edit_line(by=Actor.of(request), line=held, reason=form.cleaned_data["reason"], **form.values())
+        except ValidationError as error:
+            form.refuse(error)
         except IntegrityError:
             form.add_error("key", SAME_KEY)
         else:
             messages.success(request, "Sheets opened from now on show the new words.")
-            return redirect("guidance")
-    return render(request, "calibration/guidance_form.html", {"form": form, "line": held})
+            return redirect(access.address_in(held.plant, "guidance"))
+    return render(request, "calibration/guidance_form.html", {"form": form, "plant": held.plant, "line": held})
 
 
 def guidance_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
@@ -74,7 +79,7 @@ def guidance_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     if request.method == "POST" and form.is_valid():
         acts.withdraw_line(by=Actor.of(request), line=held, reason=form.cleaned_data["reason"])
         messages.success(request, "The line no longer stands on new sheets.")
-        return redirect("guidance")
+        return redirect(access.address_in(held.plant, "guidance"))
     return render(
         request,
         "calibration/withdraw.html",
@@ -83,6 +88,6 @@ def guidance_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
             "what": "Withdraw a line",
             "say": held.text,
             "back": "Guidance",
-            "back_address": reverse("guidance"),
+            "back_address": access.address_in(held.plant, "guidance"),
         },
     )

@@ -159,7 +159,7 @@ def is_filtered(asked: Asked) -> bool:
 def export(request: HttpRequest, plant: Plant, asked: Asked, *, name: str) -> HttpResponseBase:
     """The whole filtered list as a CSV file; that it was taken is noted in the trail."""
     today = plant.today()
-    remark = f"{name} as CSV ({asked.address(sort='').removeprefix('?') or 'all tags'})"
+    remark = f"{name} as CSV ({asked.address(plant='', sort='').removeprefix('?') or 'all tags'})"
     exporting.note_export(by=Actor.of(request), thing=plant, plant=plant, remark=remark)
     return exporting.csv_response(
         f"{name.replace(' ', '-')}-{plant.code}-{today}.csv", FILE_HEAD, _lines(plant, asked, today)

@@ -6,7 +6,6 @@ from django.contrib import messages
 from django.db import IntegrityError, transaction
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import redirect, render
-from django.urls import reverse
 
 from calibration import pointlists as acts
 from calibration.forms.plant_lists import PointListForm
@@ -26,6 +25,7 @@ def point_lists(request: HttpRequest) -> HttpResponse:
         request,
         "calibration/point_lists.html",
         {
+            "plant": plant,
             "point_lists": PointList.objects.filter(plant=plant).order_by("withdrawn_at", "for_square_root", "name"),
             "may_edit": access.may(request.user, "set requirement", plant.pk),
         },
@@ -46,8 +46,8 @@ def point_list_new(request: HttpRequest) -> HttpResponse:
             form.add_error("name", "Another point list of this plant has this name already.")
         else:
             messages.success(request, f"“{made.name}” can be chosen now.")
-            return redirect("point-lists")
-    return render(request, "calibration/point_list_form.html", {"form": form, "point_list": None})
+            return redirect(access.address_in(plant, "point-lists"))
+    return render(request, "calibration/point_list_form.html", {"form": form, "plant": plant, "point_list": None})
 
 
 def point_list_edit(request: HttpRequest, pk: int) -> HttpResponse:
@@ -64,8 +64,8 @@ def point_list_edit(request: HttpRequest, pk: int) -> HttpResponse:
             form.add_error("name", "Another point list of this plant has this name already.")
         else:
             messages.success(request, f"“{form.cleaned_data['name']}” is changed for sheets opened from now on.")
-            return redirect("point-lists")
-    return render(request, "calibration/point_list_form.html", {"form": form, "point_list": held})
+            return redirect(access.address_in(held.plant, "point-lists"))
+    return render(request, "calibration/point_list_form.html", {"form": form, "plant": held.plant, "point_list": held})
 
 
 def point_list_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
@@ -74,7 +74,7 @@ def point_list_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     if request.method == "POST" and form.is_valid():
         acts.withdraw_point_list(by=Actor.of(request), point_list=held, reason=form.cleaned_data["reason"])
         messages.success(request, f"“{held.name}” is no longer offered.")
-        return redirect("point-lists")
+        return redirect(access.address_in(held.plant, "point-lists"))
     return render(
         request,
         "calibration/withdraw.html",
@@ -83,6 +83,6 @@ def point_list_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
             "what": f"Withdraw “{held.name}”",
             "say": "Tags that ask for it keep it; it is no longer offered for new requirements.",
             "back": "Point lists",
-            "back_address": reverse("point-lists"),
+            "back_address": access.address_in(held.plant, "point-lists"),
         },
     )

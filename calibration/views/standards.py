@@ -93,7 +93,7 @@ def standards(request: HttpRequest) -> HttpResponse:
     return render(
         request,
         "calibration/standards.html",
-        {"rows": rows, "may_edit": _may_edit(request, plant.pk)},
+        {"plant": plant, "rows": rows, "may_edit": _may_edit(request, plant.pk)},
     )
 
 
@@ -132,7 +132,7 @@ def standard_new(request: HttpRequest) -> HttpResponse:
         else:
             messages.success(request, f"{made.name} is registered. Add its certificate before it is used.")
             return redirect("standard", made.pk)
-    return render(request, "calibration/standard_form.html", {"form": form, "standard": None})
+    return render(request, "calibration/standard_form.html", {"form": form, "plant": plant, "standard": None})
 
 
 def standard_edit(request: HttpRequest, pk: int) -> HttpResponse:

@@ -8,6 +8,7 @@ import uuid
 from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Any, Final
+from urllib.parse import urlencode
 from zoneinfo import ZoneInfo
 
 from django.http import Http404, HttpRequest, HttpResponse
@@ -93,7 +94,8 @@ def export(request: HttpRequest) -> HttpResponseBase:
     plant = access.chosen_plant(request)
     form = TrailForm(request.POST)
     if not form.is_valid():
-        return redirect(f"{reverse('audit')}?{request.POST.urlencode()}")
+        asked = {name: value for name, value in request.POST.items() if name in form.fields}
+        return redirect(f"{access.address_in(plant, 'audit')}&{urlencode(asked)}")
     remark = "; ".join(f"{name}: {value}" for name, value in form.cleaned_data.items() if value)
     exporting.note_export(
         by=Actor.of(request), thing=plant, plant=plant, remark=f"audit trail as CSV ({remark or 'all of it'})"

@@ -130,8 +130,8 @@ def bad_rows(kind: Kind, request: HttpRequest, token: uuid.UUID) -> HttpResponse
 
 def blank_csv(kind: Kind, request: HttpRequest) -> HttpResponseBase:
     """An empty sheet that explains each column, as CSV; in the marks of the plant."""
-    plant = access.shown_plant(request)
-    return blank_sheets.csv_file(kind, decimal_comma=bool(plant and plant.decimal_comma))
+    plant = access.chosen_plant(request)
+    return blank_sheets.csv_file(kind, decimal_comma=plant.decimal_comma)
 
 
 def blank_xlsx(kind: Kind, request: HttpRequest) -> HttpResponseBase:
@@ -210,7 +210,7 @@ def _afterwards(kind: Kind, request: HttpRequest, kept: uploads.Kept, plant: Pla
         left = {key: place for key, place in guessed(table.head, following.columns).items() if place not in used}
     if following is None or len(left) < ENOUGH:
         kept.discard()
-        return redirect(kind.done)
+        return redirect(access.address_in(plant, kind.done))
     next_one = kept.hand_on(following.name)
     messages.info(request, f"The file also holds {following.brings}: match and check them here, or leave this page.")
     return redirect(f"import-{following.name}-match", next_one.token)

@@ -7,7 +7,7 @@ from typing import Any
 
 from django.contrib import messages
 from django.core.exceptions import PermissionDenied, ValidationError
-from django.http import Http404, HttpRequest, HttpResponse
+from django.http import HttpRequest, HttpResponse
 from django.shortcuts import redirect, render, resolve_url
 from django.views.decorators.cache import never_cache
 from django.views.decorators.debug import sensitive_post_parameters
@@ -55,7 +55,7 @@ class PlantRoles:
 @require_GET
 def people(request: HttpRequest) -> HttpResponse:
     """People of the shown plant."""
-    plant = _plant(request)
+    plant = access.chosen_plant(request, PERMISSION)
     text = request.GET.get("text", "").strip()
     page = page_of(
         request,
@@ -72,7 +72,7 @@ def people(request: HttpRequest) -> HttpResponse:
 @require_http_methods(["GET", "POST"])
 def new(request: HttpRequest) -> HttpResponse:
     """A new person with roles in the shown plant."""
-    plant = _plant(request)
+    plant = access.chosen_plant(request, PERMISSION)
     form = NewPersonForm(request.POST or None)
     if request.method == "POST" and form.is_valid():
         password = form.cleaned_data["password"] or legible_secret()
@@ -90,13 +90,13 @@ def new(request: HttpRequest) -> HttpResponse:
         else:
             request.session[JUST_GIVEN] = [person.pk, password]
             return redirect("person", person.pk)
-    return _form(request, form, "Add a person", "Add the person", "people", plant=plant)
+    return _form(request, form, f"Add a person to {plant}", "Add the person", "people", plant=plant)
 
 
 @require_http_methods(["GET", "POST"])
 def join(request: HttpRequest) -> HttpResponse:
     """Roles in the shown plant for somebody of another plant."""
-    plant = _plant(request)
+    plant = access.chosen_plant(request, PERMISSION)
     form = JoiningForm(request.POST or None)
     if request.method == "POST" and form.is_valid():
         person = form.cleaned_data["username"]
@@ -113,7 +113,7 @@ def join(request: HttpRequest) -> HttpResponse:
         else:
             messages.success(request, f"{person} now has roles in {plant}.")
             return redirect("person", person.pk)
-    return _form(request, form, "Add somebody of another plant", "Give the roles", "people", plant=plant)
+    return _form(request, form, f"Add somebody of another plant to {plant}", "Give the roles", "people", plant=plant)
 
 
 @never_cache
@@ -125,7 +125,7 @@ def person(request: HttpRequest, pk: int) -> HttpResponse:
     context = {
         "person": shown,
         "roles": _roles(request, shown),
-        "plant": _plant(request),
+        "plant": _administered(request),
         "given_password": password if given_to == shown.pk else "",
         "governs": access.governs(access.person(request), shown),
         "temporary": entering.has_temporary_password(shown),
@@ -172,7 +172,7 @@ def roles(request: HttpRequest, pk: int, code: str) -> HttpResponse:
             form.refuse(error)
         else:
             messages.success(request, f"The roles of {shown} in {plant} are changed.")
-            return redirect("people")
+            return redirect(access.address_in(plant, "people"))
     return _form(request, form, f"Roles of {shown} in {plant}", "Change the roles", "person", pk, plant=plant)
 
 
@@ -236,17 +236,11 @@ def unlock(request: HttpRequest, pk: int) -> HttpResponse:
     return redirect("person", pk)
 
 
-def _plant(request: HttpRequest) -> Plant:
-    """The shown plant where the person administers it, else the first that he does."""
-    plant = access.chosen_plant(request)
-    if access.may(access.person(request), PERMISSION, plant.pk):
-        return plant
-    if request.GET.get("plant"):
-        raise PermissionDenied("You do not administer this plant.")
-    other = access.plants(access.person(request), PERMISSION).first()
-    if other is None:
-        raise Http404
-    return other
+def _administered(request: HttpRequest) -> Plant | None:
+    """The plant whose people the page of a person leads back to: the shown one, if the viewer administers it."""
+    mine = access.plants(access.person(request), PERMISSION)
+    shown = access.shown_plant(request)
+    return shown if shown in mine else mine.first()
 
 
 def _governed(request: HttpRequest, pk: int) -> User:
@@ -279,5 +273,12 @@ def _form(
     plant: Plant | None = None,
     danger: bool = False,
 ) -> HttpResponse:
-    context = {"form": form, "title": title, "button": button, "back": resolve_url(*back), "danger": danger}
-    return render(request, "register/person_form.html", context | ({"plant": plant} if plant else {}))
+    context = {
+        "form": form,
+        "title": title,
+        "button": button,
+        "back": access.address_in(plant, *back) if plant else resolve_url(*back),
+        "danger": danger,
+        "plant": plant or _administered(request),
+    }
+    return render(request, "register/person_form.html", context)

@@ -51,7 +51,7 @@ def plant_edit(request: HttpRequest, code: str) -> HttpResponse:
     )
     if edited is not None:
         messages.success(request, f"{edited} is changed.")
-        return redirect("plants")
+        return redirect(access.address_in(edited, "plants"))
     return render(request, "register/plant_form.html", {"form": form, "edited": plant, "zones": _zones()})
 
 
@@ -62,7 +62,7 @@ def area_new(request: HttpRequest) -> HttpResponse:
     new = form.submit(lambda: editing.create_area(by=Actor.of(request), plant=plant, values=form.values()))
     if new is not None:
         messages.success(request, f"The area {new} is in the register.")
-        return redirect("plants")
+        return redirect(access.address_in(plant, "plants"))
     return render(request, "register/area_form.html", {"form": form, "plant": plant})
 
 
@@ -80,7 +80,7 @@ def area_edit(request: HttpRequest, pk: int) -> HttpResponse:
     )
     if edited is not None:
         messages.success(request, f"The area {edited} is changed; its tags are checked again.")
-        return redirect("plants")
+        return redirect(access.address_in(area.plant, "plants"))
     return render(request, "register/area_form.html", {"form": form, "area": area, "plant": area.plant})
 
 

@@ -81,7 +81,7 @@ def test_a_workbook_is_brought_in_like_text(plant: Plant, client: Client) -> Non
     check = checked(client, workbook_of(readings(shift=0.12)), "old.xlsx")
     page = client.get(check).content.decode()
     assert "9 readings are new, 0 readings are recorded already." in page and "As-found: 1 fail." in page
-    assert client.post(check.replace("check/", "bring-in/"), {"reason": "binders"})["Location"] == "/tests/"
+    assert client.post(check.replace("check/", "bring-in/"), {"reason": "binders"})["Location"] == "/tests/?plant=north"
     assert Test.objects.get().tested_on == datetime.date(2023, 5, 6)
     second = Reading.objects.get(order=2)
     assert (second.applied, second.measured) == ("2.5", "8.12")

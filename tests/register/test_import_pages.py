@@ -78,7 +78,7 @@ def test_a_register_is_brought_in_step_by_step(cast: Cast, plant: Plant, client:
     )
     assert not Tag.objects.exists()
     answer = bring_in(client, check)
-    assert answer["Location"] == "/register/"
+    assert answer["Location"] == "/register/?plant=north"
     assert Tag.objects.filter(plant=plant).count() == 3
     assert "“register.csv” is brought in: 3 new, 0 changed, 0 unchanged." in client.get("/register/").content.decode()
     assert kept(cast.engineer) == [], "the file is forgotten"
@@ -135,7 +135,7 @@ def test_a_stale_check_is_refused_shown_anew_and_the_reason_kept(cast: Cast, pla
     assert "The register changed after the file was checked" in page
     assert "Other words" in page and "spring cleaning" in page
     assert tag(plant, "PT-2041").service == "Other words"
-    assert bring_in(client, check, "spring cleaning")["Location"] == "/register/"
+    assert bring_in(client, check, "spring cleaning")["Location"] == "/register/?plant=north"
     assert tag(plant, "PT-2041").service == "New words"
 
 
