@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+import math
 from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Any, Final
@@ -19,15 +20,7 @@ METHOD: Final = (
     "between tests included. The curve is joined, never fitted: a line through it would claim far too much."
 )
 DECIMALS: Final = 3
-FILE_HEAD: Final = (
-    "what",
-    "from",
-    "to",
-    "years",
-    "as-found less as-left (% of span)",
-    "counts for the rate",
-    "why not",
-)
+NO_MPE: Final = ("MPE here", "none: this is no error of a reading; the errors at the check points are held against it")
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,9 +108,10 @@ def left_out_lines(history: History) -> list[LeftOutLine]:
 
 
 def _facts(drift: Drift) -> list[tuple[str, str]]:
-    rate, unit = drift.rate, "% of span"
+    rate, unit = drift.rate, drift.channel.unit
+    no_mpe = [NO_MPE] if drift.channel.held_at is None else []
     if not rate.enough:
-        return [("Rate", rate.notes[0])]
+        return [("Rate", rate.notes[0]), *no_mpe]
     facts = [
         ("Rate", f"{signed(rate.rate, DECIMALS)} {unit} a year"),
         ("Standard error", f"{rate.se:.{DECIMALS}f} {unit} a year"),
@@ -138,25 +132,35 @@ def _facts(drift: Drift) -> list[tuple[str, str]]:
                     f"95 % between {signed(float(then.lower), DECIMALS)} and {signed(float(then.upper), DECIMALS)}",
                 )
             )
+    else:
+        facts.append(("Prediction", f"none: {drift.no_start or 'the last as-left says nothing of it'}"))
     if drift.limits is not None:
         low, high = drift.limits
-        facts.append(("MPE here", f"{signed(low, DECIMALS)} to {signed(high, DECIMALS)} {unit}"))
+        least = signed(low, DECIMALS) if math.isfinite(low) else "any, as the output is held at 4 mA,"
+        facts.append(("MPE here", f"{least} to {signed(high, DECIMALS)} {unit}"))
+    facts += no_mpe
     if drift.meeting is not None:
         facts.append(("Band and MPE", drift.meeting.words))
     return facts
 
 
 def _chart(drift: Drift, whose: str) -> SafeString:
-    from calibration.drawing.charts import BandPoint, DriftEvent, drift_plot
+    from calibration.drawing.charts import BandPoint, DriftEvent, DriftPoint, drift_plot
+    from calibration.metrology.conformity import inside
 
-    limit = min(abs(drift.limits[0]), abs(drift.limits[1])) if drift.limits else 1.0
     spread = [pair.start for pair in drift.history.pairing.pairs]
     return drift_plot(
         title=f"Drift of the {drift.channel.label} at {whose}",
         description=f"{len(drift.history.pairing.pairs)} differences between tests, added up. "
         + (drift.meeting.words if drift.meeting else "No prediction."),
-        stretches=drift.stretches,
-        limit=limit,
+        stretches=[
+            [
+                DriftPoint(on, value, outside=drift.limits is not None and not inside(value, *drift.limits))
+                for on, value in stretch
+            ]
+            for stretch in drift.stretches
+        ],
+        limits=drift.limits,
         events=[
             DriftEvent(mark.on, mark.kind, mark.label)
             for mark in drift.history.marks
@@ -165,6 +169,7 @@ def _chart(drift: Drift, whose: str) -> SafeString:
         band=[BandPoint(*point) for point in drift.band],
         due=drift.due if drift.band else None,
         meets=_met_within(drift),
+        unit=drift.channel.unit,
     )
 
 
@@ -172,6 +177,12 @@ def _met_within(drift: Drift) -> datetime.date | None:
     """The day on which the band meets the MPE, where the band is drawn that far."""
     on = drift.meeting.on if drift.meeting else None
     return on if on is not None and drift.band and on <= drift.band[-1][0] else None
+
+
+def file_head(drift: Drift | None) -> tuple[str, ...]:
+    """The heads of the columns of `file_lines`."""
+    unit = drift.channel.unit if drift is not None else drifting.OF_SPAN
+    return ("what", "from", "to", "years", f"as-found less as-left ({unit})", "counts for the rate", "why not")
 
 
 def file_lines(drift: Drift | None, history: History) -> Iterator[tuple[Any, ...]]:

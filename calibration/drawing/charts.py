@@ -1,10 +1,12 @@
 """The large plots of a test and of a tag: the marks grown up, drawn by matplotlib for a page.
 
-Calls cost some 50 ms: one page, one or two charts; lists use `calibration.drawing.marks`.
+Calls cost some 50 ms: one page, one or two charts; lists use `calibration.drawing.marks`. Nothing is judged here: what
+is outside is said by who asks for the picture, from the comparison that made the verdict.
 """
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import date
@@ -22,15 +24,14 @@ if TYPE_CHECKING:
 INK, FAINT, HAIR, RULE = COLOURS["ink"], COLOURS["faint"], COLOURS["hair"], COLOURS["rule"]
 PAPER, OUTSIDE, NEAR, ACTION = COLOURS["paper"], COLOURS["outside"], COLOURS["near"], COLOURS["action"]
 BAND = COLOURS["band"]
-#: As in `calibration.drawing.marks`: the picture must not call outside what the verdict allows by rounding.
-SLACK = 1e-7
 
 
 @dataclass(frozen=True)
 class ErrorPoint:
     """One reading: applied input, its error, direction of the input, expanded uncertainty of the error.
 
-    `clipped` says that the error is a lower bound, because the output stood at its saturation.
+    `outside` is what the judgement of the reading says. `clipped` says that the error is a lower bound, because the
+    output stood at its saturation.
     """
 
     input: float
@@ -38,6 +39,25 @@ class ErrorPoint:
     up: bool
     uncertainty: float | None = None
     clipped: bool = False
+    outside: bool = False
+
+
+@dataclass(frozen=True)
+class LimitPoint:
+    """The limits of the error at one input; not finite where there is none on that side."""
+
+    input: float
+    lower: float
+    upper: float
+
+
+@dataclass(frozen=True)
+class DriftPoint:
+    """What has added up on one day, and whether that exceeds the limits."""
+
+    on: date
+    value: float
+    outside: bool = False
 
 
 @dataclass(frozen=True)
@@ -111,9 +131,9 @@ def error_plot(
     description: str,
     found: Sequence[ErrorPoint],
     left: Sequence[ErrorPoint] = (),
-    limits: Sequence[tuple[float, float]] = (),
-    left_limits: Sequence[tuple[float, float]] = (),
-    acceptance: Sequence[tuple[float, float]] = (),
+    limits: Sequence[LimitPoint] = (),
+    left_limits: Sequence[LimitPoint] = (),
+    acceptance: Sequence[LimitPoint] = (),
     input_unit: str,
     error_unit: str = "% of span",
 ) -> SafeString:
@@ -123,12 +143,12 @@ def error_plot(
     ----------
     title, description : name of the picture and what it shows, in words.
     found, left : readings in the order taken; input in `input_unit`, error and uncertainty in `error_unit`.
-    limits : (input, half-width of the MPE in `error_unit`) at some inputs, joined by straight lines.
+    limits : the MPE in `error_unit` at inputs close enough that straight lines between them look like the curve.
     left_limits, acceptance : likewise the as-left tolerance and the acceptance limit inside a guard band.
 
     Returns
     -------
-    Inline SVG; points outside the limit of their run are vermilion and crossed.
+    Inline SVG; points that are outside are vermilion and crossed.
     """
     from matplotlib import rc_context
 
@@ -136,13 +156,13 @@ def error_plot(
         figure, axes = _figure(3.6)
         _scale_errors(axes, [*found, *left], [*limits, *left_limits])
         keys = [
-            *_draw_run(axes, found, limits, "as-found", PAPER),
-            *_draw_run(axes, left, left_limits or limits, "as-left", INK),
+            *_draw_run(axes, found, "as-found", PAPER),
+            *_draw_run(axes, left, "as-left", INK),
             *_draw_limits(axes, limits, "MPE", linewidth=1.8, color=INK),
             *_draw_limits(axes, acceptance, "acceptance limit", linewidth=1.1, color=FAINT, linestyle=(0, (3, 2))),
             *_draw_limits(axes, left_limits, "as-left tolerance", linewidth=1.1, color=FAINT, linestyle=(0, (1, 1.5))),
         ]
-        if any(_is_outside(p, limits) for p in found) or any(_is_outside(p, left_limits or limits) for p in left):
+        if any(point.outside for point in (*found, *left)):
             keys.append(_key("outside", marker="x", markersize=8, color=OUTSIDE))
         axes.set_xlabel(f"Applied input, {input_unit}")
         axes.set_ylabel(f"Error, {error_unit}")
@@ -151,9 +171,7 @@ def error_plot(
         return inline(figure, title=title, description=description)
 
 
-def _draw_run(
-    axes: Axes, run: Sequence[ErrorPoint], limits: Sequence[tuple[float, float]], name: str, fill: str
-) -> list[Line2D]:
+def _draw_run(axes: Axes, run: Sequence[ErrorPoint], name: str, fill: str) -> list[Line2D]:
     if not run:
         return []
     style = "-" if fill == INK else (0, (4, 2))
@@ -171,12 +189,11 @@ def _draw_run(
             capthick=1,
             zorder=2,
         )
-    outside = [_is_outside(point, limits) for point in run]
     keys = []
     for up, shape in ((True, "^"), (False, "v")):
         look: dict[str, Any] = {"marker": shape, "linestyle": "none", "markeredgewidth": 1.4}
         for bad in (False, True):
-            shown = [point for point, out in zip(run, outside, strict=True) if point.up is up and out is bad]
+            shown = [point for point in run if point.up is up and point.outside is bad]
             colour = OUTSIDE if bad else INK
             face = fill if fill == PAPER else colour
             places = ([point.input for point in shown], [point.error for point in shown])
@@ -187,9 +204,9 @@ def _draw_run(
         if any(point.up is up for point in run):
             way = "up" if up else "down"
             keys.append(_key(f"{name}, {way}", markersize=7, markerfacecolor=fill, markeredgecolor=INK, **look))
-    for point, bad in zip(run, outside, strict=True):
+    for point in run:
         if point.clipped:
-            _arrow_onward(axes, point, OUTSIDE if bad else INK)
+            _arrow_onward(axes, point, OUTSIDE if point.outside else INK)
     return keys
 
 
@@ -204,31 +221,21 @@ def _arrow_onward(axes: Axes, point: ErrorPoint, colour: str) -> None:
     )
 
 
-def _is_outside(point: ErrorPoint, limits: Sequence[tuple[float, float]]) -> bool:
-    if not limits:
-        return False
-    from numpy import interp
-
-    x, half = zip(*sorted(limits), strict=True)
-    return bool(abs(point.error) > interp(point.input, x, half) * (1 + SLACK))
-
-
-def _draw_limits(axes: Axes, limits: Sequence[tuple[float, float]], label: str, **look: Any) -> list[Line2D]:
+def _draw_limits(axes: Axes, limits: Sequence[LimitPoint], label: str, **look: Any) -> list[Line2D]:
     if not limits:
         return []
-    x, half = zip(*sorted(limits), strict=True)
-    for sign in (1, -1):
-        axes.plot(x, [sign * h for h in half], zorder=2, **look)
+    inputs = [point.input for point in limits]
+    for side in ([point.lower for point in limits], [point.upper for point in limits]):
+        axes.plot(inputs, [value if math.isfinite(value) else math.nan for value in side], zorder=2, **look)
     return [_key(label, **{"linestyle": "-", **look})]
 
 
-def _scale_errors(axes: Axes, points: Sequence[ErrorPoint], limits: Sequence[tuple[float, float]]) -> None:
-    highest = max(
-        [abs(point.error) + (point.uncertainty or 0) for point in points] + [half for _, half in limits], default=1.0
-    )
-    reach = (highest or 1.0) * 1.22
+def _scale_errors(axes: Axes, points: Sequence[ErrorPoint], limits: Sequence[LimitPoint]) -> None:
+    sizes = [abs(point.error) + (point.uncertainty or 0) for point in points]
+    sizes += [abs(side) for point in limits for side in (point.lower, point.upper) if math.isfinite(side)]
+    reach = (max(sizes, default=1.0) or 1.0) * 1.22
     axes.set_ylim(-reach, reach)
-    inputs = [point.input for point in points] + [x for x, _ in limits]
+    inputs = [point.input for point in points] + [limit.input for limit in limits]
     if inputs:
         low, high = min(inputs), max(inputs)
         margin = (high - low or 1.0) * 0.035
@@ -264,21 +271,21 @@ def drift_plot(
     *,
     title: str,
     description: str,
-    stretches: Sequence[Sequence[tuple[date, float]]],
-    limit: float,
+    stretches: Sequence[Sequence[DriftPoint]],
+    limits: tuple[float, float] | None = None,
     events: Sequence[DriftEvent] = (),
     band: Sequence[BandPoint] = (),
     due: date | None = None,
     meets: date | None = None,
     unit: str = "% of span",
 ) -> SafeString:
-    """Cumulative drift against time inside the tolerance, with the prediction band and what broke the curve.
+    """Cumulative drift against time between its limits, with the prediction band and what broke the curve.
 
     Parameters
     ----------
     title, description : name of the picture and what it shows, in words.
-    stretches : unbroken stretches of (day, cumulative drift in `unit`); the curve restarts at each.
-    limit : the MPE in `unit`, half-width.
+    stretches : unbroken stretches of cumulative drift in `unit`; the curve restarts at each.
+    limits : the MPE in `unit`, lower and upper; not finite where there is none on that side, None for no MPE at all.
     events : swaps, adjustments, re-ranges and other interventions, drawn above the curve by shape.
     band : the prediction, in the order of days. due : next due date. meets : day on which the band meets the MPE.
 
@@ -291,14 +298,16 @@ def drift_plot(
     with rc_context(SETTINGS):
         figure, axes = _figure(3.8)
         figure.subplots_adjust(top=0.86, bottom=0.09)
-        for side in (limit, -limit):
+        sides = [side for side in limits or () if math.isfinite(side)]
+        for side in sides:
             axes.axhline(side, color=INK, linewidth=1.8, zorder=2)
-        keys = [_key("MPE", linestyle="-", linewidth=1.8)]
-        keys += _draw_stretches(axes, stretches, limit)
+        keys = [_key("MPE", linestyle="-", linewidth=1.8)] if sides else []
+        keys += _draw_stretches(axes, stretches)
         keys += _draw_band(axes, band)
-        _scale_drift(axes, stretches, limit, band, [event.on for event in events], due, meets)
+        _scale_drift(axes, stretches, sides, band, [event.on for event in events], due, meets)
         # Words stand between zero and the limit, on the side that the prediction leaves free.
-        free = limit if band and band[-1].centre < 0 else -limit
+        way = 1.0 if band and band[-1].centre < 0 else -1.0
+        free = next((side for side in sides if side * way > 0.0), way * axes.get_ylim()[1] / 1.2)
         _draw_day(axes, due, "due", ACTION, 0.8 * free)
         _draw_day(axes, meets, "band meets MPE", OUTSIDE, 0.5 * free)
         keys += _draw_events(axes, events)
@@ -315,17 +324,17 @@ def _days(values: Sequence[date]) -> list[float]:
     return [float(date2num(value)) for value in values]  # type: ignore[no-untyped-call]
 
 
-def _draw_stretches(axes: Axes, stretches: Sequence[Sequence[tuple[date, float]]], limit: float) -> list[Line2D]:
+def _draw_stretches(axes: Axes, stretches: Sequence[Sequence[DriftPoint]]) -> list[Line2D]:
     drawn = False
     for stretch in stretches:
         if not stretch:
             continue
         drawn = True
-        days, drift = _days([day for day, _ in stretch]), [value for _, value in stretch]
+        days, drift = _days([point.on for point in stretch]), [point.value for point in stretch]
         axes.plot(days, drift, color=INK, linewidth=1.3, marker="o", markersize=5, zorder=4)
-        for day, value in zip(days, drift, strict=True):
-            if abs(value) > limit * (1 + SLACK):
-                axes.plot(day, value, marker="x", markersize=12, markeredgewidth=1.2, color=OUTSIDE, zorder=5)
+        for day, point in zip(days, stretch, strict=True):
+            if point.outside:
+                axes.plot(day, point.value, marker="x", markersize=12, markeredgewidth=1.2, color=OUTSIDE, zorder=5)
     return [_key("cumulative drift", linestyle="-", marker="o", markersize=5, linewidth=1.3)] if drawn else []
 
 
@@ -343,19 +352,21 @@ def _draw_band(axes: Axes, band: Sequence[BandPoint]) -> list[Line2D]:
 
 def _scale_drift(
     axes: Axes,
-    stretches: Sequence[Sequence[tuple[date, float]]],
-    limit: float,
+    stretches: Sequence[Sequence[DriftPoint]],
+    sides: Sequence[float],
     band: Sequence[BandPoint],
     event_days: Sequence[date],
     due: date | None,
     meets: date | None,
 ) -> None:
-    values = [abs(value) for stretch in stretches for _, value in stretch]
+    values = [abs(point.value) for stretch in stretches for point in stretch]
+    values += [abs(side) for side in sides]
     # A wide band must not press the curve flat: it may run out of the picture.
-    values += [min(max(abs(point.low), abs(point.high)), 2 * limit) for point in band]
-    reach = max([*values, limit]) * 1.2 or 1.0
+    most = 2 * max([abs(side) for side in sides] or values, default=0.0) or math.inf
+    values += [min(max(abs(point.low), abs(point.high)), most) for point in band]
+    reach = max(values, default=0.0) * 1.2 or 1.0
     axes.set_ylim(-reach, reach)
-    days = [day for stretch in stretches for day, _ in stretch] + [point.on for point in band] + list(event_days)
+    days = [point.on for stretch in stretches for point in stretch] + [point.on for point in band] + list(event_days)
     days += [day for day in (due, meets) if day is not None]
     if days:
         first, last = _days([min(days), max(days)])

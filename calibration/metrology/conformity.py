@@ -111,10 +111,7 @@ def judge_readings(
     error = error_percent(i, limits.ideal_ma)
     u = None if expanded is None else np.broadcast_to(np.asarray(expanded, dtype=np.float64), p.shape)
     by_value = _codes_by_value(error, limits, rule, u)
-    held = _held(i, limits)
-    # Where the lower limit is itself the held output, no reading can fall below it and mean anything.
-    lower = np.where(held & (limits.lower_ma <= ZERO_MA), -np.inf, limits.lower)
-    codes, outside = _settle(error, i, lower, limits.upper, by_value, held)
+    codes, outside = _settle(error, i, limits.least, limits.upper, by_value, _held(i, limits))
 
     at_output = np.where(error < 0.0, -limits.lower, limits.upper)
     ratio = _ratio(error, i, at_output)

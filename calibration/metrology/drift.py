@@ -355,7 +355,7 @@ class DriftRate:
         start_value : float
             The last as-left value.
         lower_limit, upper_limit : float
-            Limits, in the unit of the channel (the MPE at that point).
+            Limits, in the unit of the channel (the MPE at that point); infinite where there is none on that side.
         u_found, u_left : float
             As for `predict`.
 
@@ -387,6 +387,8 @@ class DriftRate:
         """First t ≥ 0 with rate·t + factor·√(a + q·t + c·t²) = room; infinite if there is none."""
         k2 = self.t_factor**2
         a, c = u_found**2 + u_left**2, self.se**2
+        if math.isinf(room):
+            return math.inf
         if room <= self.t_factor * math.sqrt(a):
             return 0.0
         second, first, constant = rate**2 - k2 * c, -(2.0 * room * rate + k2 * self.walk), room**2 - k2 * a

@@ -113,10 +113,18 @@ class Intervention:
         On the day of a test, a bare date counts as between that test and its neighbours on both sides.
     what : str
         What was done, in words.
+    transmitter : hashable
+        To which transmitter; it breaks no pair of another one.
     """
 
     when: date
     what: str
+    transmitter: Hashable = None
+
+    @property
+    def words(self) -> str:
+        """What was done, and when."""
+        return f"{self.what} on {_day(self.when).isoformat()}"
 
 
 @dataclass(frozen=True)
@@ -170,17 +178,57 @@ class LeftOut:
 
 @dataclass(frozen=True)
 class Pairing:
-    """All pairs of a history and all tests left out; `visits` and `interventions` as given."""
+    """All pairs of a history and all tests left out.
+
+    Attributes
+    ----------
+    visits, interventions
+        As given.
+    pairs : tuple of Pair
+    left_out : tuple of LeftOut
+    bases : tuple of int or None
+        For each visit the one whose as-left stands after it; None where no as-left is known.
+    """
 
     visits: tuple[Visit, ...]
     interventions: tuple[Intervention, ...]
     pairs: tuple[Pair, ...]
     left_out: tuple[LeftOut, ...]
+    bases: tuple[int | None, ...]
 
     @property
     def channels(self) -> tuple[str, ...]:
         """Channels that at least one pair compares, in the order met."""
         return tuple(dict.fromkeys(name for pair in self.pairs for name in pair.differences))
+
+    def last_of(self, transmitter: Hashable) -> int | None:
+        """The last visit of a transmitter, whatever came of it."""
+        return max((i for i, visit in enumerate(self.visits) if visit.transmitter == transmitter), default=None)
+
+    def standing(self, transmitter: Hashable) -> tuple[int | None, str]:
+        """The visit whose as-left a transmitter still carries, with which its next as-found would be compared.
+
+        Parameters
+        ----------
+        transmitter : hashable
+            Which transmitter.
+
+        Returns
+        -------
+        int or None, str
+            The visit; or None and the reason in words.
+        """
+        last = self.last_of(transmitter)
+        if last is None:
+            return None, "there is no test of it"
+        visit, base = self.visits[last], self.bases[last]
+        if base is None or self.visits[base].transmitter != transmitter:
+            words = visit.label or "no complete as-left"
+            return None, f"test of {_day(visit.when).isoformat()}: {words}"
+        since = [i for i in self.interventions if i.transmitter == transmitter and _follows(i, self.visits[base])]
+        if since:
+            return None, "; ".join(i.words for i in since)
+        return base, ""
 
 
 @dataclass(frozen=True)
@@ -212,6 +260,12 @@ def _between(what: Intervention, before: Visit, after: Visit) -> bool:
     return _day(before.when) <= _day(what.when) <= _day(after.when)
 
 
+def _follows(what: Intervention, visit: Visit) -> bool:
+    if isinstance(what.when, datetime) and isinstance(visit.when, datetime):
+        return visit.when < what.when
+    return _day(visit.when) <= _day(what.when)
+
+
 _KEYS = (
     ("transmitter", Break.SWAP, "another transmitter was fitted since the test before"),
     ("tag", Break.TAG, "the test before was made at another tag"),
@@ -226,9 +280,9 @@ def _broken(before: Visit, after: Visit, interventions: Sequence[Intervention]) 
     for key, reason, words in _KEYS:
         if getattr(before, key) != getattr(after, key):
             return reason, words
-    done = [i for i in interventions if _between(i, before, after)]
+    done = [i for i in interventions if i.transmitter == after.transmitter and _between(i, before, after)]
     if done:
-        return Break.INTERVENTION, "; ".join(f"{i.what} on {_day(i.when).isoformat()}" for i in done)
+        return Break.INTERVENTION, "; ".join(i.words for i in done)
     if _day(before.when) == _day(after.when):
         return Break.SAME_DAY, "the test before was made on the same day"
     return None
@@ -265,8 +319,10 @@ def pair_tests(visits: Sequence[Visit], interventions: Sequence[Intervention] = 
     pairs: list[Pair] = []
     left_out: list[LeftOut] = []
     base: int | None = None
+    bases: list[int | None] = []
     why_none = (Break.FIRST, "the first test: there is no as-left before it")
     for index, visit in enumerate(visits):
+        bases.append(base)
         if visit.could_not_test:
             left_out.append(LeftOut(index, visit.when, Break.COULD_NOT_TEST, visit.could_not_test))
             continue
@@ -276,17 +332,18 @@ def pair_tests(visits: Sequence[Visit], interventions: Sequence[Intervention] = 
             if found_whole:
                 pairs.append(_pair(visits, base, index))
             else:
-                words = "the as-found run is incomplete"
+                words = "the as-found run is incomplete: a reading is missing, or is only a bound"
                 left_out.append(LeftOut(index, visit.when, Break.INCOMPLETE_FOUND, words))
                 if not visit.adjusted:
                     continue
         elif reason is not None:
             left_out.append(LeftOut(index, visit.when, *reason))
         whole = visit.complete_left if visit.adjusted else found_whole
-        base = index if whole else None
+        base = bases[-1] = index if whole else None
         if not whole:
-            why_none = (Break.INCOMPLETE_LEFT, "the test before ended with an incomplete run")
-    return Pairing(tuple(visits), tuple(interventions), tuple(pairs), tuple(left_out))
+            words = "was adjusted without a complete as-left" if visit.adjusted else "ended with an incomplete run"
+            why_none = (Break.INCOMPLETE_LEFT, f"the test before {words}")
+    return Pairing(tuple(visits), tuple(interventions), tuple(pairs), tuple(left_out), tuple(bases))
 
 
 def _pair(visits: Sequence[Visit], start: int, end: int) -> Pair:

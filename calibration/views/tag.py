@@ -62,7 +62,7 @@ def tag_drift_export(request: HttpRequest, pk: int) -> HttpResponseBase:
     )
     return exporting.csv_response(
         f"drift-{held.number}-{held.plant.today()}.csv",
-        drift_page.FILE_HEAD,
+        drift_page.file_head(view.drift),
         drift_page.file_lines(view.drift, history),
     )
 

@@ -55,7 +55,7 @@ def transmitter_drift_export(request: HttpRequest, pk: int) -> HttpResponseBase:
     )
     return exporting.csv_response(
         f"drift-{held.serial}-{held.plant.today()}.csv",
-        drift_page.FILE_HEAD,
+        drift_page.file_head(view.drift),
         drift_page.file_lines(view.drift, history),
     )
 

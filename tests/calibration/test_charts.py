@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import re
 import subprocess
 import sys
@@ -12,7 +13,7 @@ from typing import Any
 import pytest
 from django.conf import settings
 
-from calibration.drawing.charts import BandPoint, DriftEvent, ErrorPoint, drift_plot, error_plot
+from calibration.drawing.charts import BandPoint, DriftEvent, DriftPoint, ErrorPoint, LimitPoint, drift_plot, error_plot
 from calibration.drawing.inline_svg import ROLES
 from tests.drawing import fits_the_policy, parsed, tagged
 
@@ -23,12 +24,16 @@ def errors(**changes: Any) -> str:
     given: dict[str, Any] = {
         "title": "Errors of FT-2041 & more",
         "description": "As-found up to +0.30 % of span at 250 inH2O.",
-        "found": [ErrorPoint(p, 0.1 + p / 1250, place < 5, 0.05) for place, p in enumerate(POINTS)],
+        "found": [ErrorPoint(p, 0.1 + p / 1250, place < 5, 0.05, outside=p == 250.0) for place, p in enumerate(POINTS)],
         "left": [ErrorPoint(p, 0.02, place < 5) for place, p in enumerate(POINTS)],
-        "limits": [(0.0, 0.25), (250.0, 0.25)],
+        "limits": [LimitPoint(0.0, -0.25, 0.25), LimitPoint(250.0, -0.25, 0.25)],
         "input_unit": "inH2O",
     }
     return error_plot(**{**given, **changes})
+
+
+def stretch(*points: tuple[date, float], outside: bool = False) -> list[DriftPoint]:
+    return [DriftPoint(on, value, outside) for on, value in points]
 
 
 def drift(**changes: Any) -> str:
@@ -36,10 +41,10 @@ def drift(**changes: Any) -> str:
         "title": "Drift of FT-2041",
         "description": "Zero drifts by −0.05 % of span a year.",
         "stretches": [
-            [(date(2019, 3, 1), 0.0), (date(2020, 3, 3), 0.08)],
-            [(date(2021, 6, 1), 0.0), (date(2022, 5, 20), -0.08), (date(2023, 6, 3), -0.12)],
+            stretch((date(2019, 3, 1), 0.0), (date(2020, 3, 3), 0.08)),
+            stretch((date(2021, 6, 1), 0.0), (date(2022, 5, 20), -0.08), (date(2023, 6, 3), -0.12)),
         ],
-        "limit": 0.25,
+        "limits": (-0.25, 0.25),
         "events": [
             DriftEvent(date(2021, 6, 1), "swap", "K7-1 to K7-2"),
             DriftEvent(date(2020, 3, 3), "adjustment", ""),
@@ -59,6 +64,13 @@ def pieces(svg: str) -> list[int]:
     """Number of straight pieces of each line drawn inside the plot in the width of the drift curve."""
     paths = [path for path in tagged(parsed(svg), "path") if path.get("clip-path")]
     return [path.get("d", "").count("L") for path in paths if path.get("stroke-width") == "1.3"]
+
+
+def heights(svg: str, *, width: str) -> list[list[float]]:
+    """Heights of the corners of each line drawn inside the plot in a width; they grow downwards."""
+    paths = [path for path in tagged(parsed(svg), "path") if path.get("clip-path")]
+    lines = [path.get("d", "") for path in paths if path.get("stroke-width") == width]
+    return [[float(y) for y in re.findall(r"[ML] \S+ (\S+)", line)] for line in lines]
 
 
 def shapes(svg: str) -> int:
@@ -134,18 +146,38 @@ def test_legend_names_up_down_found_and_left() -> None:
     assert "as-left, up" not in words(errors(left=()))
 
 
-def test_nothing_is_called_outside_when_all_is_inside() -> None:
-    inside = [ErrorPoint(p, 0.2500000000000002, True) for p in POINTS[:5]]
-    svg = errors(found=inside, left=())
-    assert "outside" not in words(svg)
-    assert "plot-stroke-outside" not in svg
+@pytest.mark.parametrize("outside", [False, True])
+def test_what_is_outside_is_said_by_the_judgement_alone(outside: bool) -> None:
+    """The picture compares nothing: it crosses what it is told to cross, wherever its limits run."""
+    svg = errors(found=[ErrorPoint(125.0, 0.2501 if not outside else 0.2, True, outside=outside)], left=())
+    assert ("outside" in words(svg)) is outside
+    assert ("plot-stroke-outside" in svg) is outside
+    curve = [stretch((date(2019, 3, 1), 0.1), (date(2020, 3, 3), 0.1 if outside else 0.3), outside=outside)]
+    assert ("plot-stroke-outside" in drift(stretches=curve, meets=None)) is outside
 
 
-def test_as_left_is_held_against_its_own_tolerance_where_it_has_one() -> None:
-    left = [ErrorPoint(p, 0.15, True) for p in POINTS[:5]]
-    inside = [ErrorPoint(0.0, 0.0, True)]
-    assert "outside" not in words(errors(found=inside, left=left))
-    assert "outside" in words(errors(found=inside, left=left, left_limits=[(0.0, 0.1), (250.0, 0.1)]))
+def test_limits_are_drawn_as_the_curves_they_are() -> None:
+    """Upper and lower limit have their own course; where there is none on a side, nothing is drawn there."""
+    nodes = [LimitPoint(0.0, -math.inf, 0.9), LimitPoint(125.0, -0.5, 0.4), LimitPoint(250.0, -0.3, 0.2)]
+    drawn = heights(errors(found=[ErrorPoint(125.0, 0.0, True)], left=(), limits=nodes), width="1.8")
+    assert [len(line) for line in drawn] == [2, 3]
+    zero = heights(errors(found=(), left=(), limits=nodes), width="0.8")[0][0]
+    lower, upper = ([round(zero - y, 3) for y in line] for line in drawn)
+    assert lower[0] / upper[1] == pytest.approx(-0.5 / 0.4, abs=1e-3)
+    assert upper[0] / upper[2] == pytest.approx(0.9 / 0.2, rel=1e-3)
+
+
+def test_drift_stands_between_two_limits_of_their_own() -> None:
+    low, high = (line[0] for line in heights(drift(limits=(-0.3, 0.2)), width="1.8"))
+    zero = heights(drift(limits=(-0.3, 0.2)), width="0.8")[0][0]
+    assert (low - zero) / (zero - high) == pytest.approx(0.3 / 0.2, rel=1e-3)
+
+
+@pytest.mark.parametrize(("limits", "lines"), [((-0.25, 0.25), 2), ((-math.inf, 0.25), 1), (None, 0)])
+def test_where_there_is_no_limit_no_line_is_drawn(limits: tuple[float, float] | None, lines: int) -> None:
+    svg = drift(limits=limits, meets=None)
+    assert len(heights(svg, width="1.8")) == lines
+    assert ("MPE" in words(svg)) is bool(lines)
 
 
 def test_clipped_reading_gets_an_arrow_of_its_own() -> None:
@@ -179,8 +211,8 @@ def test_unknown_kind_of_event_is_shown_as_other() -> None:
 
 
 def test_drift_curve_is_not_joined_across_a_break() -> None:
-    joined = drift(stretches=[[(date(2019, 3, 1), 0.0), (date(2020, 3, 3), 0.08), (date(2021, 6, 1), 0.0)]])
-    broken = drift(stretches=[[(date(2019, 3, 1), 0.0), (date(2020, 3, 3), 0.08)], [(date(2021, 6, 1), 0.0)]])
+    first, last = stretch((date(2019, 3, 1), 0.0), (date(2020, 3, 3), 0.08)), stretch((date(2021, 6, 1), 0.0))
+    joined, broken = drift(stretches=[[*first, *last]]), drift(stretches=[first, last])
     assert 2 in pieces(joined)
     assert 2 not in pieces(broken)
 

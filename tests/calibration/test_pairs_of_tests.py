@@ -70,7 +70,7 @@ def test_after_a_break_comparing_goes_on_from_the_new_state() -> None:
 
 def test_an_intervention_between_two_tests_breaks_them_and_is_named() -> None:
     visits = [visit(2020, 0.0), visit(2021, 0.1), visit(2022, 0.2)]
-    pairing = pair_tests(visits, [Intervention(date(2020, 7, 1), "impulse lines flushed")])
+    pairing = pair_tests(visits, [Intervention(date(2020, 7, 1), "impulse lines flushed", "A")])
     assert left_out(pairing) == {0: Break.FIRST, 1: Break.INTERVENTION}
     assert pairing.left_out[1].words == "impulse lines flushed on 2020-07-01"
     assert len(pairing.pairs) == 1
@@ -78,14 +78,48 @@ def test_an_intervention_between_two_tests_breaks_them_and_is_named() -> None:
 
 def test_an_intervention_dated_only_by_day_breaks_both_pairs_of_a_test_on_that_day() -> None:
     visits = [visit(2020, 0.0), visit(2021, 0.1), visit(2022, 0.2)]
-    pairing = pair_tests(visits, [Intervention(date(2021, 3, 1), "diaphragm cleaned")])
+    pairing = pair_tests(visits, [Intervention(date(2021, 3, 1), "diaphragm cleaned", "A")])
     assert left_out(pairing) == {0: Break.FIRST, 1: Break.INTERVENTION, 2: Break.INTERVENTION}
 
 
 def test_an_intervention_known_to_the_minute_breaks_one_pair_only() -> None:
     visits = [replace(visit(y, 0.0), when=datetime(y, 3, 1, 10, tzinfo=UTC)) for y in (2020, 2021, 2022)]
-    done = Intervention(datetime(2021, 3, 1, 11, tzinfo=UTC), "diaphragm cleaned after the test")
+    done = Intervention(datetime(2021, 3, 1, 11, tzinfo=UTC), "diaphragm cleaned after the test", "A")
     assert left_out(pair_tests(visits, [done])) == {0: Break.FIRST, 2: Break.INTERVENTION}
+
+
+def test_what_is_done_to_another_transmitter_breaks_nothing() -> None:
+    pairing = pair_tests([visit(2020, 0.0), visit(2021, 0.1)], [Intervention(date(2020, 7, 1), "new head", "B")])
+    assert [(one.start_index, one.end_index) for one in pairing.pairs] == [(0, 1)]
+    assert pairing.standing("A") == (1, "")
+
+
+@pytest.mark.parametrize(
+    ("last", "stands"),
+    [
+        (visit(2022, 0.2), 2),
+        (visit(2022, 0.2, 0.0), 2),
+        (visit(2022, 0.2, complete_found=False), 1),
+        (visit(2022, 0.2, found=None, could_not_test="no permit"), 1),
+        (visit(2022, 0.2, 0.0, complete_left=False), None),
+        (visit(2022, 0.2, complete_found=False, fitting=2), None),
+        (visit(2022, 0.2, found=None, could_not_test="no permit", transmitter="B"), 1),
+    ],
+)
+def test_the_as_left_that_stands_is_the_one_the_next_as_found_would_meet(last: Visit, stands: int | None) -> None:
+    visits = [visit(2020, 0.0), visit(2021, 0.1), last]
+    base, why = pair_tests(visits).standing("A")
+    assert base == stands
+    assert bool(why) == (stands is None)
+    following = pair_tests([*visits, visit(2023, 0.3, fitting=last.fitting)]).pairs
+    assert (following[-1].start_index if following[-1].end_index == 3 else None) == stands
+
+
+def test_after_an_intervention_no_as_left_stands_and_it_is_named() -> None:
+    done = Intervention(date(2021, 7, 1), "impulse lines flushed", "A")
+    pairing = pair_tests([visit(2020, 0.0), visit(2021, 0.1)], [done])
+    assert pairing.standing("A") == (None, "impulse lines flushed on 2021-07-01")
+    assert pairing.standing("B") == (None, "there is no test of it")
 
 
 def test_a_visit_without_a_test_is_passed_over_and_said() -> None:
