@@ -16,6 +16,7 @@ from django.db.backends.base.base import BaseDatabaseWrapper
 from django.db.migrations.recorder import MigrationRecorder
 
 from register.archive import DATABASE, DamagedError, Manifest, Writer, file_chunks, verified
+from register.imports.uploads import FOLDER as PASSING
 
 
 def back_up(path: Path) -> Manifest:
@@ -129,16 +130,20 @@ def stored_columns(cursor: Any, table: str) -> list[str]:
 
 
 def _add_files(writer: Writer, manifest: Manifest) -> None:
-    """Uploaded files, after the database: a file is stored before the row that names it, and never changed."""
+    """Uploaded files, after the database, so that no row of it names a file that came later."""
     for path, name in uploaded():
         manifest.members[name] = writer.add(name, file_chunks(path))
 
 
 def uploaded() -> Iterator[tuple[Path, str]]:
-    """Uploaded files with their names in the backup."""
+    """Uploaded files with their names in the backup, without those that are only passing through an import.
+
+    These are written anew at each step and thrown away at the end, or within a day: no row names them.
+    """
     folder = Path(settings.MEDIA_ROOT)
+    passing = folder / PASSING
     for path in sorted(folder.rglob("*")):
-        if path.is_file():
+        if path.is_file() and passing not in path.parents:
             yield path, f"files/{path.relative_to(folder).as_posix()}"
 
 

@@ -158,6 +158,15 @@ def test_the_manifest_names_engine_schema_rows_and_hashes(filled: Cast, tmp_path
     assert "files/2026/certificate ü.pdf" in manifest.members
 
 
+def test_a_file_on_its_way_through_an_import_is_left_out(filled: Cast, tmp_path: Path) -> None:
+    """It is rewritten and thrown away meanwhile: a backup that came to it just then would fail."""
+    passing = tmp_path / "files" / "imports" / str(filled.engineer.pk)
+    passing.mkdir(parents=True)
+    (passing / "a.file").write_bytes(b"tag;service")
+    manifest = archive.verified(back_up(tmp_path))
+    assert [name for name in manifest.members if name.startswith("files/")] == ["files/2026/certificate ü.pdf"]
+
+
 def flip(members: dict[str, bytes]) -> None:
     name = next(name for name in sorted(members) if name.startswith(("database", "tables/register_plant")))
     data = bytearray(members[name])
