@@ -19,6 +19,11 @@ _GROUPED = re.compile(rf"[+-]?[0-9]{{1,3}}(?:[{_SPACES}][0-9]{{3}})+(?:[.,][0-9]
 _LOOKS_GROUPED = re.compile(r"[1-9][0-9]{0,2}[.,][0-9]{3}")
 
 
+#: Nothing that is measured lies beyond these; between them no conversion, span or ratio runs out of the floats.
+LARGEST: Final = 1e30
+SMALLEST: Final = 1e-30
+
+
 class NumberError(ValueError):
     """A typed text is not a number; the message says what was typed and what would be right."""
 
@@ -42,7 +47,8 @@ def parse_number(text: str, *, decimal_comma: bool = False, plausible: tuple[flo
     Raises
     ------
     NumberError
-        Nothing, no number, or a text that can be read in two ways.
+        Nothing, no number, one beyond `LARGEST` or closer to zero than `SMALLEST`, or a text that can be read in two
+        ways.
     """
     sign, body, exponent = _parts(text)
     thousands = "." if decimal_comma else ","
@@ -50,8 +56,10 @@ def parse_number(text: str, *, decimal_comma: bool = False, plausible: tuple[flo
         value = _settled(text, (sign, body, exponent), thousands, plausible)
     else:
         value = float(f"{sign}{body.replace(',', '.')}e{exponent}")
-    if not math.isfinite(value):
+    if not abs(value) <= LARGEST:
         raise NumberError(f"“{text.strip()}” is too large to be a measured value.")
+    if abs(value) < SMALLEST and body.strip("0.,"):
+        raise NumberError(f"“{text.strip()}” is too small to be a measured value: for none at all type 0.")
     return value + 0.0  # minus zero becomes zero
 
 
@@ -78,7 +86,7 @@ def format_number(value: float, decimals: int, *, signed: bool = False) -> str:
     Parameters
     ----------
     value : float
-        Finite number.
+        Number; one without end is written ∞, and none at all "?".
     decimals : int
         Digits after the point.
     signed : bool
@@ -89,6 +97,8 @@ def format_number(value: float, decimals: int, *, signed: bool = False) -> str:
     Halves of the last digit go away from zero (ISO 80000-1 Annex B, rule B; clause from memory), judged on the
     shortest decimal form of the float: 2.675 gives 2.68, as a reader of "2.675" expects.
     """
+    if not math.isfinite(value):
+        return _endless(value, signed=signed)
     rounded = Decimal(repr(float(value))).quantize(_step(decimals), rounding=ROUND_HALF_UP, context=_AMPLE)
     sign = MINUS if rounded < 0 else "+" if signed and rounded > 0 else ""
     return f"{sign}{abs(rounded):f}"
@@ -96,6 +106,8 @@ def format_number(value: float, decimals: int, *, signed: bool = False) -> str:
 
 def format_significant(value: float, digits: int = 6) -> str:
     """Write a number to so many significant digits, without trailing zeros or exponent, with a true minus sign."""
+    if not math.isfinite(value):
+        return _endless(value)
     number = Decimal(repr(float(value)))
     if not number:
         return "0"
@@ -118,6 +130,13 @@ def shortest(value: float) -> str:
     if isinstance(value, bool) or not math.isfinite(value):
         raise NumberError(f"“{value}” is not a number.")
     return _bare(Decimal(f"{value:.15g}")) if value else "0"
+
+
+def _endless(value: float, *, signed: bool = False) -> str:
+    """What a page shows where a stored figure has run out of the floats, rather than failing."""
+    if math.isnan(value):
+        return "?"
+    return f"{MINUS if value < 0 else '+' if signed else ''}∞"
 
 
 @cache

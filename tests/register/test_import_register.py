@@ -440,3 +440,12 @@ def test_a_fitting_cannot_begin_inside_an_earlier_one(plant: Plant) -> None:
     make_fitting(held, make_transmitter(plant, head("G16")), removed_on=datetime.date(2024, 7, 1))
     said = [words for _, _, words in told(proposed(plant, row(LRV="", URV="", Range_unit="", Range_from="")))]
     assert said == ["A fitting at PT-2041 lasted from 2020-01-06 to 2024-07-01: begin on or after its end."]
+
+
+@pytest.mark.parametrize(
+    "column", ["Operating pressure", "URV", "Highest process temperature", "Loop resistance (ohm)"]
+)
+def test_a_number_that_no_arithmetic_can_bear_is_a_bad_cell(plant: Plant, column: str) -> None:
+    [(_, where, words)] = told(proposed(plant, row() | {column: "1e305"}))
+    assert f"“{column}”" in where
+    assert "too large to be a measured value" in words

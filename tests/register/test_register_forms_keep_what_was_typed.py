@@ -91,6 +91,60 @@ def test_a_tag_with_errors_comes_back_as_it_was_typed(cast: people.Cast, client:
     assert f'<option value="{area.pk}" selected>' in html
 
 
+@pytest.mark.parametrize("text", ["1e305", "-1e305", "1e-310"])
+@pytest.mark.parametrize("field", ["operating_pressure", "process_max", "loop_ohm"])
+def test_a_number_that_no_arithmetic_can_bear_comes_back_with_all_the_rest(
+    cast: people.Cast, client: Client, field: str, text: str
+) -> None:
+    tag = people.make_ready_tag(people.make_area(cast.plant), "PT-2041")
+    sent = {
+        "number": "PT-2041",
+        "service": "Feed water to the drum",
+        "measurand": "pressure",
+        "area": tag.area_id,
+        "criticality": "general",
+        "pressure_unit": "MPa",
+        "pressure_reference": "gauge",
+        "temperature_unit": "degC",
+        "reason": "design case",
+        field: text,
+    }
+    response = client.post(f"/tags/{tag.pk}/edit/", sent)
+    assert "to be a measured value" in response.context["form"].errors[field][0]
+    assert 'value="Feed water to the drum"' in page(response)
+    assert f'value="{text}"' in page(response)
+
+
+@pytest.mark.parametrize(("lrv", "urv"), [("0", "1e30"), ("-1e30", "1e30"), ("0", "1e-30"), ("1e30", "0")])
+def test_the_greatest_and_the_least_numbers_that_are_read_are_judged(
+    cast: people.Cast, client: Client, lrv: str, urv: str
+) -> None:
+    tag = people.make_ready_tag(people.make_area(cast.plant), "PT-2041")
+    asked = {"lrv": lrv, "urv": urv, "unit": "MPa", "reference": "gauge", "transfer": "linear", "below_cut": "linear"}
+    judged = client.get(f"/tags/{tag.pk}/range/", asked, headers={"HX-Request": "true"})
+    assert judged.status_code == 200
+    assert judged.context["verdict"].broken
+    stored = client.post(
+        f"/tags/{tag.pk}/range/", asked | {"effective_from": cast.plant.today().isoformat(), "reason": "a test"}
+    )
+    assert stored["Location"] == f"/tags/{tag.pk}/"
+    assert client.get(stored["Location"]).status_code == 200
+
+
+def test_a_range_that_no_arithmetic_can_bear_is_not_judged(cast: people.Cast, client: Client) -> None:
+    tag = people.make_ready_tag(people.make_area(cast.plant), "PT-2041")
+    asked = {
+        "lrv": "0",
+        "urv": "1e305",
+        "unit": "MPa",
+        "reference": "gauge",
+        "transfer": "linear",
+        "below_cut": "linear",
+    }
+    judged = client.get(f"/tags/{tag.pk}/range/", asked)
+    assert judged.context["verdict"] is None
+
+
 def test_a_tag_that_is_right_is_stored(cast: people.Cast, client: Client) -> None:
     area = people.make_area(cast.plant)
     sent = {

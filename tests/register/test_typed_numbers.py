@@ -10,6 +10,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from register.engineering.typed import (
+    LARGEST,
+    SMALLEST,
     NumberError,
     decimals_of,
     format_number,
@@ -17,8 +19,11 @@ from register.engineering.typed import (
     parse_number,
     shortest,
 )
+from register.engineering.units import UNITS, to_si
 
-finite = st.floats(min_value=-1e12, max_value=1e12, allow_nan=False)
+finite = st.floats(min_value=-1e12, max_value=1e12, allow_nan=False).filter(
+    lambda value: not value or abs(value) >= SMALLEST
+)
 
 
 @pytest.mark.parametrize(
@@ -66,6 +71,12 @@ def test_what_people_type_is_read(text: str, value: float, decimals: int) -> Non
         ("1,234.5", "2 decimal marks or thousands marks"),
         ("1.234.567", "2 decimal marks or thousands marks"),
         ("1e999", "too large"),
+        ("1e305", "“1e305” is too large to be a measured value"),
+        ("-2e30", "too large"),
+        ("1" + "0" * 31, "too large"),
+        ("1e-305", "“1e-305” is too small to be a measured value"),
+        ("-1e-9999", "too small"),
+        ("0.00" + "0" * 30 + "1", "too small"),
         ("0x10", "is not a number"),
     ],
 )
@@ -172,6 +183,28 @@ def test_comma_and_point_mean_the_same_where_neither_can_part_thousands(digits: 
             parse_number(text.replace(".", ","))
     else:
         assert parse_number(text.replace(".", ",")) == parse_number(text)
+
+
+@pytest.mark.parametrize("text", ["1e30", "-1e30", "1e-30", "0", "-0", "0.000", "0e99", "0," + "0" * 36])
+def test_what_any_arithmetic_can_bear_is_read(text: str) -> None:
+    assert parse_number(text) == float(text.replace(",", "."))
+
+
+@given(
+    st.floats(-LARGEST, LARGEST).filter(lambda value: not value or abs(value) >= SMALLEST),
+    st.sampled_from(sorted(UNITS)),
+)
+def test_no_number_that_is_read_becomes_endless_in_si(value: float, unit: str) -> None:
+    assert math.isfinite(to_si(parse_number(repr(value)), unit) ** 2)
+
+
+@pytest.mark.parametrize(
+    ("value", "signed", "text"),
+    [(math.inf, False, "∞"), (-math.inf, True, "−∞"), (math.inf, True, "+∞"), (math.nan, True, "?")],
+)
+def test_what_has_run_out_of_the_floats_is_still_shown(value: float, signed: bool, text: str) -> None:
+    assert format_number(value, 2, signed=signed) == text
+    assert format_significant(value) == text.removeprefix("+")
 
 
 @given(st.text(max_size=12))
