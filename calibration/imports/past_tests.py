@@ -19,7 +19,7 @@ from calibration.imports.visits import KINDS, Visit, directions, gathered
 from calibration.models import Reading, Requirement, Standard, Test
 from calibration.records.basis import Basis
 from calibration.records.content import ReadingContent, RecordContent, RunContent, UseContent
-from calibration.records.judging import applied_in_range_unit, judge, measured_in_ma
+from calibration.records.judging import JudgedRun, applied_in_range_unit, judge, measured_in_ma
 from calibration.records.reckoning import reading_row
 from register.bulk import many_objects_alive
 from register.imports.cells import unknown
@@ -30,6 +30,7 @@ from register.models import Fitting, Plant, Tag, Transmitter
 from register.searching import key
 
 ANSWERS: Final = ("performed_by", "remarks", "could_not_test")
+MOST_NAMED: Final = 4
 PARTS: Final = (("applied", "applied_standard"), ("measured", "measured_standard"))
 #: Of each run of a test: its kind, and input [SI] and output [mA] of its readings.
 Substance = tuple[tuple[str, tuple[tuple[float, float], ...]], ...]
@@ -46,6 +47,7 @@ class Planned:
     readings: str
     terms: str
     verdicts: Mapping[str, str]
+    lacking: Mapping[str, str]
 
     @property
     def count(self) -> int:
@@ -55,7 +57,10 @@ class Planned:
     @property
     def verdict(self) -> str:
         """What each run is judged as, in words."""
-        said = ", ".join(f"{kind} {verdict}" for kind, verdict in self.verdicts.items())
+        said = ", ".join(
+            f"{kind} {verdict}" + (f" (lacks {self.lacking[kind]})" if kind in self.lacking else "")
+            for kind, verdict in self.verdicts.items()
+        )
         return said or str(self.content.outcome)
 
 
@@ -147,7 +152,7 @@ def _plan(draft: _Draft, visit: Visit, there: Mapping[tuple[int, datetime.date],
             "changed by an import. If this is another test, give it a number under “Test number”.",
         )
         return
-    verdicts = _verdicts(draft, visit, basis, points)
+    judged = _judged(draft, visit, basis, points)
     adjusted = _adjusted(draft, visit)
     if any(row in cells.bad for row in visit.rows):
         return
@@ -174,7 +179,8 @@ def _plan(draft: _Draft, visit: Visit, there: Mapping[tuple[int, datetime.date],
             device=str(device),
             readings=", ".join(f"{kind} {len(visit.runs[kind])}" for kind in KINDS if kind in visit.runs) or "none",
             terms=_said(basis),
-            verdicts=verdicts,
+            verdicts={kind: str(run.judgement.verdict) for kind, run in judged.items()},
+            lacking={kind: _lacks(run) for kind, run in judged.items() if run.missing},
         )
     )
 
@@ -277,8 +283,10 @@ def _runs(
     if named:
         basis = replace(basis, notes={**basis.notes, "points_named_from_inputs": named})
     asked = requirement.point_list if requirement else None
-    if asked is not None and lists == {asked.points}:
-        # Every run followed just the points that were asked for: that is kept with the test.
+    held = requirement is not None and requirement.effective_from <= visit.day
+    if asked is not None and (held or lists == {asked.points}):
+        # The points that were asked for on the day are kept with the test, so that a run with gaps is incomplete; those
+        # that were asked for only later, where every run followed just them.
         basis = replace(basis, points=asked.points, notes={**basis.notes, "point_list": asked.name})
     return (basis, tuple(runs), points) if not draft.cells.bad.intersection(visit.rows) else None
 
@@ -390,16 +398,26 @@ def _list_of(readings: Sequence[ReadingContent]) -> str:
     return made.text if up == [one.direction for one in readings] else ""
 
 
-def _verdicts(draft: _Draft, visit: Visit, basis: Basis, points: Mapping[str, Sequence[Any]]) -> dict[str, str]:
-    said = {}
+def _judged(draft: _Draft, visit: Visit, basis: Basis, points: Mapping[str, Sequence[Any]]) -> dict[str, JudgedRun]:
+    runs = {}
     for kind, taken in points.items():
         try:
-            judged = judge(basis, kind, taken)
+            runs[kind] = judge(basis, kind, taken)
         except ValueError as error:
             draft.cells.complain(visit.runs[kind][0], "mpe_percent", str(error))
             return {}
-        said[kind] = str(judged.judgement.verdict)
-    return said
+    return runs
+
+
+def _lacks(run: JudgedRun) -> str:
+    """The points that a run lacks, the first few of them."""
+    from calibration.metrology.pointlist import percent_text
+
+    points = run.points[len(run.points) - run.missing :]
+    names = [
+        f"{percent_text(point.nominal_percent or 0.0)} % {'up' if point.direction > 0 else 'down'}" for point in points
+    ]
+    return ", ".join(names[:MOST_NAMED]) + (f" and {len(names) - MOST_NAMED} more" if len(names) > MOST_NAMED else "")
 
 
 def _adjusted(draft: _Draft, visit: Visit) -> bool:

@@ -24,9 +24,10 @@ def terms_of(
 
     Notes
     -----
-    A point list is kept only where the register's is known to have been followed, which `past_tests` decides by the
-    readings: a list asks for points, and history is not incomplete because it followed another list. Where the day is
-    before the first range or requirement of the tag, that first one is assumed, and the basis says so.
+    The point list of a requirement that held on the day is kept (`past_tests` adds it): a run that lacks points of it
+    is incomplete. A list of later days is kept only where it was followed; else the runs must cover the range
+    (`calibration.records.judging`). Where the day is before the first range or requirement of the tag, that first one
+    is assumed, and the basis says so.
     """
     head = history.head_on(device, visit.day)
     used = _range(cells, visit, history, device, fitting)

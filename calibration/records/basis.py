@@ -193,7 +193,7 @@ class Basis:
         return DecisionRule(kind=Rule(self.rule))
 
     def point_list(self) -> PointList | None:
-        """The inputs asked for; None where none are stated (past tests brought in without a list)."""
+        """The inputs asked for; None where none are stated (past tests of days without a list)."""
         return _parsed(self.points) if self.points else None
 
 

@@ -16,6 +16,11 @@ if TYPE_CHECKING:
     from calibration.metrology.verdicts import ReadingJudgement
 
 METHOD_VERSION = 1
+#: A run without a list reaches an end of the range with a reading this close to it [% of input span] …
+END_PERCENT = 10.0
+#: … or, at the lower end of a square root, where its slope is steep, with one below this.
+ROOT_END_PERCENT = 25.0
+LEAST_LEVELS = 3
 _PLAUSIBLE_MA = (0.0, 25.0)
 _PLAUSIBLE_PERCENT = (-25.0, 131.25)
 
@@ -91,7 +96,8 @@ def judge(basis: Basis, kind: str, points: Sequence[Point]) -> JudgedRun:
 
     Notes
     -----
-    Points of the list without a reading are added as missing, so that a run with gaps is incomplete.
+    Points of the list without a reading are added as missing, so that a run with gaps is incomplete. Where no list is
+    stated, a run must reach both ends of the range and hold three different levels; what it lacks is added alike.
     """
     from calibration.metrology.conformity import judge_run
     from calibration.metrology.errors import evaluate_run
@@ -126,7 +132,7 @@ def judge_one(basis: Basis, kind: str, applied: float, measured: float) -> Readi
 def _missing(basis: Basis, points: Sequence[Point]) -> list[Point]:
     asked = basis.point_list()
     if asked is None:
-        return []
+        return _uncovered(basis, points)
     taken = Counter(
         (point.cycle, point.nominal_percent, point.direction) for point in points if not math.isnan(point.measured)
     )
@@ -147,3 +153,26 @@ def _missing(basis: Basis, points: Sequence[Point]) -> list[Point]:
                 )
             )
     return missing
+
+
+def _uncovered(basis: Basis, points: Sequence[Point]) -> list[Point]:
+    """Points that a run without a list lacks to be a test of the whole range."""
+    from calibration.metrology.pointlist import points_from_applied
+
+    if not points:
+        return []
+    signal = basis.signal()
+    taken = [float(signal.percent_of_input(point.applied)) for point in points if not math.isnan(point.measured)]
+    low, lowest = (ROOT_END_PERCENT, 10.0) if signal.is_square_root else (END_PERCENT, 0.0)
+    levels = set(points_from_applied(taken).tolist())
+    lacking = []
+    if not any(percent <= low for percent in taken):
+        lacking.append(lowest)
+    if not any(percent >= 100.0 - END_PERCENT for percent in taken):
+        lacking.append(100.0)
+    if len(levels) + len(lacking) < LEAST_LEVELS:
+        lacking.append(50.0)
+    return [
+        Point(applied=float(signal.input_of_percent(percent)), measured=math.nan, direction=1, nominal_percent=percent)
+        for percent in sorted(lacking)
+    ]

@@ -48,6 +48,12 @@ def _sentences(proposal: Proposal) -> Iterator[str]:
         verdicts = Counter(one.verdicts[kind] for one in planned if kind in one.verdicts)
         if verdicts:
             yield f"{kind.capitalize()}: {', '.join(f'{count:,} {verdict}' for verdict, count in verdicts.items())}."
+    lacking = sum(bool(one.lacking) for one in planned)
+    if lacking:
+        yield (
+            f"In {_tests(lacking)} readings are missing, so that {'it' if lacking == 1 else 'they'} cannot pass and "
+            f"{'moves' if lacking == 1 else 'move'} no due date; the column “Verdict” says which."
+        )
     unread = sum(not one.verdicts for one in planned)
     if unread:
         yield f"{unread:,} could not be tested."
@@ -89,6 +95,10 @@ TESTS: Final = Kind(
         "What was fitted on that day, and the range and requirement that held then, are found in the register. Range "
         "and tolerance that stand in the file win, and are kept with the record. For a day before the first range or "
         "requirement of a tag that first one is assumed, and the check says so.",
+        "A run must hold every point of the list that was required on its day. Where nothing was required yet, it must "
+        "reach within 10 % of both ends of the range (of a square root: the upper end, and a level of at most 25 %) "
+        "and hold at least three levels. A run that lacks any of these is incomplete: it does not pass and moves no "
+        "due date.",
         "A visit on which it could not be tested is one row with the reason and without readings.",
         "The tests are judged as they would be today, marked as transcribed, and signed by nobody. A record is never "
         "changed afterwards: look at the check before you bring them in.",

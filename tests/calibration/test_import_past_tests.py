@@ -207,11 +207,33 @@ def test_the_head_of_the_day_is_kept(plant: Plant, engineer: User) -> None:
     assert heads == [before.pk, after.pk]
 
 
-def test_a_run_that_followed_another_list_is_not_incomplete(plant: Plant, engineer: User) -> None:
-    transcribed(plant, engineer, *readings()[:5])
+def test_a_run_that_lacks_points_of_the_list_of_its_day_is_incomplete(plant: Plant, engineer: User) -> None:
+    """IEC 61298-2 runs go up and down; five readings up of a list of nine say nothing of the way down."""
+    proposal = transcribed(plant, engineer, *readings()[:5])
+    assert [one.verdict for one in proposal.planned] == [
+        "as-found incomplete (lacks 75 % down, 50 % down, 25 % down, 0 % down)"
+    ]
     test = the_test()
-    assert (test.as_found_verdict, test.accepted) == ("pass", True)
-    assert test.current_record is not None and test.current_record.basis["points"] == ""
+    assert (test.as_found_verdict, test.accepted) == ("incomplete", False)
+    assert test.current_record is not None and test.current_record.basis["points"] == "0 25 50 75 100 75 50 25 0"
+    assert Tag.objects.get().standing.due_on == BEGAN, "never tested"
+
+
+def test_a_run_with_gaps_that_is_outside_fails_all_the_same(plant: Plant, engineer: User) -> None:
+    transcribed(plant, engineer, *readings(shift=0.12)[:5])
+    assert (the_test().as_found_verdict, the_test().accepted) == ("fail", False)
+
+
+def test_more_readings_than_were_asked_for_are_no_fault(plant: Plant, engineer: User) -> None:
+    lines = readings()
+    transcribed(
+        plant,
+        engineer,
+        *lines[:2],
+        {**lines[1], "Nominal (%)": "40", "Applied": "4.000", "Measured": "10.400"},
+        *lines[2:],
+    )
+    assert (the_test().as_found_verdict, the_test().accepted) == ("pass", True)
 
 
 def test_cycles_and_directions_are_found_from_the_readings(plant: Plant, engineer: User) -> None:

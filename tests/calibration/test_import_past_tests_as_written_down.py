@@ -14,7 +14,7 @@ from calibration.models import Reading, Test
 from calibration.opening import current_requirement
 from calibration.provision import provide_defaults
 from calibration.queries import drifting
-from calibration.records.basis import Basis
+from calibration.records.basis import Basis, StatedTolerance
 from calibration.records.judging import Point, judge
 from calibration.views.import_tests import tell
 from register.auditing import Actor
@@ -167,6 +167,49 @@ def test_a_test_older_than_range_and_requirement_is_judged_by_the_first_and_says
         "the range, known from 2021-03-01 on",
         "the requirement, known from 2021-03-01 on",
     ]
+
+
+@pytest.mark.parametrize(
+    ("levels", "lacks"),
+    [
+        ((50,), "0 % up, 100 % up"),
+        ((0, 100), "50 % up"),
+        ((50, 75, 100), "0 % up"),
+        ((0, 25, 50, 75), "100 % up"),
+        ((0, 1, 100), "50 % up"),
+        ((0, 50, 100), ""),
+        ((9, 50, 91), ""),
+        ((11, 50, 89), "0 % up, 100 % up"),
+    ],
+)
+def test_where_nothing_was_required_yet_a_run_must_cover_the_range(
+    plant: Plant, engineer: User, levels: tuple[int, ...], lacks: str
+) -> None:
+    line = readings(day="2019-06-01")[0]
+    lines = [line | {"Applied": f"{level / 10:.3f}", "Measured": f"{4 + 0.16 * level:.3f}"} for level in levels]
+    for one in lines:
+        del one["Nominal (%)"]
+    told = transcribed(plant, engineer, *lines)
+    test = Test.objects.get()
+    expected = f"as-found incomplete (lacks {lacks})" if lacks else "as-found pass"
+    assert ([one.verdict for one in told.planned], test.accepted) == ([expected], not lacks)
+    said_so = [words for words in tell(told).sentences if words.startswith("In 1 test readings are missing")]
+    assert len(said_so) == bool(lacks)
+
+
+@pytest.mark.parametrize(("lowest", "verdict"), [(25.0, "pass"), (26.0, "incomplete")])
+def test_of_a_square_root_a_quarter_of_the_input_is_low_enough(lowest: float, verdict: str) -> None:
+    basis = Basis(
+        head_id=1,
+        lrv="0",
+        urv="100",
+        unit="mbar",
+        reference="differential",
+        transfer="square root",
+        mpe=StatedTolerance("percent of span", percent="0.5"),
+    )
+    points = [Point(percent, 4 + 1.6 * percent**0.5, 1, percent) for percent in (lowest, 60.0, 100.0)]
+    assert str(judge(basis, "as-found", points).judgement.verdict) == verdict
 
 
 def test_what_the_file_says_itself_is_not_assumed(plant: Plant) -> None:
