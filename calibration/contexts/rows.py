@@ -178,7 +178,7 @@ def error_cell(stored: Mapping[str, Any]) -> SafeString:
     if found is None and left is None:
         return SafeString("")
     said = [
-        f"{name} {abs(ratio) * 100:.0f} % of its limit"
+        f"{name} {abs(ratio) * 100:.0f} % of the MPE"
         for name, ratio in (("as-found", found), ("as-left", left))
         if ratio is not None
     ]

@@ -106,7 +106,7 @@ class Standing(models.Model):
     as_found_ratio = models.FloatField(null=True)
     as_left_ratio = models.FloatField(null=True)
     error_rank = models.FloatField(
-        default=NO_ERROR, help_text="Minus the size of the worst error of the last run, in multiples of its limit."
+        default=NO_ERROR, help_text="Minus the size of the worst error of the last run, in multiples of the MPE."
     )
 
     class Meta:

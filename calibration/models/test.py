@@ -54,7 +54,7 @@ class Test(models.Model):
     as_left_verdict = models.CharField(max_length=20, choices=Verdict.choices, blank=True)
     as_found_worst = models.FloatField(null=True, help_text="Signed error at the worst reading, % of output span.")
     as_left_worst = models.FloatField(null=True)
-    as_found_ratio = models.FloatField(null=True, help_text="Signed worst error in multiples of its limit.")
+    as_found_ratio = models.FloatField(null=True, help_text="Signed worst error in multiples of the MPE.")
     as_left_ratio = models.FloatField(
         null=True, help_text="As that of as-found in multiples of the MPE, though judged by the as-left tolerance."
     )

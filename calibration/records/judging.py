@@ -38,12 +38,18 @@ class Point:
 
 @dataclass(frozen=True, slots=True)
 class JudgedRun:
-    """A run with its arithmetic. `missing` counts points of the list without a reading, which stand at the end."""
+    """A run with its arithmetic.
+
+    `missing` counts points of the list without a reading, which stand at the end. `worst_ratio` is the signed error
+    that takes up most of the MPE, in multiples of it, whatever the run was judged by: errors of as-found and as-left
+    can be compared by it.
+    """
 
     points: tuple[Point, ...]
     missing: int
     evaluation: RunEvaluation
     judgement: Judgement
+    worst_ratio: float
 
 
 def applied_in_range_unit(text: str, unit: str, basis: Basis) -> float:
@@ -114,7 +120,27 @@ def judge(basis: Basis, kind: str, points: Sequence[Point]) -> JudgedRun:
         directions=[point.direction for point in whole],
     )
     judgement = judge_run(evaluation, basis.tolerance(kind), basis.decision_rule())
-    return JudgedRun(points=tuple(whole), missing=len(missing), evaluation=evaluation, judgement=judgement)
+    return JudgedRun(
+        points=tuple(whole),
+        missing=len(missing),
+        evaluation=evaluation,
+        judgement=judgement,
+        worst_ratio=_worst_of_mpe(basis, judgement),
+    )
+
+
+def _worst_of_mpe(basis: Basis, judgement: Judgement) -> float:
+    import numpy as np
+
+    from calibration.metrology.conformity import judge_readings
+
+    mpe = basis.mpe.in_unit(basis.unit)
+    if mpe == judgement.tolerance:
+        return judgement.worst_ratio
+    readings = judgement.readings
+    ratios = judge_readings(readings.applied, readings.measured, readings.signal, mpe, readings.rule).ratio
+    known = ratios[np.isfinite(ratios)]
+    return float(known[np.argmax(np.abs(known))]) if known.size else math.nan
 
 
 def judge_one(basis: Basis, kind: str, applied: float, measured: float) -> ReadingJudgement:

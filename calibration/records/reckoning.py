@@ -107,8 +107,8 @@ def summarise(test: Test, *, outcome: str, adjusted: bool, runs: Mapping[str, Ju
     test.as_left_verdict = verdicts.get(Run.Kind.AS_LEFT, "")
     test.as_found_worst = _known(found.evaluation.worst_error) if found else None
     test.as_left_worst = _known(left.evaluation.worst_error) if left else None
-    test.as_found_ratio = _known(found.judgement.worst_ratio) if found else None
-    test.as_left_ratio = _known(left.judgement.worst_ratio) if left else None
+    test.as_found_ratio = _known(found.worst_ratio) if found else None
+    test.as_left_ratio = _known(left.worst_ratio) if left else None
 
 
 def verdicts_of(runs: Mapping[str, JudgedRun]) -> dict[str, dict[str, str]]:

@@ -95,6 +95,29 @@ def test_a_record_that_was_sent_back_does_not_count(tag: Tag, cast: people.Cast)
     assert Standing.objects.get(pk=tag.pk).due_on == day("2025-03-01")
 
 
+def test_a_record_that_was_sent_back_gives_no_last_verdict(tag: Tag, cast: people.Cast) -> None:
+    a_test(tag, day("2025-03-01"), found=OUTSIDE)
+    record = a_test(tag, day("2026-03-01"), signer=cast.technician)
+    reviewing.send_back(by=Actor(cast.reviewer), test=record.test, record_id=record.pk, remarks="whose readings?")
+    standing = Standing.objects.get(pk=tag.pk)
+    assert (standing.last_verdict, standing.last_tested_on) == ("fail", day("2025-03-01"))
+
+
+def test_what_was_found_and_left_is_compared_by_one_measure(tag: Tag) -> None:
+    """MPE 0.5 %, as-left tolerance 0.25 %: +0.40 left at +0.18 is better, though both take up most of their limit."""
+    record = a_test(tag, day("2026-03-01"), found=(0.40,) * 9, left=(0.18,) * 9)
+    standing = Standing.objects.get(pk=tag.pk)
+    assert (standing.as_found_ratio, standing.as_left_ratio) == (pytest.approx(0.8), pytest.approx(0.36))
+    assert standing.error_rank == pytest.approx(-0.36)
+    assert record.runs.get(kind="as-left").figures.worst_ratio == pytest.approx(0.72), "of the as-left tolerance"
+
+
+def test_what_was_left_is_judged_by_its_own_tolerance(tag: Tag) -> None:
+    a_test(tag, day("2026-03-01"), found=(0.40,) * 9, left=(0.30,) * 9)
+    standing = Standing.objects.get(pk=tag.pk)
+    assert (standing.last_verdict, standing.as_left_ratio) == ("fail", pytest.approx(0.6))
+
+
 def test_a_tested_tag_without_a_requirement_says_so_instead_of_never_falling_due(tag: Tag) -> None:
     a_test(tag, day("2025-03-01"))
     Requirement.objects.filter(tag=tag).update(withdrawn_at=datetime.datetime(2025, 4, 1, tzinfo=datetime.UTC))
