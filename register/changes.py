@@ -13,7 +13,7 @@ from django.core.exceptions import ValidationError
 from django.utils.module_loading import import_string
 
 from register.auditing import Actor
-from register.models import Plant, Tag
+from register.models import Plant, Tag, Transmitter
 
 
 def announce(tag_ids: Collection[int]) -> None:
@@ -27,13 +27,13 @@ def announce(tag_ids: Collection[int]) -> None:
 def plant_created(plant: Plant, by: Actor) -> None:
     """Call every function of `AFTER_PLANT_CREATED` with the new plant and who made it."""
     for name in settings.AFTER_PLANT_CREATED:
-        import_string(name)(plant, by)
+        import_string(name)(by=by, plant=plant)
 
 
-def object_to_backdating(tag: Tag, on: datetime.date, *, field: str) -> None:
+def object_to_backdating(thing: Tag | Transmitter, on: datetime.date, *, field: str) -> None:
     """Ask the functions named in `BEFORE_BACKDATING` whether something that stands forbids a change from a day on.
 
-    Each is called with the tag and the day and answers a sentence, or nothing where it has no objection.
+    Each is called with the tag or transmitter and the day and answers a sentence, or nothing where it has no objection.
 
     Raises
     ------
@@ -42,5 +42,5 @@ def object_to_backdating(tag: Tag, on: datetime.date, *, field: str) -> None:
         else than it said when it was signed.
     """
     for name in settings.BEFORE_BACKDATING:
-        if sentence := import_string(name)(tag, on):
+        if sentence := import_string(name)(thing, on):
             raise ValidationError({field: sentence})

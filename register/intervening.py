@@ -55,9 +55,7 @@ def change_head(
         raise ValidationError(
             {"on": f"A head was changed on {later.done_on}, after {on}: changes come in their order."}
         )
-    tag = _tag_on(transmitter, on)
-    if tag is not None:
-        object_to_backdating(tag, on, field="on")
+    object_to_backdating(transmitter, on, field="on")
     act = Act(by, reason)
     done = Intervention(
         transmitter=transmitter,
@@ -74,7 +72,11 @@ def change_head(
 
 @transaction.atomic
 def withdraw_intervention(*, by: Actor, reason: str, intervention: Intervention) -> Intervention:
-    """Mark an intervention as a mistake; a head goes back to what it was, if none was changed after it."""
+    """Mark an intervention as a mistake.
+
+    A head goes back to what it was, if none was changed after it, the register still has the one that was put in, and
+    nothing was tested with that one.
+    """
     transmitter = _locked(intervention.transmitter_id)
     intervention = Intervention.objects.select_related("head_before", "head_after").get(pk=intervention.pk)
     if intervention.withdrawn_at is not None:
@@ -87,6 +89,12 @@ def withdraw_intervention(*, by: Actor, reason: str, intervention: Intervention)
         )
         if later.exists() or intervention.head_before is None:
             raise ValidationError("The head was changed again after this: withdraw the later change first.")
+        if transmitter.head_id != intervention.head_after_id:
+            raise ValidationError(
+                f"The register was corrected since: it has the head {transmitter.head} now, not "
+                f"{intervention.head_after}, so this change no longer says what was before it."
+            )
+        object_to_backdating(transmitter, intervention.done_on, field="reason")
         _put_in(act, transmitter, intervention.head_before)
     before = snapshot(intervention, ("withdrawn_at", "withdrawn_reason"))
     intervention.withdrawn_at, intervention.withdrawn_reason = act.at, reason
@@ -113,7 +121,7 @@ def _touched(done: Intervention) -> list[int]:
 
 def _put_in(act: Act, transmitter: Transmitter, head: MeasuringHead) -> None:
     before = snapshot(transmitter, ["head"])
-    if before["head"] == head.pk or transmitter.head_id == head.pk:
+    if transmitter.head_id == head.pk:
         raise ValidationError({"head": f"{head.code} is the head that is in it: choose the one that was put in."})
     transmitter.head = head
     transmitter.save(update_fields=["head"])

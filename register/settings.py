@@ -114,7 +114,8 @@ AXES_SENSITIVE_PARAMETERS = ["password", "old_password", "new_password1", "new_p
 
 #: Functions called with the ids of the tags that a register act touched, in its transaction.
 AFTER_REGISTER_CHANGE = ["calibration.scheduling.refresh"]
-#: Functions asked with a tag and a day whether a change may be dated back to it; they answer an objection or "".
+#: Functions asked with a tag or transmitter and a day whether a change may be dated back so far; they answer an
+#: objection or "".
 BEFORE_BACKDATING = ["calibration.objections.to_backdating"]
 #: Acts of `manage.py apply_planned`, in their order, with what they count: one of them, several of them.
 EVERY_DAY = {

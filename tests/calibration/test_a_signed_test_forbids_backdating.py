@@ -64,6 +64,33 @@ def test_a_head_was_in_it_when_it_was_tested(by: Actor, tag: Tag) -> None:
     assert "was tested on" in refused.value.message_dict["on"][0]
 
 
+def test_a_head_that_was_tested_is_not_withdrawn(by: Actor, tag: Tag) -> None:
+    transmitter = tag.current_fitting.transmitter  # type: ignore[union-attr]
+    first, second = transmitter.head, people.make_head(transmitter.type)
+    done = intervening.change_head(by=by, reason="?", transmitter=transmitter, head=second, on=BEFORE)
+    test = visited(tag)
+    with pytest.raises(ValidationError) as refused:
+        intervening.withdraw_intervention(by=by, reason="?", intervention=done)
+    assert "was tested on" in refused.value.message_dict["reason"][0]
+    transmitter.refresh_from_db()
+    assert transmitter.head == second
+    test.delete()
+    intervening.withdraw_intervention(by=by, reason="?", intervention=done)
+    transmitter.refresh_from_db()
+    assert transmitter.head == first
+
+
+def test_a_head_was_in_it_when_it_was_tested_on_the_bench_or_at_another_tag(by: Actor, tag: Tag) -> None:
+    test = visited(tag)
+    transmitter, other = test.transmitter, people.make_head(test.transmitter.type)
+    elsewhere = people.make_tag(tag.area)
+    for place in (None, elsewhere):
+        Test.objects.filter(pk=test.pk).update(tag=place, fitting=None)
+        with pytest.raises(ValidationError) as refused:
+            intervening.change_head(by=by, reason="?", transmitter=transmitter, head=other, on=BEFORE)
+        assert refused.value.message_dict["on"][0].startswith(f"{transmitter} was tested on {TESTED}")
+
+
 def test_a_visit_at_which_nothing_could_be_tested_forbids_nothing(by: Actor, tag: Tag) -> None:
     visited(tag, outcome=Test.Outcome.NOT_TESTED)
     fitting.remove(by=by, reason="?", tag=tag, on=BEFORE)

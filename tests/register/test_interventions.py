@@ -7,7 +7,7 @@ import datetime
 import pytest
 from django.core.exceptions import ValidationError
 
-from register import intervening
+from register import editing, intervening
 from register.auditing import Actor
 from register.models import Intervention, Transmitter
 from tests import cast as people
@@ -103,3 +103,16 @@ def test_of_two_changes_the_later_is_withdrawn_first(by: Actor, transmitter: Tra
     intervening.withdraw_intervention(by=by, reason="?", intervention=earlier)
     with pytest.raises(ValidationError):
         intervening.withdraw_intervention(by=by, reason="?", intervention=earlier)
+
+
+def test_a_change_is_not_withdrawn_once_the_register_was_corrected(by: Actor, transmitter: Transmitter) -> None:
+    """The head of before would not go with the type that the register has now."""
+    put_in, other = people.make_head(transmitter.type), people.make_head(people.make_type())
+    done = intervening.change_head(by=by, reason="?", transmitter=transmitter, head=put_in, on=MAY)
+    editing.correct_head(by=by, reason="type plate read again", transmitter=transmitter, head=other)
+    with pytest.raises(ValidationError) as refused:
+        intervening.withdraw_intervention(by=by, reason="?", intervention=done)
+    assert f"has the head {other} now, not {put_in}" in refused.value.messages[0]
+    transmitter.refresh_from_db()
+    done.refresh_from_db()
+    assert (transmitter.type, transmitter.head, done.withdrawn_at) == (other.type, other, None)
