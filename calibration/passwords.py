@@ -6,6 +6,7 @@ from django.contrib.auth import authenticate
 from django.core.exceptions import ValidationError
 from django.http import HttpRequest
 
+from register.entering import has_temporary_password
 from register.models import User
 
 
@@ -26,7 +27,7 @@ def named(request: HttpRequest, username: str, password: str, *, wrong: str = ""
     Raises
     ------
     ValidationError
-        They do not belong together, or too many wrong ones were typed.
+        They do not belong together, the password is a temporary one, or too many wrong ones were typed.
     """
     if not password:
         raise ValidationError({"password": "Type the password."})
@@ -35,4 +36,9 @@ def named(request: HttpRequest, username: str, password: str, *, wrong: str = ""
         if getattr(request, "axes_locked_out", False):
             raise ValidationError({"password": "Too many wrong passwords: wait a quarter of an hour."})
         raise ValidationError({"password": wrong or "This user name and this password do not belong together."})
+    if has_temporary_password(found):
+        # Somebody else knows it: it proves nothing about who typed it.
+        raise ValidationError(
+            {"password": f"Somebody else gave {found} this password: it signs nothing until {found} has changed it."}
+        )
     return found

@@ -163,7 +163,7 @@ GUIDANCE: Final = (
 
 
 @transaction.atomic
-def provide_defaults(plant: Plant, by: Actor) -> None:
+def provide_defaults(*, by: Actor, plant: Plant) -> None:
     """Give a new plant its point lists, guidance lines and the start of its chain; does nothing a second time."""
     if ChainHead.objects.filter(plant=plant).exists():
         return

@@ -75,8 +75,8 @@ class World:
 
 def build(cast: people.Cast) -> World:
     plant = cast.plant
-    provide_defaults(plant, Actor(person=None))
-    provide_defaults(cast.other_plant, Actor(person=None))
+    provide_defaults(by=Actor(person=None), plant=plant)
+    provide_defaults(by=Actor(person=None), plant=cast.other_plant)
     area = people.make_area(plant, "20", name=f"{MARK} area")
     tag = people.make_ready_tag(area, f"PT-{MARK}-1", service=f"{MARK} water")
     transmitter = tag.current_fitting.transmitter  # type: ignore[union-attr]

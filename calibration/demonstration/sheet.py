@@ -7,6 +7,7 @@ import uuid
 from collections.abc import Mapping
 from typing import Any, Final
 
+from django.db import transaction
 from django.utils import timezone
 
 from calibration import sheets
@@ -21,6 +22,7 @@ DEVICE: Final = "demonstration"
 FOUND: Final = Run.Kind.AS_FOUND.value
 
 
+@transaction.atomic
 def open_half_filled(*, by: Actor, tag: Tag, row: Mapping[str, Any]) -> None:
     """Open a sheet for a tag, confirm it, pass the cautions, choose the standards, type the first as-found readings."""
     sheet = open_sheet(by=by, reason=DEVICE, tag=tag, sheet_id=uuid.uuid4())

@@ -28,9 +28,10 @@
   // A list on the device; where the device is full or keeps nothing, it lives in this page alone.
   function shelf(key) {
     let here = null;
+    let keeps = true;
     return {
       get keeps() {
-        return here === null;
+        return keeps;
       },
       read() {
         if (here) return here;
@@ -42,11 +43,14 @@
       },
       write(list) {
         try {
-          if (list.length) localStorage.setItem(key, JSON.stringify(list));
-          else localStorage.removeItem(key);
+          if (list.length) {
+            localStorage.setItem(key, JSON.stringify(list));
+            keeps = true;
+          } else localStorage.removeItem(key);
           here = null;
         } catch {
           here = list;
+          keeps = false;
         }
       },
     };

@@ -96,7 +96,7 @@ def new_plant() -> tuple[Plant, list[Area]]:
     from tests.benchmarks.invented import AREAS
 
     plant = cast.make_plant("bench", name="Great works")
-    provide_defaults(plant, Actor(None))
+    provide_defaults(by=Actor(None), plant=plant)
     for role in Role.values:
         cast.make_person(role, plant=plant, roles=(role,))
     return plant, [cast.make_area(plant, f"{number}00") for number in range(1, AREAS + 1)]

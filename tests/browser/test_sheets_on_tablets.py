@@ -9,12 +9,13 @@ import pytest
 from playwright.sync_api import Browser, BrowserContext, Page, expect
 from pytest_django.live_server_helper import LiveServer
 
+from calibration import sheets
 from calibration.models import Entry, Sheet, Test
 from calibration.provision import provide_defaults
 from calibration.queries.drafts import Draft
 from register.auditing import Actor
 from tests import cast as people
-from tests.calibration.at_work import Device, opened, to_as_found, to_signature
+from tests.calibration.at_work import Device, opened, to_adjustment, to_as_found, to_signature
 
 pytestmark = [pytest.mark.browser, pytest.mark.django_db(transaction=True)]
 SIZES = {"upright": {"width": 768, "height": 1024}, "lying": {"width": 1280, "height": 800}}
@@ -24,7 +25,7 @@ Tablet = Callable[..., Page]
 @pytest.fixture
 def crew(transactional_db: None) -> people.Cast:
     cast = people.make_cast()
-    provide_defaults(cast.plant, Actor(person=None))
+    provide_defaults(by=Actor(person=None), plant=cast.plant)
     return cast
 
 
@@ -99,6 +100,137 @@ def test_what_is_typed_without_a_connection_is_kept_and_sent_later(
     expect(page.locator("#saving")).to_contain_text("All saved", timeout=15000)
     assert Draft(Sheet.objects.get()).text("as-found.4.measured") == "16.02"
     assert Entry.objects.filter(field="as-found.4.measured").count() == 1
+
+
+BLOCKED = (
+    "Object.defineProperty(window, 'localStorage', {get() { throw new DOMException('denied', 'SecurityError'); }})"
+)
+FULL = "Storage.prototype.setItem = () => { throw new DOMException('full', 'QuotaExceededError'); }"
+
+
+@pytest.mark.parametrize("storage", [BLOCKED, FULL])
+def test_a_tablet_that_keeps_nothing_says_so_and_saves_all_the_same(
+    tablet: Tablet, live_server: LiveServer, device: Device, storage: str
+) -> None:
+    page = tablet("technician")
+    page.add_init_script(storage)
+    shown(page, live_server, device.sheet)
+    leave(page, "as-found.4.measured", "16.02")
+    expect(page.locator("#saving")).to_contain_text("All saved")
+    expect(page.locator("#saving")).to_contain_text("This tablet keeps nothing")
+    assert Draft(Sheet.objects.get()).text("as-found.4.measured") == "16.02"
+    page.context.set_offline(True)
+    leave(page, "as-found.5.measured", "20.01")
+    expect(page.locator("#saving")).to_contain_text("No connection. 1 on this page alone")
+    page.context.set_offline(False)
+    expect(page.locator("#saving")).to_contain_text("All saved", timeout=15000)
+    assert Draft(Sheet.objects.get()).text("as-found.5.measured") == "20.01"
+
+
+def test_a_queue_longer_than_a_browser_sends_at_once_goes_out_in_parts(
+    tablet: Tablet, live_server: LiveServer, device: Device
+) -> None:
+    page = shown(tablet("technician"), live_server, device.sheet)
+    expect(page.locator("#saving")).not_to_contain_text("Saving")
+    page.context.set_offline(True)
+    sizes: list[int] = []
+    page.on("request", lambda request: sizes.append(len(request.post_data or "")))
+    for number in range(1, 80):
+        page.fill("[name='as-found.1.measured']", f"{number:02} " + "x" * 1500)
+        page.locator("[name='as-found.1.measured']").blur()
+    expect(page.locator("#saving")).to_contain_text("79 kept on this device")
+    page.context.set_offline(False)
+    expect(page.locator("#saving")).to_contain_text("All saved", timeout=30000)
+    assert Draft(Sheet.objects.get()).text("as-found.1.measured").startswith("79 ")
+    assert Entry.objects.filter(field="as-found.1.measured").count() == 79
+    assert max(sizes) < 64 * 1024
+
+
+def test_what_waits_goes_out_while_the_page_is_left(tablet: Tablet, live_server: LiveServer, device: Device) -> None:
+    page = shown(tablet("technician"), live_server, device.sheet)
+    expect(page.locator("#saving")).not_to_contain_text("Saving")
+    page.fill("[name='as-found.4.measured']", "16.02")
+    page.goto("about:blank")
+    for _ in range(50):
+        if Entry.objects.filter(field="as-found.4.measured", text="16.02").exists():
+            return
+        page.wait_for_timeout(100)
+    raise AssertionError("what stood in the field did not arrive")
+
+
+def test_what_the_server_did_not_take_stays_on_the_tablet_until_it_is_read(
+    tablet: Tablet, live_server: LiveServer, device: Device
+) -> None:
+    page = shown(tablet("technician"), live_server, device.sheet)
+    leave(page, "as-found.3.applied", "5")
+    expect(page.locator("#saving")).to_contain_text("All saved")
+    page.locator(".conditions > summary").click()
+    page.context.set_offline(True)
+    leave(page, "as-found.3.measured", "12.345")
+    expect(page.locator("#saving")).to_contain_text("kept on this device")
+    device.type({"as-found.ambient": "20"})
+    sheets.could_not_test(by=device.by, reason="Plugged.", sheet_id=device.sheet.pk)
+    page.context.set_offline(False)
+    for _ in range(2):
+        refused = page.locator("#refused")
+        expect(refused).to_contain_text("as-found, reading 3, measured", timeout=15000)
+        expect(refused).to_contain_text("12.345")
+        expect(page.locator("#saving")).to_contain_text("All saved")
+        page.reload()
+    page.get_by_role("button", name="take away what was typed at as-found, reading 3").click()
+    expect(page.locator("#refused")).to_be_hidden()
+    page.reload()
+    expect(page.locator("#refused")).to_be_hidden()
+
+
+def test_typing_again_over_what_was_not_taken_is_no_clash_with_oneself(
+    tablet: Tablet, live_server: LiveServer, device: Device
+) -> None:
+    device.type({"remarks": "first"})
+    sheets.could_not_test(by=device.by, reason="Plugged.", sheet_id=device.sheet.pk)
+    page = shown(tablet("technician"), live_server, device.sheet)
+    leave(page, "remarks", "x" * 2001)
+    expect(page.locator("#f-remarks-note")).to_contain_text("2001 were typed")
+    leave(page, "remarks", "second")
+    expect(page.locator("#saving")).to_contain_text("All saved")
+    kept = Draft(Sheet.objects.get()).fields["remarks"]
+    assert (kept.clashes, kept.text) == (False, "second")
+
+
+def test_a_step_with_something_not_taken_shows_it_in_its_field(
+    tablet: Tablet, live_server: LiveServer, device: Device
+) -> None:
+    sheets.could_not_test(by=device.by, reason="Plugged.", sheet_id=device.sheet.pk)
+    device.type({f"checklist.{line['key']}": "yes" for line in device.sheet.basis["checklist"]})
+    page = shown(tablet("technician"), live_server, device.sheet)
+    page.fill("[name=remarks]", "x" * 2001)
+    with page.expect_navigation():
+        page.get_by_role("button", name="It is back in service").click()
+    expect(page.locator("[name=remarks]")).to_have_value("x" * 2001)
+    expect(page.get_by_role("alert").filter(has_text="Not gone on")).to_be_visible()
+    assert Sheet.objects.get().stage == "return"
+    page.fill("[name=remarks]", "short")
+    with page.expect_navigation():
+        page.get_by_role("button", name="It is back in service").click()
+    assert Sheet.objects.get().stage == "sign"
+    assert Draft(Sheet.objects.get()).text("remarks") == "short"
+
+
+def test_a_choice_that_still_waits_is_chosen_again_after_a_reload(
+    tablet: Tablet, live_server: LiveServer, crew: people.Cast
+) -> None:
+    device = opened(people.make_ready_tag(people.make_area(crew.plant, "20"), "PT-100"), crew.technician)
+    to_adjustment(device)
+    page = shown(tablet("technician"), live_server, device.sheet)
+    page.route("**/entries/", lambda route: route.abort())
+    page.get_by_label("Not adjusted").check()
+    expect(page.locator("#saving")).to_contain_text("kept on this device")
+    page.reload()
+    expect(page.get_by_label("Not adjusted")).to_be_checked()
+    with page.expect_navigation():
+        page.get_by_role("button", name="Go on").click()
+    assert Draft(Sheet.objects.get()).text("adjust.choice") == "not adjusted"
+    assert Sheet.objects.get().stage == "return"
 
 
 def test_a_field_still_open_survives_a_reload(tablet: Tablet, live_server: LiveServer, device: Device) -> None:
@@ -193,6 +325,7 @@ def test_every_target_is_large_enough_for_a_glove(
     targets = page.locator(
         "#sheet :is(input:not([type=hidden]), select, button, textarea, summary, .sequence a, .other-actions a)"
     )
+    assert targets.count() > 40
     for target in targets.all():
         box = target.bounding_box()
         assert box is not None

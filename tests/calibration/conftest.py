@@ -13,7 +13,7 @@ from tests.calibration.at_work import Device, opened
 @pytest.fixture
 def tag(cast: people.Cast) -> people.Tag:
     """PT-100: 0 to 10 bar, 0.5 % of span, nine points, a fitted transmitter; the plant has its defaults."""
-    provide_defaults(cast.plant, Actor(person=None))
+    provide_defaults(by=Actor(person=None), plant=cast.plant)
     return people.make_ready_tag(people.make_area(cast.plant, "20"), "PT-100")
 
 

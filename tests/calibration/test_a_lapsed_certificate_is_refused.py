@@ -11,7 +11,8 @@ from django.test import Client
 from django.urls import reverse
 
 from calibration import sheets, signing
-from calibration.models import Sheet, Standard, StandardUse
+from calibration.models import Entry, Sheet, Standard, StandardUse
+from register import membership
 from register.auditing import Actor
 from register.models import AuditEntry
 from tests import cast as people
@@ -151,3 +152,20 @@ def test_a_certificate_that_lapses_between_choosing_and_the_last_reading_is_refu
     with pytest.raises(ValidationError) as error:
         sheets.close_as_found(by=tablet.by, sheet_id=tablet.sheet.pk)
     assert "1 day ago" in error.value.message_dict["as-found.applied-with"][0]
+
+
+def test_a_password_that_somebody_else_gave_allows_nothing_in_its_owners_name(
+    client_as: Callable[[people.User], Client], tablet: Device, lapsed: Standard, cast: people.Cast
+) -> None:
+    given, own = "given by the administrator 1", "known to the engineer alone 2"
+    membership.set_password(by=Actor(person=cast.administrator), person=cast.engineer, password=given)
+    client = client_as(cast.technician)
+    url = reverse("sheet-exception", args=[tablet.sheet.pk, lapsed.pk])
+    values = {"reason": "no other at hand", "username": "engineer", "password": given}
+    page = client.post(url, values).content.decode()
+    assert "Somebody else gave Engineer this password" in page
+    assert not Entry.objects.filter(field__startswith="exception.").exists()
+    cast.engineer.refresh_from_db()
+    membership.set_password(by=Actor(person=cast.engineer), person=cast.engineer, password=own)
+    assert client.post(url, values | {"password": own}).status_code == 302
+    assert Entry.objects.get(field__startswith="exception.").person == cast.engineer

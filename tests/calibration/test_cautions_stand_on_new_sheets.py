@@ -105,7 +105,7 @@ def test_a_line_that_would_never_be_shown_is_refused(client: Client, tag: Tag) -
 
 
 def test_what_becomes_of_a_line_in_condensing_service_is_said_and_kept(client: Client, cast: people.Cast) -> None:
-    provide_defaults(cast.plant, Actor(person=None))
+    provide_defaults(by=Actor(person=None), plant=cast.plant)
     assert "not shown in hot condensing service" in client.get("/guidance/").content.decode()
     line = GuidanceLine.objects.get(key="equaliser")
     page = client.get(f"/guidance/{line.pk}/edit/").content.decode()

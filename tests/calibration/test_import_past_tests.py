@@ -43,7 +43,7 @@ from tests.cast import (
 @pytest.fixture
 def plant(cast: Cast) -> Plant:
     """PT-2041 at 0 to 10 bar since March 2021, 0.5 % and 0.25 % as-left from then on, every twelve months."""
-    provide_defaults(cast.plant, Actor(None))
+    provide_defaults(by=Actor(None), plant=cast.plant)
     tag = make_history_tag(cast)
     nine = cast.plant.point_lists.get(name="Five points, up and down")
     make_requirement(tag, effective_from=BEGAN, point_list=nine)

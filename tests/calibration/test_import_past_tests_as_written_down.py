@@ -38,7 +38,7 @@ UNREAD: Line = {"Tag": "PT-2041", "Test date": "2022-05-02", "Why it could not b
 @pytest.fixture
 def plant(cast: Cast) -> Plant:
     """PT-2041 at 0 to 10 bar and 0.5 % since March 2021, fitted two years before anything of it is known."""
-    provide_defaults(cast.plant, Actor(None))
+    provide_defaults(by=Actor(None), plant=cast.plant)
     tag = make_history_tag(cast)
     tag.fittings.update(fitted_on="2019-01-01")
     nine = cast.plant.point_lists.get(name="Five points, up and down")

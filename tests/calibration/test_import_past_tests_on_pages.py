@@ -28,7 +28,7 @@ START = "/import/tests/"
 
 @pytest.fixture
 def plant(cast: Cast) -> Plant:
-    provide_defaults(cast.plant, Actor(None))
+    provide_defaults(by=Actor(None), plant=cast.plant)
     make_requirement(
         make_history_tag(cast),
         effective_from=BEGAN,

@@ -33,7 +33,7 @@ SOUND = {
 
 @pytest.fixture
 def plant(cast: Cast) -> Plant:
-    provide_defaults(cast.plant, Actor(None))
+    provide_defaults(by=Actor(None), plant=cast.plant)
     make_history_tag(cast)
     return cast.plant
 
@@ -169,7 +169,7 @@ def test_a_check_that_has_gone_stale_is_refused(cast: Cast, plant: Plant, engine
 def test_a_register_that_also_holds_requirements_leads_on_to_their_import(
     cast: Cast, client_as: Callable[[User], Client]
 ) -> None:
-    provide_defaults(cast.plant, Actor(None))
+    provide_defaults(by=Actor(None), plant=cast.plant)
     make_catalogue(cast.plant)
     client = client_as(cast.engineer)
     text = text_of(row() | {name: value for name, value in SOUND.items() if name != "Tag"})

@@ -90,9 +90,9 @@ def test_a_stranger_sees_no_standard_of_another_plant(cast: Cast, client_as: Cli
 
 
 def test_a_new_plant_begins_with_point_lists_and_guidance_once(cast: Cast) -> None:
-    provide_defaults(cast.plant, Actor(person=cast.engineer))
+    provide_defaults(by=Actor(person=cast.engineer), plant=cast.plant)
     before = PointList.objects.count(), GuidanceLine.objects.count()
-    provide_defaults(cast.plant, Actor(person=cast.engineer))
+    provide_defaults(by=Actor(person=cast.engineer), plant=cast.plant)
     assert (PointList.objects.count(), GuidanceLine.objects.count()) == before
     assert before[0] >= 4 and before[1] >= 15
     roots = PointList.objects.filter(for_square_root=True)
@@ -114,7 +114,7 @@ def test_point_lists_are_tidied_and_wrong_ones_are_refused(cast: Cast, client_as
 
 
 def test_guidance_lines_are_edited_by_the_engineer_and_read_by_the_auditor(cast: Cast, client_as: ClientAs) -> None:
-    provide_defaults(cast.plant, Actor(person=cast.engineer))
+    provide_defaults(by=Actor(person=cast.engineer), plant=cast.plant)
     line = GuidanceLine.objects.get(key="permit")
     values = {
         "part": line.part, "order": "10", "key": "permit", "text": "Permit board signed.", "applies": "always",
