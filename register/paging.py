@@ -5,14 +5,18 @@ An offset would read and throw away every row before the page; a key goes there 
 
 from __future__ import annotations
 
+import datetime
 import json
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any, Generic, TypeVar
+from decimal import Decimal
+from typing import Any, Final, Generic, TypeVar
 
 from django.core.exceptions import FieldDoesNotExist, ValidationError
 from django.db.models import Model, Q, QuerySet
 from django.http import Http404, HttpRequest
+
+from register.addresses import is_storable
 
 ROWS = 50
 COUNTED = 1000
@@ -101,14 +105,41 @@ def _beyond(ordering: Sequence[str], key: Sequence[Any]) -> Q:
 
 def _read(text: str, queryset: QuerySet[Any], order: Sequence[str]) -> list[Any]:
     try:
-        values = json.loads(text)
-        if not isinstance(values, list) or len(values) != len(order):
-            raise Http404
-        if any(value is None or "\0" in str(value) for value in values):
-            raise Http404
-        return [_column(queryset, name.lstrip("-")).to_python(value) for name, value in zip(order, values, strict=True)]
-    except (ValueError, OverflowError, TypeError, ValidationError, FieldDoesNotExist) as error:
+        columns = [_column(queryset, name.lstrip("-")) for name in order]
+        return key_values(json.loads(text), columns)
+    except (*NO_KEY, FieldDoesNotExist) as error:
         raise Http404 from error
+
+
+def key_values(read: Any, columns: Sequence[Any]) -> list[Any]:
+    """The values of a key that was read from an address, as any database can compare them with its columns.
+
+    Raises
+    ------
+    ValueError, TypeError, OverflowError, RecursionError, ValidationError
+        One of `NO_KEY`: not one value a column, or one that no column holds: text with NUL or half a character, a
+        number without end or beyond 64 bits.
+    """
+    if not isinstance(read, list) or len(read) != len(columns):
+        raise ValueError("not one value for each column")
+    values = [column.to_python(value) for column, value in zip(columns, read, strict=True)]
+    for given, value in zip(read, values, strict=True):
+        if isinstance(given, (list, dict)) or value is None:
+            raise ValueError("no value")
+        if isinstance(value, str) and not is_storable(value):
+            raise ValueError("no text that a database takes")
+        if isinstance(value, (int, float, Decimal)) and not -(2**63) <= value < 2**63:
+            raise ValueError("no number that a database takes")
+        if isinstance(value, datetime.datetime):
+            # A moment that no other time zone can tell overflows here rather than in the query.
+            if value.utcoffset() is None:
+                raise ValueError("no moment without a time zone")
+            value.astimezone(datetime.UTC)
+    return values
+
+
+#: What reading a key may raise where it is none.
+NO_KEY: Final = (ValueError, TypeError, OverflowError, RecursionError, ArithmeticError, ValidationError)
 
 
 def _column(queryset: QuerySet[Any], name: str) -> Any:

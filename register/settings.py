@@ -43,6 +43,7 @@ MIDDLEWARE = [
     "django.middleware.clickjacking.XFrameOptionsMiddleware",
     "django_htmx.middleware.HtmxMiddleware",
     "register.caching.PrivateMiddleware",
+    "register.addresses.AddressMiddleware",
     "register.access.PermissionMiddleware",
     "axes.middleware.AxesMiddleware",
 ]

@@ -17,7 +17,6 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Final
 
-from django.core.exceptions import ValidationError
 from django.db import connection
 
 from calibration.models import ScheduleState, Standing
@@ -26,6 +25,7 @@ from calibration.queries.asking import Asked
 from calibration.queries.conditions import PLAIN, Condition, conditions_of, guards, in_state
 from calibration.queries.wording import Statement, Word
 from register.models import Plant
+from register.paging import NO_KEY, key_values
 
 PAGE: Final = 50
 #: Totals are counted up to here; fewer matches than this are gathered and sorted.
@@ -338,10 +338,6 @@ def _read_cursor(text: str, order: Sequence[str]) -> list[Any]:
         values = json.loads(base64.urlsafe_b64decode(text + "=" * (-len(text) % 4)))
         known = {field.attname: field for field in Standing._meta.concrete_fields}
         fields = [known[column] for column in order]
-        if not isinstance(values, list) or len(values) != len(fields) or "\0" in str(values[0]):
-            return []
-        if not 0 < int(values[-1]) < 2**63:
-            return []
-        return [field.to_python(value) for field, value in zip(fields, values, strict=True)]
-    except (ValueError, TypeError, ValidationError):
+        return key_values(values, fields)
+    except NO_KEY:
         return []

@@ -222,11 +222,27 @@ def place(*values: Any) -> str:
         place("2026-01-01", "pt-1", 10**30),
         place("2026-01-01\0", "pt-1", 7),
         place(None, None, "seven"),
+        place("2026-01-01", "pt\0-1", 7),
+        place("2026-01-01", "pt\ud800-1", 7),
+        place("2026-01-01", "pt-1", float("inf")),
+        place("2026-01-01", "pt-1", float("nan")),
+        place("2026-01-01", ["pt-1"], 7),
+        base64.urlsafe_b64encode(b"[" * 5000).decode(),
     ],
 )
 def test_a_place_that_cannot_be_read_gives_the_first_page(plant: Plant, text: str) -> None:
     first = listing.page(plant, Asked(sort="due"), TODAY, COLUMNS)
     assert listing.page(plant, Asked(sort="due", after=text), TODAY, COLUMNS).rows == first.rows
+
+
+@pytest.mark.parametrize(
+    "values", [("2\0", "pt-1", 7), ("20", "pt\0-1", 7), ("\ud800", "pt-1", 7), ([["20"]], "pt-1", 7)]
+)
+def test_a_place_in_the_order_of_areas_that_cannot_be_read_gives_the_first_page(
+    plant: Plant, values: tuple[Any, ...]
+) -> None:
+    first = listing.page(plant, Asked(sort="area"), TODAY, COLUMNS)
+    assert listing.page(plant, Asked(sort="area", after=place(*values)), TODAY, COLUMNS).rows == first.rows
 
 
 def test_a_word_longer_than_any_kept_is_compared_by_its_beginning(plant: Plant) -> None:

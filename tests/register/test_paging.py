@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from urllib.parse import parse_qs
+import json
+from urllib.parse import parse_qs, quote
 
 import pytest
 from django.core.exceptions import ValidationError
@@ -11,7 +12,7 @@ from django.http import Http404
 from django.test import RequestFactory
 from django.test.utils import CaptureQueriesContext
 
-from register.models import Area, Plant
+from register.models import Area, AuditEntry, Plant
 from register.paging import Page, page_of, total
 from tests.cast import make_area, make_plant
 
@@ -76,13 +77,43 @@ def test_other_filters_of_the_address_are_kept(plant: Plant) -> None:
     assert parse_qs(later.removeprefix("?"))["text"] == ["a&b"]
 
 
-@pytest.mark.parametrize(
-    "key", ["x", "[]", '["Unit 1"]', '["Unit 1","one"]', '{"a":1}', '["\\u0000",1]', '["a",1e400]']
-)
-def test_a_key_that_is_none_is_not_found(plant: Plant, key: str) -> None:
+NO_KEYS = [
+    "x",
+    "[]",
+    '["Unit 1"]',
+    '["Unit 1","one"]',
+    '{"a":1}',
+    '["\\u0000",1]',
+    '["a",1e400]',
+    '["a",Infinity]',
+    '["a",NaN]',
+    '["a",null]',
+    '["a",[1]]',
+    '[{"b":"c"},1]',
+    '["\\ud800",1]',
+    f'["a",{2**63}]',
+    f'["a",{-(2**63) - 1}]',
+    f'["a",{"9" * 5000}]',
+    "[" * 5000,
+    '{"a":' * 5000,
+]
+
+
+@pytest.mark.parametrize("side", ["after", "before"])
+@pytest.mark.parametrize("key", NO_KEYS, ids=[key[:24] for key in NO_KEYS])
+def test_a_key_that_is_none_is_not_found(plant: Plant, key: str, side: str) -> None:
     with pytest.raises((Http404, ValidationError)) as refusal:
-        page(f"?after={key}", plant)
+        page(f"?{side}={quote(key)}", plant)
     assert refusal.type is Http404
+
+
+@pytest.mark.parametrize(
+    "moment", ["0001-01-01T00:00:00+14:00", "9999-12-31T23:59:59-12:00", "2026-01-01T00:00:00", "2026-13-01", "now"]
+)
+def test_a_moment_that_no_clock_shows_is_no_key(plant: Plant, moment: str) -> None:
+    request = RequestFactory().get("/", {"after": json.dumps([moment, 1])})
+    with pytest.raises(Http404):
+        page_of(request, AuditEntry.objects.all(), order=("-at", "-id"), what="entries")
 
 
 def test_beyond_a_thousand_the_total_is_not_counted_out(plant: Plant) -> None:

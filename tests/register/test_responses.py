@@ -154,3 +154,29 @@ def test_the_theme_of_the_cookie_is_drawn_from_the_first_paint(cast: Cast, clien
     assert 'data-theme="outdoor"' in client.get("/password/").content.decode()
     client.cookies["theme"] = '"><script>'
     assert "data-theme" not in client.get("/password/").content.decode()[:200]
+
+
+@pytest.mark.parametrize(
+    "address",
+    [
+        "/people/?text=%00",
+        "/transmitters/?text=a%00b",
+        "/transmitters/?whereabouts=%00",
+        "/types/?maker=%00",
+        "/register/?text=%00",
+        "/audit/?%00=1",
+        "/people/?after=%00",
+        "/sign-in/?next=%00",
+    ],
+)
+def test_an_address_with_a_sign_that_no_database_takes_is_refused_plainly(
+    cast: Cast, client_as: SignIn, address: str
+) -> None:
+    answer = client_as(cast.administrator).get(address)
+    assert answer.status_code == 400
+    assert "This was not understood" in answer.content.decode()
+
+
+@pytest.mark.parametrize("key", ['["\\ud800"]', '["\\u0000"]', "[" * 5000])
+def test_a_key_of_people_that_no_database_takes_is_not_found(cast: Cast, client_as: SignIn, key: str) -> None:
+    assert client_as(cast.administrator).get("/people/", {"after": key}).status_code == 404
