@@ -2,15 +2,24 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable
+from typing import Final
 
 from django.core.exceptions import BadRequest
 from django.http import HttpRequest, HttpResponse
 
+_ODD: Final = re.compile("[\0\ud800-\udfff]")
+
 
 def is_storable(text: str) -> bool:
     """Whether PostgreSQL and SQLite both take a text; SQLite alone would keep a NUL."""
-    return "\0" not in text and not any("\ud800" <= sign <= "\udfff" for sign in text)
+    return _ODD.search(text) is None
+
+
+def storable(text: str) -> str:
+    """A text without what no database takes."""
+    return _ODD.sub("", text)
 
 
 class AddressMiddleware:

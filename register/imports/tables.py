@@ -13,6 +13,7 @@ from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass, field
 from typing import Final
 
+from register.addresses import is_storable, storable
 from register.exporting import unguarded
 
 LARGEST_FILE: Final = 10 * 1024 * 1024
@@ -144,6 +145,11 @@ def assembled(
                 )
             elif too_long := next((cell for cell in row if len(cell) > LONGEST_CELL), None):
                 faults[len(rows)] = f"A cell holds {len(too_long):,} characters; that fits nowhere here."
+            elif not is_storable("".join(row)):
+                odd = next(place for place, cell in enumerate(row) if not is_storable(cell))
+                faults[len(rows)] = f"The cell in column {letter(odd)} holds a sign that is no text: type it anew."
+                # What remains is looked up all the same, where no such sign is taken.
+                row = [storable(cell) for cell in row]
             rows.append(tuple(row[: len(head)]) + ("",) * (len(head) - len(row)))
             lines.append(line)
     if head is None:
@@ -167,7 +173,7 @@ def _headings(row: list[str], name: str) -> list[str]:
         row.pop()
     if len(row) > MOST_COLUMNS:
         raise TableError(f"“{name}” has {len(row):,} columns; more than {MOST_COLUMNS} are not read.")
-    return [" ".join(cell.split()) for cell in row]
+    return [" ".join(storable(cell).split()) for cell in row]
 
 
 def _read_text(data: bytes, name: str, *, decimal_comma: bool) -> Table:

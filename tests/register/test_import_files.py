@@ -247,5 +247,20 @@ def test_a_workbook_without_its_sheet_is_refused() -> None:
         read_table(book, "hollow.xlsx")
 
 
+def test_a_cell_with_a_sign_that_no_database_takes_is_a_fault_of_its_row() -> None:
+    """A workbook writes signs that XML cannot hold as _x0000_; its reader gives them back."""
+    plain = workbook(["Tag", "Service"], ["PT-1", "ODD"], ["PT-2", "water"])
+    table = read_table(repacked(plain, lambda _, old: old.replace(b"ODD", b"a_x0000_b")), "a.xlsx")
+    assert table.faults == {0: "The cell in column B holds a sign that is no text: type it anew."}
+    assert table.rows == [("PT-1", "ab"), ("PT-2", "water")]
+
+
+def test_such_a_sign_in_a_heading_is_left_out() -> None:
+    table = read_table(
+        repacked(workbook(["Tag"], ["PT-1"]), lambda _, old: old.replace(b"Tag", b"T_x0000_ag")), "a.xlsx"
+    )
+    assert table.head == ("Tag",)
+
+
 def test_columns_are_called_as_in_a_spreadsheet() -> None:
     assert [letter(place) for place in (0, 25, 26, 701, 702)] == ["A", "Z", "AA", "ZZ", "AAA"]
