@@ -5,10 +5,13 @@ month after 31 January is the last of February, two months after it is 31 March.
 
 - Anchor: the last accepted test, or a fixed calendar. On a fixed calendar the due date is the first of its
   dates after the last accepted test; a test made within the window before one of the dates counts for that
-  date.
+  date. Before the calendar begins a tag is due an interval after its last test at the latest.
 - Limit: the earlier of due + grace and last accepted test + interval + grace. Without the second, a test
-  made early on a fixed calendar, followed by grace, would give 18 months on an interval of 12. The due date
-  shown is never later than the limit.
+  made early on a fixed calendar, followed by grace, would give 18 months on an interval of 12. Where the next
+  date of the calendar lies beyond that limit, a tag is due an interval after its last test: grace is never
+  merged with the due date.
+- The window opens a number of days before due, but never more than half of the interval before it: with a
+  window longer than the interval every test would skip a date, and a tag just tested be due again.
 - Grace: 25 % of the interval unless stated otherwise (NRC Generic Letter 91-04 practice: 18 → 22.5, 24 → 30
   months), in whole days, rounded down.
 - States, the first that applies: not in service, never tested, deferred, overdue, in grace, due, not due. A
@@ -95,11 +98,11 @@ class Schedule:
     last_accepted, interval_months, calendar_anchor, grace_days, grace_percent, lead_days, fitted_on
         As given to `plan_next`.
     due : date or None
-        Due date, never later than `limit`; of a transmitter never tested the day it was fitted.
+        Due date, not later than `limit`; of a transmitter never tested the day it was fitted.
     limit : date or None
         Last day on which the tag is not overdue; None while it was never tested.
     opens : date or None
-        First day on which a test is due.
+        First day on which a test is due, and on a fixed calendar counts for the due date.
     never_tested : bool
         No accepted test counts for this fitting yet.
     """
@@ -176,29 +179,25 @@ def plan_next(
     ValueError
         If the interval is less than a month, or grace or lead is negative.
 
-    Notes
-    -----
-    On a fixed calendar a test counts for a date when it is made in the window before it, but never
-    more than half of the interval early: with a window longer than the interval every test would otherwise
-    skip a date.
     """
     _check(interval_months, grace_days, grace_percent, lead_days)
     due = limit = opens = None
     if last_accepted is None:
         due = opens = fitted_on
     else:
-        after = add_months(last_accepted, interval_months)
-        start, due = last_accepted, after
+
+        def with_grace(start: date, end: date) -> date:
+            return end + timedelta(grace_after(start, end, grace_percent) if grace_days is None else grace_days)
+
+        start, due = last_accepted, add_months(last_accepted, interval_months)
+        limit = with_grace(start, due)
         if calendar_anchor is not None:
             n = _calendar_step(calendar_anchor, interval_months, last_accepted, lead_days)
-            due = add_months(calendar_anchor, n * interval_months)
-            start = add_months(calendar_anchor, (n - 1) * interval_months)
-        limit = min(
-            due + timedelta(grace_after(start, due, grace_percent) if grace_days is None else grace_days),
-            after + timedelta(grace_after(last_accepted, after, grace_percent) if grace_days is None else grace_days),
-        )
-        due = min(due, limit)
-        opens = due - timedelta(lead_days)
+            day = add_months(calendar_anchor, n * interval_months)
+            if day <= (due if n == 0 else limit):
+                start, due = add_months(calendar_anchor, (n - 1) * interval_months), day
+                limit = min(limit, with_grace(start, due))
+        opens = _opens(start, due, lead_days)
     return Schedule(
         last_accepted=last_accepted,
         interval_months=interval_months,
@@ -220,10 +219,14 @@ def _calendar_step(anchor: date, interval: int, tested: date, lead: int) -> int:
     n = max(apart // interval - 1, 0)
     while True:
         day = add_months(anchor, n * interval)
-        half = (day - add_months(anchor, (n - 1) * interval)).days // 2
-        if day - timedelta(min(lead, half)) > tested:
+        if _opens(add_months(anchor, (n - 1) * interval), day, lead) > tested:
             return n
         n += 1
+
+
+def _opens(start: date, end: date, lead: int) -> date:
+    """The day on which the window before the end of an interval opens."""
+    return end - timedelta(min(lead, (end - start).days // 2))
 
 
 def state_on(
@@ -322,6 +325,10 @@ def _grace_array(start: Days, end: Days, grace_days: ArrayLike | None, percent: 
     return np.where(np.isnat(end), 0.0, whole).astype("timedelta64[D]")
 
 
+def _opens_array(start: Days, end: Days, lead: NDArray[np.timedelta64]) -> Days:
+    return np.asarray(end - np.minimum(lead, (end - start) // 2))
+
+
 def plan_next_array(
     last_accepted: ArrayLike,
     interval_months: ArrayLike,
@@ -377,17 +384,15 @@ def plan_next_array(
     apart = np.where(fixed, (last.astype("datetime64[M]") - root.astype("datetime64[M]")).astype(np.int64), 0)
     n = np.where(fixed, np.maximum(apart // interval - 1, 0), 1)
     for _ in range(4):
-        day = add_months_array(root, n * interval)
-        half = (day - add_months_array(root, (n - 1) * interval)) // 2
-        n = n + (fixed & (day - np.minimum(lead, half) <= last))
-    day = add_months_array(root, n * interval)
-    before = add_months_array(root, (n - 1) * interval)
-    limit = np.minimum(
-        day + _grace_array(before, day, grace_days, grace_percent),
-        after + _grace_array(last, after, grace_days, grace_percent),
-    )
+        day, before = add_months_array(root, n * interval), add_months_array(root, (n - 1) * interval)
+        n = n + (fixed & (_opens_array(before, day, lead) <= last))
+    day, before = add_months_array(root, n * interval), add_months_array(root, (n - 1) * interval)
+    latest = after + _grace_array(last, after, grace_days, grace_percent)
+    kept = day <= np.where(n == 0, after, latest)
+    day, before = np.where(kept, day, after), np.where(kept, before, last)
+    limit = np.minimum(day + _grace_array(before, day, grace_days, grace_percent), latest)
     never = np.isnat(last)
-    due = np.where(never, fitted, np.minimum(day, limit))
+    due = np.where(never, fitted, day)
     return ScheduleArrays(
         last_accepted=last,
         interval_months=interval,
@@ -395,7 +400,7 @@ def plan_next_array(
         fitted_on=fitted,
         due=due,
         limit=limit,
-        opens=np.where(never, fitted, due - lead),
+        opens=np.where(never, fitted, _opens_array(before, day, lead)),
         never_tested=never,
     )
 

@@ -11,6 +11,7 @@ from django import forms
 from django.core.exceptions import ValidationError
 from django.http import HttpRequest, QueryDict
 
+from register.days import beyond
 from register.engineering.typed import NumberError, parse_number, shortest
 from register.engineering.units import choices
 
@@ -118,7 +119,7 @@ class ReasonField(forms.CharField):
 
 
 class DateField(forms.DateField):
-    """A day written as 2026-03-09."""
+    """A day written as 2026-03-09, of the years that the site takes."""
 
     def __init__(self, **kwargs: Any) -> None:
         attrs = {"placeholder": "2026-03-09", "autocomplete": "off", "class": "date"}
@@ -127,12 +128,15 @@ class DateField(forms.DateField):
 
     def to_python(self, value: Any) -> datetime.date | None:
         try:
-            return super().to_python(value)
+            day = super().to_python(value)
         except ValidationError:
             raise ValidationError(
                 f"“{str(value).strip()}” is not a date of the calendar written as 2026-03-09: year, month, day.",
                 code="invalid",
             ) from None
+        if day is not None and (words := beyond(day)):
+            raise ValidationError(words, code="invalid")
+        return day
 
 
 class RegisterForm(forms.Form):

@@ -9,6 +9,7 @@ from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 from typing import Any, Final, NamedTuple
 
+from register.days import beyond
 from register.engineering.typed import parse_number, shortest
 
 YES: Final = frozenset({"yes", "y", "true", "1", "x"})
@@ -121,9 +122,12 @@ def day(text: str, decimal_comma: bool) -> datetime.date:
             f"{year}-{second.zfill(2)}-{first.zfill(2)}: write year, month, day as in 2026-03-09."
         )
     try:
-        return datetime.date(int(year), int(month), int(number))
+        read = datetime.date(int(year), int(month), int(number))
     except ValueError:
         raise CellError(f"“{text}” is no day of the calendar written as 2026-03-09.") from None
+    if words := beyond(read):
+        raise CellError(words)
+    return read
 
 
 def clock(text: str, decimal_comma: bool) -> datetime.time:

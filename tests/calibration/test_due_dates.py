@@ -107,11 +107,51 @@ def test_a_window_longer_than_the_interval_skips_no_date() -> None:
     assert plan.due == date(2025, 4, 1)
 
 
-def test_a_calendar_that_begins_later_asks_for_its_first_date_but_not_beyond_the_limit() -> None:
+def test_a_calendar_that_begins_later_asks_for_its_first_date_but_not_beyond_the_interval() -> None:
     plan = plan_next(date(2025, 1, 1), 12, calendar_anchor=date(2025, 9, 1), grace_days=10)
-    assert plan.due == date(2025, 9, 1)
+    assert (plan.due, plan.limit) == (date(2025, 9, 1), date(2025, 9, 11))
     late = plan_next(date(2025, 1, 1), 12, calendar_anchor=date(2029, 9, 1), grace_days=10)
-    assert late.due == late.limit == date(2026, 1, 11)
+    assert (late.due, late.limit) == (date(2026, 1, 1), date(2026, 1, 11))
+    near = plan_next(date(2025, 1, 1), 12, calendar_anchor=date(2026, 1, 5), grace_days=10)
+    assert (near.due, near.limit) == (date(2026, 1, 1), date(2026, 1, 11))
+
+
+def test_grace_is_never_merged_with_the_due_date() -> None:
+    """Tested 41 days early with 10 days of grace: the next date of the calendar lies beyond the limit."""
+    plan = plan_next(date(2025, 1, 19), 12, calendar_anchor=date(2020, 3, 1), grace_days=10, lead_days=42)
+    assert (plan.due, plan.limit) == (date(2026, 1, 19), date(2026, 1, 29))
+
+
+def test_the_window_shown_is_the_one_that_counts() -> None:
+    """Three months are 90 days before 1 April 2026; a window of 60 days opens after half of them."""
+    calendar = {"calendar_anchor": date(2026, 1, 1), "lead_days": 60}
+    plan = plan_next(date(2026, 1, 1), 3, **calendar)  # type: ignore[arg-type]
+    assert (plan.due, plan.opens) == (date(2026, 4, 1), date(2026, 2, 15))
+    assert plan_next(date(2026, 2, 14), 3, **calendar).due == date(2026, 4, 1)  # type: ignore[arg-type]
+    assert plan_next(date(2026, 2, 15), 3, **calendar).due > date(2026, 4, 1)  # type: ignore[arg-type, operator]
+
+
+@given(DAYS, INTERVALS, st.integers(0, 200), DAYS)
+def test_a_test_counts_for_its_date_from_the_day_the_window_opens(
+    last: date, interval: int, lead: int, anchor: date
+) -> None:
+    plan = plan_next(last, interval, calendar_anchor=anchor, lead_days=lead)
+    assert plan.due is not None and plan.opens is not None
+    early, in_time = (
+        plan_next(day, interval, calendar_anchor=anchor, lead_days=lead).due
+        for day in (plan.opens - timedelta(1), plan.opens)
+    )
+    assert early is not None and in_time is not None
+    months = (plan.due.year - anchor.year) * 12 + plan.due.month - anchor.month
+    if plan.due >= anchor and months % interval == 0 and add_months(anchor, months) == plan.due:
+        assert in_time > plan.due
+        assert plan.opens - timedelta(1) < last or early == plan.due
+
+
+def test_a_monthly_test_is_not_due_again_on_the_day_after_it() -> None:
+    plan = plan_next(date(2025, 3, 1), 1, lead_days=42)
+    assert plan.opens == date(2025, 3, 17)
+    assert plan.state(date(2025, 3, 2)) is State.NOT_DUE
 
 
 def test_a_transmitter_never_tested_is_due_on_the_day_it_was_fitted() -> None:
@@ -129,21 +169,41 @@ def test_dates_stand_in_order_and_due_is_a_whole_number_of_intervals_from_its_an
     assert plan.opens <= plan.due <= plan.limit
     after = add_months(last, interval)
     assert plan.limit <= after + timedelta(grace_after(last, after) if grace is None else grace)
-    if plan.due < plan.limit or anchor is None:
-        start = anchor or last
-        months = (plan.due.year - start.year) * 12 + plan.due.month - start.month
+    assert last < plan.opens
+    if anchor is None or plan.due == after:
+        assert plan.due == after
+    else:
+        months = (plan.due.year - anchor.year) * 12 + plan.due.month - anchor.month
         assert months % interval == 0
-        assert plan.due == add_months(start, months)
-        assert plan.due > last
+        assert plan.due == add_months(anchor, months) >= anchor
 
 
-@given(DAYS, INTERVALS, st.integers(0, 60), st.integers(0, 400), DAYS)
-def test_on_a_fixed_calendar_no_two_tests_on_time_are_more_than_interval_and_grace_apart(
-    last: date, interval: int, lead: int, grace: int, anchor: date
+@given(
+    DAYS,
+    INTERVALS,
+    st.integers(0, 200),
+    st.integers(0, 3650),
+    st.lists(st.floats(0, 1), min_size=2, max_size=8),
+)
+def test_on_a_fixed_calendar_grace_never_compounds(
+    first: date, interval: int, lead: int, before: int, shares: list[float]
 ) -> None:
-    first = plan_next(last, interval, calendar_anchor=anchor, grace_days=grace, lead_days=lead)
-    assert first.limit is not None
-    assert first.limit <= add_months(last, interval) + timedelta(grace)
+    """Test after test, each on any day from the opening of its window to its limit, a quarter of the interval late at
+    most: the k-th date is at most k intervals after the first, and no two tests are further apart than one interval
+    and its grace.
+    """
+    anchor = first - timedelta(before)
+    last, plan = first, plan_next(first, interval, calendar_anchor=anchor, lead_days=lead)
+    assert plan.due is not None
+    n = next(n for n in range(10_000) if add_months(anchor, n * interval) >= plan.due)
+    for k, share in enumerate(shares, start=1):
+        assert plan.opens is not None and plan.limit is not None
+        tested = max(plan.opens + share * (plan.limit - plan.opens), last + timedelta(1))
+        after = add_months(last, interval)
+        assert tested <= after + timedelta(grace_after(last, after))
+        last, plan = tested, plan_next(tested, interval, calendar_anchor=anchor, lead_days=lead)
+        assert plan.due is not None
+        assert plan.due <= add_months(anchor, (n + k) * interval)
 
 
 LIMIT, DUE, OPENS = date(2025, 9, 30), date(2025, 6, 30), date(2025, 5, 31)

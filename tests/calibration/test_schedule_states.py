@@ -10,10 +10,11 @@ import datetime
 
 import pytest
 
-from calibration import scheduling
+from calibration import reviewing, scheduling
 from calibration.metrology.due import State, state_on
 from calibration.models import Requirement, ScheduleState, Standing, Test
 from calibration.models.standing import schedule_state
+from register.auditing import Actor
 from register.models import Tag
 from tests import cast as people
 from tests.calibration.scheduled import OUTSIDE, a_test, day, state_of
