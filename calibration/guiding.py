@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import Any
 
 from django.core.exceptions import ValidationError
@@ -9,9 +10,9 @@ from django.db import transaction
 from django.utils import timezone
 
 from calibration.models import GuidanceLine
-from calibration.models.guidance import GOOD_KEY
 from register.auditing import Act, Actor, snapshot
 from register.models import Plant
+from register.storing import fill, store
 
 FIELDS = ("part", "order", "key", "text", "applies", "condensing", "answer", "required", "withdrawn_at")
 
@@ -23,10 +24,10 @@ def add_line(*, by: Actor, plant: Plant, reason: str, **values: Any) -> Guidance
     Raises
     ------
     ValidationError
-        Answers cannot be kept under this short name, or the line would never be shown.
+        By field: answers cannot be kept under this short name, another line has it, or the line would never be shown.
     """
-    _checked(**values)
-    line = GuidanceLine.objects.create(plant=plant, **values)
+    line = GuidanceLine(plant=plant)
+    _stored(line, values)
     act = Act(by=by, reason=reason)
     act.created(line, plant=plant)
     act.write()
@@ -37,10 +38,7 @@ def add_line(*, by: Actor, plant: Plant, reason: str, **values: Any) -> Guidance
 def edit_line(*, by: Actor, line: GuidanceLine, reason: str, **values: Any) -> GuidanceLine:
     held = GuidanceLine.objects.select_for_update().get(pk=line.pk)
     before = snapshot(held, FIELDS)
-    for name, value in values.items():
-        setattr(held, name, value)
-    _checked(key=held.key, applies=held.applies, condensing=held.condensing)
-    held.save()
+    _stored(held, values)
     act = Act(by=by, reason=reason)
     act.changed(held, plant=held.plant_id, before=before, after=snapshot(held, FIELDS))
     act.write()
@@ -52,13 +50,9 @@ def withdraw_line(*, by: Actor, line: GuidanceLine, reason: str) -> GuidanceLine
     return edit_line(by=by, line=line, reason=reason, withdrawn_at=timezone.now())
 
 
-def _checked(*, key: str, applies: str = "", condensing: str = "", **others: Any) -> None:
-    errors = {}
-    try:
-        GOOD_KEY(key)
-    except ValidationError as error:
-        errors["key"] = error
-    if (applies, condensing) == (GuidanceLine.Applies.CONDENSING, GuidanceLine.Condensing.LEFT_OUT):
-        errors["condensing"] = ValidationError("A line for hot condensing service that is not shown there never shows.")
-    if errors:
-        raise ValidationError(errors)
+def _stored(line: GuidanceLine, values: Mapping[str, Any]) -> None:
+    fill(line, values)
+    if (line.applies, line.condensing) == (GuidanceLine.Applies.CONDENSING, GuidanceLine.Condensing.LEFT_OUT):
+        said = "A line for hot condensing service that is not shown there never shows."
+        raise ValidationError({"condensing": said})
+    store(line)

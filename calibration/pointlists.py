@@ -8,6 +8,7 @@ from django.utils import timezone
 from calibration.models import PointList
 from register.auditing import Act, Actor, snapshot
 from register.models import Plant
+from register.storing import store
 
 FIELDS = ("name", "points", "for_square_root", "withdrawn_at")
 
@@ -16,7 +17,8 @@ FIELDS = ("name", "points", "for_square_root", "withdrawn_at")
 def create_point_list(
     *, by: Actor, plant: Plant, name: str, points: str, for_square_root: bool, reason: str
 ) -> PointList:
-    made = PointList.objects.create(plant=plant, name=name, points=_tidy(points), for_square_root=for_square_root)
+    made = PointList(plant=plant, name=name, points=_tidy(points), for_square_root=for_square_root)
+    store(made)
     act = Act(by=by, reason=reason)
     act.created(made, plant=plant)
     act.write()
@@ -30,7 +32,7 @@ def edit_point_list(
     held = PointList.objects.select_for_update().get(pk=point_list.pk)
     before = snapshot(held, FIELDS)
     held.name, held.points, held.for_square_root = name, _tidy(points), for_square_root
-    held.save()
+    store(held)
     _trail(by, held, before, reason)
     return held
 

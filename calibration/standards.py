@@ -10,6 +10,7 @@ from django.utils import timezone
 from calibration.models import Certificate, Standard
 from register.auditing import Act, Actor, snapshot
 from register.models import Plant
+from register.storing import fill, store
 
 STANDARD_FIELDS = (
     "name", "kind", "maker", "designation", "serial", "unit", "reference", "low", "high", "spec_reading_percent",
@@ -22,10 +23,16 @@ CERTIFICATE_FIELDS = (
 
 @transaction.atomic
 def create_standard(*, by: Actor, plant: Plant, reason: str, **values: Any) -> Standard:
-    """Register a reference standard; `values` are the columns named in STANDARD_FIELDS."""
-    standard = Standard(plant=plant, **values)
-    standard.set_si()
-    standard.save()
+    """Register a reference standard; `values` are the columns named in STANDARD_FIELDS.
+
+    Raises
+    ------
+    ValidationError
+        By field, as for the other acts here: a value that cannot be read, or a rule of the data that is broken.
+    """
+    standard = Standard(plant=plant)
+    fill(standard, values)
+    store(standard)
     act = Act(by=by, reason=reason)
     act.created(standard, plant=plant)
     act.write()
@@ -36,10 +43,8 @@ def create_standard(*, by: Actor, plant: Plant, reason: str, **values: Any) -> S
 def edit_standard(*, by: Actor, standard: Standard, reason: str, **values: Any) -> Standard:
     held = Standard.objects.select_for_update().get(pk=standard.pk)
     before = snapshot(held, STANDARD_FIELDS)
-    for name, value in values.items():
-        setattr(held, name, value)
-    held.set_si()
-    held.save()
+    fill(held, values)
+    store(held)
     act = Act(by=by, reason=reason)
     act.changed(held, plant=held.plant_id, before=before, after=snapshot(held, STANDARD_FIELDS))
     act.write()
@@ -49,7 +54,9 @@ def edit_standard(*, by: Actor, standard: Standard, reason: str, **values: Any) 
 @transaction.atomic
 def add_certificate(*, by: Actor, standard: Standard, reason: str, **values: Any) -> Certificate:
     """Add what a laboratory certified; certificates are never edited, a mistaken one is withdrawn."""
-    certificate = Certificate.objects.create(standard=standard, **values)
+    certificate = Certificate(standard=standard)
+    fill(certificate, values)
+    store(certificate)
     act = Act(by=by, reason=reason)
     act.created(certificate, plant=standard.plant_id)
     act.write()

@@ -11,7 +11,8 @@ from django.db import IntegrityError, models, transaction
 from register.models import TypedQuantities
 from register.models.typed import in_words
 
-#: Constraint → (field it is shown beside, sentence); the sentence is filled from the row's own fields.
+#: Constraint → (field it is shown beside, sentence); the sentence is filled from the row's own fields. Models of other
+#: apps bring their own as `SENTENCES`.
 SENTENCES: Final[dict[str, tuple[str, str]]] = {
     "plant_barometric_positive": (
         "barometric_pressure",
@@ -142,11 +143,12 @@ def check(thing: models.Model) -> None:
     thing.clean_fields(exclude=[field.name for field in thing._meta.fields if field.null and _unset(thing, field)])
     refused: dict[str, list[str]] = {}
     model = type(thing)
+    sentences = SENTENCES | getattr(model, "SENTENCES", {})
     for constraint in model._meta.constraints:
         try:
             constraint.validate(model, thing)
         except ValidationError:
-            field, sentence = SENTENCES.get(constraint.name, (NON_FIELD_ERRORS, "A rule of the data is broken."))
+            field, sentence = sentences.get(constraint.name, (NON_FIELD_ERRORS, "A rule of the data is broken."))
             refused.setdefault(field, []).append(_filled(sentence, thing))
     for (name, unique), sentence in UNIQUE.items():
         if model._meta.model_name == name:

@@ -2,14 +2,10 @@
 
 from __future__ import annotations
 
-from typing import Any
-
 from django import forms
 
-from calibration.models import GuidanceLine, PointList
-from calibration.models.guidance import GOOD_KEY
+from calibration.models import GuidanceLine
 from register.forms.fields import ReasonField, RegisterForm, WholeNumberField
-from register.models import Plant
 
 
 class PointListForm(RegisterForm):
@@ -26,19 +22,6 @@ class PointListForm(RegisterForm):
         help_text="Near zero a square-root output turns a tiny input error into a large one: begin at 5 to 10 %.",
     )
     reason = ReasonField()
-
-    def __init__(self, *args: Any, plant: Plant, point_list: PointList | None = None, **kwargs: Any) -> None:
-        self.plant, self.point_list = plant, point_list
-        super().__init__(*args, **kwargs)
-
-    def clean_name(self) -> str:
-        name: str = self.cleaned_data["name"]
-        others = PointList.objects.filter(plant=self.plant, name=name)
-        if self.point_list:
-            others = others.exclude(pk=self.point_list.pk)
-        if others.exists():
-            raise forms.ValidationError(f"“{name}” is the name of another point list of this plant.")
-        return name
 
     def clean_points(self) -> str:
         from calibration.metrology.pointlist import PointList as Points
@@ -67,23 +50,5 @@ class GuidanceForm(RegisterForm):
     required = forms.BooleanField(required=False, label="Must be answered")
     reason = ReasonField()
 
-    def __init__(self, *args: Any, plant: Plant, line: GuidanceLine | None = None, **kwargs: Any) -> None:
-        self.plant, self.line = plant, line
-        super().__init__(*args, **kwargs)
-
     def clean_key(self) -> str:
-        key: str = self.cleaned_data["key"].lower()
-        GOOD_KEY(key)
-        return key
-
-    def clean(self) -> dict[str, Any]:
-        values = super().clean() or {}
-        key = values.get("key")
-        others = GuidanceLine.objects.filter(
-            plant=self.plant, part=values.get("part"), key=key, withdrawn_at__isnull=True
-        )
-        if self.line:
-            others = others.exclude(pk=self.line.pk)
-        if key and others.exists():
-            self.add_error("key", f"“{key}” is the short name of another line of this part.")
-        return values
+        return str(self.cleaned_data["key"]).lower()

@@ -6,8 +6,7 @@ from typing import Any
 
 from django import forms
 
-from calibration.models import Certificate, Standard
-from register.engineering.typed import parse_number
+from calibration.models import Standard
 from register.engineering.units import CURRENT, PRESSURE, TEMPERATURE, kind_of, label
 from register.forms.fields import DateField, NumberField, ReasonField, RegisterForm, TypedNumberField, UnitField
 from register.models import ReferenceKind
@@ -55,9 +54,6 @@ class StandardForm(RegisterForm):
                 self.add_error("reference", "Say whether it measures gauge, absolute or differential pressure.")
         elif values.get("reference"):
             self.add_error("reference", "Only a pressure is gauge, absolute or differential.")
-        low, high = values.get("low"), values.get("high")
-        if low and high and not parse_number(low) < parse_number(high):
-            self.add_error("high", f"The upper end {high} is not above the lower end {low}.")
         return values
 
 
@@ -73,24 +69,11 @@ class CertificateForm(RegisterForm):
         self.standard = standard
         super().__init__(*args, **kwargs)
 
-    def clean_number(self) -> str:
-        number: str = self.cleaned_data["number"]
-        if Certificate.objects.filter(standard=self.standard, number=number).exists():
-            raise forms.ValidationError(f"Certificate {number} of {self.standard.name} is here already.")
-        return number
-
     def clean_calibrated_on(self) -> Any:
         day = self.cleaned_data["calibrated_on"]
         if day > self.standard.plant.today():
             raise forms.ValidationError(f"{day:%Y-%m-%d} is still to come.")
         return day
-
-    def clean(self) -> dict[str, Any]:
-        values = super().clean() or {}
-        first, last = values.get("calibrated_on"), values.get("valid_until")
-        if first and last and last <= first:
-            self.add_error("valid_until", f"{last:%Y-%m-%d} is not after the calibration on {first:%Y-%m-%d}.")
-        return values
 
 
 class WithdrawForm(RegisterForm):

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Final
+from typing import ClassVar, Final
 
 from django.core.validators import RegexValidator
 from django.db import models
@@ -22,6 +22,10 @@ GOOD_KEY = RegexValidator(
 
 class GuidanceLine(models.Model):
     """One caution or one checklist line of a plant."""
+
+    SENTENCES: ClassVar = {
+        "guidance_key_once_per_plant": ("key", "“{key}” is the short name of another line of this part."),
+    }
 
     class Part(models.TextChoices):
         CAUTION = "caution", "caution before the test"

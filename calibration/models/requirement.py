@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import ClassVar
+
 from django.db import models
 
 from register.models import Plant, Tag
@@ -9,6 +11,10 @@ from register.models import Plant, Tag
 
 class PointList(models.Model):
     """The inputs of a run and their order, in percent of input span."""
+
+    SENTENCES: ClassVar = {
+        "point_list_once_per_plant": ("name", "“{name}” is the name of another point list of this plant."),
+    }
 
     plant = models.ForeignKey(Plant, on_delete=models.PROTECT, related_name="point_lists")
     name = models.CharField(max_length=80)

@@ -23,6 +23,10 @@ class Standard(TypedQuantities):
     objects = StandardQuerySet.as_manager()
 
     QUANTITIES: ClassVar = (Typed("low", "unit", "low_si"), Typed("high", "unit", "high_si"))
+    SENTENCES: ClassVar = {
+        "standard_once_per_plant": ("name", "{plant} has a standard {name} already."),
+        "standard_range_ordered": ("high", "The upper end {high} is not above the lower end {low}."),
+    }
 
     class Kind(models.TextChoices):
         PRESSURE = "pressure", "pressure"
@@ -85,6 +89,14 @@ class Standard(TypedQuantities):
 
 class Certificate(models.Model):
     """What a laboratory certified of a standard, and until when the plant relies on it."""
+
+    SENTENCES: ClassVar = {
+        "certificate_once_per_standard": ("number", "Certificate {number} of this standard is here already."),
+        "certificate_ends_after_it_begins": (
+            "valid_until",
+            "{valid_until} is not after the calibration on {calibrated_on}.",
+        ),
+    }
 
     standard = models.ForeignKey(Standard, on_delete=models.PROTECT, related_name="certificates")
     number = models.CharField("certificate number", max_length=80)

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from django.contrib import messages
-from django.db import IntegrityError, transaction
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import redirect, render
 
@@ -13,21 +12,20 @@ from calibration.forms.standards import WithdrawForm
 from calibration.models import PointList
 from register import access
 from register.auditing import Actor
-from register.models import User
+from register.forms.fields import typed
 
 POINT_LISTS = PointList.objects.select_related("plant")
 
 
 def point_lists(request: HttpRequest) -> HttpResponse:
     plant = access.chosen_plant(request)
-    assert isinstance(request.user, User)
     return render(
         request,
         "calibration/point_lists.html",
         {
             "plant": plant,
             "point_lists": PointList.objects.filter(plant=plant).order_by("withdrawn_at", "for_square_root", "name"),
-            "may_edit": access.may(request.user, "set requirement", plant.pk),
+            "may_edit": access.allowed(request, plant.pk, "set requirement"),
         },
     )
 
@@ -35,44 +33,33 @@ def point_lists(request: HttpRequest) -> HttpResponse:
 def point_list_new(request: HttpRequest) -> HttpResponse:
     plant = access.chosen_plant(request)
     access.in_plant(request, plant.pk, "set requirement")
-    form = PointListForm(request.POST or None, plant=plant)
-    if request.method == "POST" and form.is_valid():
-        try:
-            with transaction.atomic():
-                made = acts.create_point_list(
-                    by=Actor.of(request), plant=plant, reason=form.cleaned_data["reason"], **form.values()
-                )
-        except IntegrityError:
-            form.add_error("name", "Another point list of this plant has this name already.")
-        else:
-            messages.success(request, f"“{made.name}” can be chosen now.")
-            return redirect(access.address_in(plant, "point-lists"))
+    form = PointListForm(typed(request))
+    new = form.submit(
+        lambda: acts.create_point_list(by=Actor.of(request), plant=plant, reason=form.why, **form.values())
+    )
+    if new is not None:
+        messages.success(request, f"“{new.name}” can be chosen now.")
+        return redirect(access.address_in(plant, "point-lists"))
     return render(request, "calibration/point_list_form.html", {"form": form, "plant": plant, "point_list": None})
 
 
 def point_list_edit(request: HttpRequest, pk: int) -> HttpResponse:
     held = access.get(request, POINT_LISTS, "set requirement", pk=pk)
     initial = {"name": held.name, "points": held.points, "for_square_root": held.for_square_root}
-    form = PointListForm(request.POST or None, plant=held.plant, point_list=held, initial=initial)
-    if request.method == "POST" and form.is_valid():
-        try:
-            with transaction.atomic():
-                acts.edit_point_list(
-                    by=Actor.of(request), point_list=held, reason=form.cleaned_data["reason"], **form.values()
-                )
-        except IntegrityError:
-            form.add_error("name", "Another point list of this plant has this name already.")
-        else:
-            messages.success(request, f"“{form.cleaned_data['name']}” is changed for sheets opened from now on.")
-            return redirect(access.address_in(held.plant, "point-lists"))
+    form = PointListForm(typed(request), initial=initial)
+    edited = form.submit(
+        lambda: acts.edit_point_list(by=Actor.of(request), point_list=held, reason=form.why, **form.values())
+    )
+    if edited is not None:
+        messages.success(request, f"“{edited.name}” is changed for sheets opened from now on.")
+        return redirect(access.address_in(held.plant, "point-lists"))
     return render(request, "calibration/point_list_form.html", {"form": form, "plant": held.plant, "point_list": held})
 
 
 def point_list_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     held = access.get(request, POINT_LISTS, "set requirement", pk=pk)
-    form = WithdrawForm(request.POST or None)
-    if request.method == "POST" and form.is_valid():
-        acts.withdraw_point_list(by=Actor.of(request), point_list=held, reason=form.cleaned_data["reason"])
+    form = WithdrawForm(typed(request))
+    if form.submit(lambda: acts.withdraw_point_list(by=Actor.of(request), point_list=held, reason=form.why)):
         messages.success(request, f"“{held.name}” is no longer offered.")
         return redirect(access.address_in(held.plant, "point-lists"))
     return render(

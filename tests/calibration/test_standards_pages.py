@@ -8,9 +8,9 @@ from collections.abc import Callable
 import pytest
 from django.test import Client
 
+from calibration.contexts.standard import reliance
 from calibration.models import Certificate, GuidanceLine, PointList, Standard
 from calibration.provision import provide_defaults
-from calibration.views.standards import reliance
 from register.auditing import Actor
 from register.models import AuditEntry, User
 from tests.cast import Cast
