@@ -20,7 +20,7 @@ METHOD: Final = (
     "between tests included. The curve is joined, never fitted: a line through it would claim far too much."
 )
 DECIMALS: Final = 3
-NO_MPE: Final = ("MPE here", "none: this is no error of a reading; the errors at the check points are held against it")
+NO_MPE: Final = ("MPE here", "none: this is not the error of a reading; see the check points")
 
 
 @dataclass(frozen=True, slots=True)
@@ -135,9 +135,10 @@ def _facts(drift: Drift) -> list[tuple[str, str]]:
     else:
         facts.append(("Prediction", f"none: {drift.no_start or 'the last as-left says nothing of it'}"))
     if drift.limits is not None:
-        low, high = drift.limits
-        least = signed(low, DECIMALS) if math.isfinite(low) else "any, as the output is held at 4 mA,"
-        facts.append(("MPE here", f"{least} to {signed(high, DECIMALS)} {unit}"))
+        low, high = (signed(side, DECIMALS) for side in drift.limits)
+        held = not math.isfinite(drift.limits[0])
+        words = f"up to {high} {unit}; below zero the output is held at 4 mA" if held else f"{low} to {high} {unit}"
+        facts.append(("MPE here", words))
     facts += no_mpe
     if drift.meeting is not None:
         facts.append(("Band and MPE", drift.meeting.words))
@@ -149,10 +150,13 @@ def _chart(drift: Drift, whose: str) -> SafeString:
     from calibration.metrology.conformity import inside
 
     spread = [pair.start for pair in drift.history.pairing.pairs]
+    if drift.meeting is not None:
+        ahead = f"{drift.meeting.words[0].upper()}{drift.meeting.words[1:]}."
+    else:
+        ahead = "The prediction has no MPE to meet." if drift.band else "No prediction."
     return drift_plot(
         title=f"Drift of the {drift.channel.label} at {whose}",
-        description=f"{len(drift.history.pairing.pairs)} differences between tests, added up. "
-        + (drift.meeting.words if drift.meeting else "No prediction."),
+        description=f"{len(drift.history.pairing.pairs)} differences between tests, added up. {ahead}",
         stretches=[
             [
                 DriftPoint(on, value, outside=drift.limits is not None and not inside(value, *drift.limits))

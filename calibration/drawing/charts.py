@@ -305,11 +305,9 @@ def drift_plot(
         keys += _draw_stretches(axes, stretches)
         keys += _draw_band(axes, band)
         _scale_drift(axes, stretches, sides, band, [event.on for event in events], due, meets)
-        # Words stand between zero and the limit, on the side that the prediction leaves free.
-        way = 1.0 if band and band[-1].centre < 0 else -1.0
-        free = next((side for side in sides if side * way > 0.0), way * axes.get_ylim()[1] / 1.2)
-        _draw_day(axes, due, "due", ACTION, 0.8 * free)
-        _draw_day(axes, meets, "band meets MPE", OUTSIDE, 0.5 * free)
+        outer, inner = _heights_for_words(axes, sides, band)
+        _draw_day(axes, due, "due", ACTION, outer)
+        _draw_day(axes, meets, "band meets MPE", OUTSIDE, inner)
         keys += _draw_events(axes, events)
         axes.set_ylabel(f"Cumulative drift, {unit}")
         _sign_ticks(axes)
@@ -372,6 +370,15 @@ def _scale_drift(
         first, last = _days([min(days), max(days)])
         margin = max((last - first) * 0.03, 20)
         axes.set_xlim(first - margin, last + margin)
+
+
+def _heights_for_words(axes: Axes, sides: Sequence[float], band: Sequence[BandPoint]) -> tuple[float, float]:
+    """Two lines of words on the side that the prediction leaves free, inside the limit or, where it is near, beyond."""
+    way = 1.0 if band and band[-1].centre < 0 else -1.0
+    reach = axes.get_ylim()[1]
+    limit = next((abs(side) for side in sides if side * way > 0.0), 0.0)
+    outer, inner = (0.8 * limit, 0.5 * limit) if limit > 0.55 * reach else (0.92 * reach, 0.76 * reach)
+    return way * outer, way * inner
 
 
 def _draw_day(axes: Axes, day: date | None, word: str, colour: str, height: float) -> None:

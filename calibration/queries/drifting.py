@@ -52,8 +52,8 @@ class Channel:
 _ZERO, _SPAN = Channel(ZERO, "zero error", 0.0), Channel(SPAN, "span error")
 _FITTED: Final = (Channel(FITTED_ZERO, "fitted zero shift"), Channel(FITTED_SPAN, "fitted span shift"))
 _OF_INPUT: Final = (
-    Channel(INPUT_ZERO, "fitted zero shift of the input", unit=OF_INPUT_SPAN),
-    Channel(INPUT_SPAN, "fitted span shift of the input", unit=OF_INPUT_SPAN),
+    Channel(INPUT_ZERO, "fitted input zero shift", unit=OF_INPUT_SPAN),
+    Channel(INPUT_SPAN, "fitted input span shift", unit=OF_INPUT_SPAN),
 )
 
 

@@ -91,9 +91,8 @@ def figures_row(judged: JudgedRun, run: Run, test: Test, *, current: bool = True
 
 def _complete(judged: JudgedRun) -> bool:
     """Whether two runs like this may be compared point by point; a run with gaps may well have failed."""
-    evaluation = judged.evaluation
     undecided = any(str(verdict) == Verdict.INCOMPLETE for verdict in judged.judgement.readings.verdicts)
-    return evaluation.complete and not undecided and not evaluation.one_sided
+    return not undecided and not judged.evaluation.one_sided
 
 
 def summarise(test: Test, *, outcome: str, adjusted: bool, runs: Mapping[str, JudgedRun], counts: bool = True) -> None:

@@ -206,6 +206,20 @@ def test_each_kind_of_event_has_its_own_shape_and_word() -> None:
     assert shapes(all_four) - shapes(drift(events=())) == 4
 
 
+@pytest.mark.parametrize("limits", [(-0.25, 0.25), (-0.02, 0.02), None])
+def test_words_of_two_days_stand_clear_of_each_other_and_of_the_limit(limits: tuple[float, float] | None) -> None:
+    """A line of words is nine points high."""
+    svg = drift(limits=limits, due=date(2024, 4, 20))
+    at = {
+        "".join(word.itertext()).split()[0]: float(word.get("y", "nan"))
+        for word in tagged(parsed(svg), "text")
+        if re.search("due|meets", "".join(word.itertext()))
+    }
+    assert abs(at["due"] - at["band"]) > 9.0
+    for height, *_ in heights(svg, width="1.8"):
+        assert min(abs(height - y) for y in at.values()) > 9.0
+
+
 def test_unknown_kind_of_event_is_shown_as_other() -> None:
     assert "other" in words(drift(events=[DriftEvent(date(2022, 1, 1), "lightning", "")]))
 
