@@ -346,11 +346,6 @@ def _last_key(rows: Sequence[DraftReading], place: str) -> str:
     return [row.key for row in rows if row.key.partition("-")[0] == place][-1]
 
 
-def entered_in(draft: Draft, kind: str) -> bool:
-    """Whether anything was typed in a run."""
-    return any(name.startswith(f"{kind}.") and name.endswith((".applied", ".measured")) for name in draft.fields)
-
-
 def verdict_words(draft: Draft, kind: str) -> tuple[str, str, str]:
     """Verdict of a run as entered so far, its colour class, and why; empty before the first reading."""
     judged = draft.runs[kind].judged

@@ -23,7 +23,6 @@ Floats = NDArray[np.float64]
 
 ZERO_MA = 4.0
 SPAN_MA = 16.0
-FULL_MA = ZERO_MA + SPAN_MA
 
 FAILURE_LOW_MA = 3.6
 MEASURING_LOW_MA = 3.8
@@ -344,11 +343,6 @@ class Signal:
     def span(self) -> float:
         """Signed span S = URV - LRV, in `unit`."""
         return self.urv - self.lrv
-
-    @property
-    def is_reverse(self) -> bool:
-        """Whether the output falls as the input rises."""
-        return self.urv < self.lrv
 
     @property
     def is_square_root(self) -> bool:

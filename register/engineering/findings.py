@@ -8,7 +8,7 @@ from enum import StrEnum
 from types import MappingProxyType
 from typing import Protocol
 
-from register.engineering.units import SI_UNIT, difference_from_si, from_si, kind_of, label
+from register.engineering.units import difference_from_si, from_si, label
 
 
 class Severity(StrEnum):
@@ -45,7 +45,6 @@ CHECKS: Mapping[str, str] = MappingProxyType(
         "loop_resistance": "Loop resistance against what the supply can drive",
     }
 )
-CHECK_CHOICES: list[tuple[str, str]] = list(CHECKS.items())
 
 
 class Words(Protocol):
@@ -108,11 +107,6 @@ class Finding:
     def unit_label(self) -> str:
         """Label of the unit of demand, limit and margin; empty where the check compares no numbers."""
         return label(self.unit) if self.unit else ""
-
-    @property
-    def si_unit(self) -> str:
-        """Key of the SI unit of the numbers; empty where the check compares none."""
-        return SI_UNIT[kind_of(self.unit)] if self.unit else ""
 
     @property
     def demanded(self) -> float | None:

@@ -23,9 +23,6 @@ class Reference(StrEnum):
     DIFFERENTIAL = "differential"
 
 
-REFERENCE_CHOICES: list[tuple[str, str]] = [(reference.value, reference.value) for reference in Reference]
-
-
 class PressureReferenceError(ValueError):
     """Two pressures cannot be brought to one reference."""
 
