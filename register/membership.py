@@ -6,17 +6,18 @@ People are deactivated, never deleted: signatures and the audit trail point at t
 from __future__ import annotations
 
 from collections.abc import Collection, Mapping
-from typing import Final
+from typing import Final, TypeVar
 
 from django.contrib.auth.password_validation import validate_password
 from django.core.exceptions import ValidationError
-from django.db import transaction
+from django.db import connection, models, transaction
 
 from register.auditing import Act, Actor, snapshot
 from register.editing import create_plant
 from register.models import Membership, Plant, Role, User
 from register.storing import fill, store
 
+M = TypeVar("M", bound=models.Model)
 FIELDS: Final = ("username", "printed_name", "email")
 FIRST: Final = "The site begins with its first administrator."
 
@@ -54,7 +55,7 @@ def create_person(
 @transaction.atomic
 def edit_person(*, by: Actor, reason: str, person: User, values: Mapping[str, str]) -> User:
     """Change the name or address of a person; records signed earlier keep the name they were signed with."""
-    person = User.objects.select_for_update().get(pk=person.pk)
+    person = _locked(person)
     before = snapshot(person, FIELDS)
     fill(person, values)
     _check_name(person)
@@ -74,6 +75,7 @@ def set_roles(*, by: Actor, reason: str, person: User, plant: Plant, roles: Coll
     ValidationError
         The plant would be left without an active administrator.
     """
+    person = _locked(person)
     act = Act(by, reason)
     _give(act, person, plant, roles)
     _keep_an_administrator(plant)
@@ -89,7 +91,7 @@ def set_password(*, by: Actor, reason: str = "", person: User, password: str) ->
     ValidationError
         The password is weak.
     """
-    person = User.objects.select_for_update().get(pk=person.pk)
+    person = _locked(person)
     _check_password(password, person)
     person.set_password(password)
     person.save(update_fields=["password"])
@@ -110,15 +112,20 @@ def deactivate(*, by: Actor, reason: str, person: User) -> User:
     """
     if by.person is not None and by.person.pk == person.pk:
         raise ValidationError("You cannot deactivate yourself: another administrator can.")
-    person = _set_active(by, reason, person, active=False)
-    for membership in person.memberships.filter(role=Role.ADMINISTRATOR).select_related("plant"):
-        _keep_an_administrator(membership.plant)
+    person = _locked(person)
+    governed = list(_locking(Plant).filter(memberships__user=person, memberships__role=Role.ADMINISTRATOR))
+    _set_active(by, reason, person, active=False)
+    for plant in governed:
+        _keep_an_administrator(plant)
     return person
 
 
+@transaction.atomic
 def reactivate(*, by: Actor, reason: str, person: User) -> User:
     """Let a person sign in again, with the roles he had."""
-    return _set_active(by, reason, person, active=True)
+    person = _locked(person)
+    _set_active(by, reason, person, active=True)
+    return person
 
 
 @transaction.atomic
@@ -130,6 +137,7 @@ def begin(*, remote_address: str, plant: Mapping[str, str], person: Mapping[str,
     ValidationError
         Somebody is there already; or by field, as the other acts.
     """
+    _wait_for_others()
     if User.objects.exists():
         raise ValidationError("There are people already: an administrator makes new ones.")
     first = User()
@@ -164,23 +172,38 @@ def open_plant(*, by: Actor, values: Mapping[str, str]) -> Plant:
     return plant
 
 
-@transaction.atomic
-def _set_active(by: Actor, reason: str, person: User, *, active: bool) -> User:
-    person = User.objects.select_for_update().get(pk=person.pk)
+def _set_active(by: Actor, reason: str, person: User, *, active: bool) -> None:
     before = {"may sign in": person.is_active}
     person.is_active = active
     person.save(update_fields=["is_active"])
     act = Act(by, reason)
     act.changed(person, plant=None, before=before, after={"may sign in": active})
     act.write()
-    return person
+
+
+def _locking(model: type[M]) -> models.QuerySet[M]:
+    """Rows that are locked in the order of their ids, but without their keys: an entry of the trail that refers to
+    one of them never waits."""
+    return model._default_manager.select_for_update(of=("self",), no_key=True).order_by("pk")
+
+
+def _locked(person: User) -> User:
+    """The person with his row locked; always before a plant, so that two acts never wait for one another."""
+    return _locking(User).get(pk=person.pk)
+
+
+def _wait_for_others() -> None:
+    """Let nobody else make a person before this act has ended; SQLite has one writer at a time anyway."""
+    if connection.vendor == "postgresql":
+        with connection.cursor() as cursor:
+            cursor.execute(f"LOCK TABLE {User._meta.db_table} IN SHARE ROW EXCLUSIVE MODE")
 
 
 def _give(act: Act, person: User, plant: Plant, roles: Collection[str]) -> None:
     unknown = set(roles) - set(Role.values)
     if unknown:
         raise ValidationError({"roles": f"There is no role {', '.join(sorted(unknown))}."})
-    Plant.objects.select_for_update().get(pk=plant.pk)
+    _locking(Plant).get(pk=plant.pk)
     held = {membership.role: membership for membership in person.memberships.filter(plant=plant)}
     for role in set(held) - set(roles):
         held[role].delete()

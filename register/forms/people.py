@@ -8,12 +8,14 @@ from django import forms
 from django.contrib.auth.base_user import AbstractBaseUser
 from django.contrib.auth.forms import AuthenticationForm
 from django.core.exceptions import ValidationError
+from django.core.validators import MaxLengthValidator
 
 from register.forms.fields import ReasonField, RegisterForm
 from register.models import Role, User
 from register.models.plant import known_time_zone
 from register.proxies import is_from_this_machine
 
+LONGEST_NAME = 150
 PASSWORD = forms.PasswordInput(attrs={"autocomplete": "new-password"})
 
 
@@ -42,7 +44,12 @@ class SignInForm(AuthenticationForm):
 
     def __init__(self, *args: Any, **kwargs: Any) -> None:
         super().__init__(*args, label_suffix="", **kwargs)
-        self.fields["username"].label = "Sign-in name"
+        name = self.fields["username"]
+        name.label = "Sign-in name"
+        # Failed attempts are counted by name, in columns of a certain length.
+        name.validators.append(
+            MaxLengthValidator(LONGEST_NAME, f"No sign-in name is longer than {LONGEST_NAME} signs.")
+        )
 
     def confirm_login_allowed(self, user: AbstractBaseUser) -> None:
         super().confirm_login_allowed(user)
@@ -55,7 +62,7 @@ class PersonForm(RegisterForm):
 
     username = forms.CharField(
         label="Sign-in name",
-        max_length=150,
+        max_length=LONGEST_NAME,
         validators=User._meta.get_field("username").validators,
         help_text="Letters, digits and @ . + - _",
         widget=forms.TextInput(attrs={"autocomplete": "off", "autocapitalize": "none", "spellcheck": "false"}),
@@ -87,7 +94,7 @@ class JoiningForm(RegisterForm):
 
     username = forms.CharField(
         label="Sign-in name",
-        max_length=150,
+        max_length=LONGEST_NAME,
         help_text="Exactly as he signs in.",
         widget=forms.TextInput(attrs={"autocomplete": "off", "autocapitalize": "none", "spellcheck": "false"}),
     )
@@ -148,6 +155,9 @@ class FirstAdministratorForm(RegisterForm):
     printed_name = PersonForm.base_fields["printed_name"]
     password = forms.CharField(label="Password", strip=False, widget=PASSWORD)
     again = forms.CharField(label="The password again", strip=False, widget=PASSWORD)
+
+    def clean_plant_code(self) -> str:
+        return str(self.cleaned_data["plant_code"]).lower()
 
     def clean(self) -> dict[str, Any]:
         values = super().clean() or self.cleaned_data

@@ -57,6 +57,11 @@ def test_the_code_makes_plant_and_administrator_and_signs_him_in(code: str, tmp_
     assert not (tmp_path / "first_administrator_code").exists(), "the code works once"
 
 
+def test_the_short_name_of_the_first_plant_is_written_small_like_that_of_any_other(code: str) -> None:
+    Client().post("/first-administrator/", filled(code, plant_code="North-1"))
+    assert Plant.objects.get().code == "north-1"
+
+
 def test_nobody_becomes_administrator_without_the_code(code: str) -> None:
     answer = Client().post("/first-administrator/", filled("aaaa-bbbb-cccc-dddd"))
     assert answer.status_code == 200

@@ -2,8 +2,12 @@
 
 from __future__ import annotations
 
+import contextlib
 import re
+import threading
 from collections.abc import Callable
+from functools import partial
+from typing import Any
 
 import pytest
 from django.core.exceptions import ValidationError
@@ -13,8 +17,9 @@ from django.test.utils import CaptureQueriesContext
 
 from register import access, membership
 from register.auditing import Actor
-from register.models import AuditEntry, Membership, Role, User
-from tests.cast import PASSWORD, Cast, give_roles, make_person
+from register.models import AuditEntry, Membership, Plant, Role, User
+from tests.at_once import AtTheSameTime
+from tests.cast import PASSWORD, Cast, give_roles, make_cast, make_person
 
 SignIn = Callable[[User], Client]
 NEW = {
@@ -188,3 +193,86 @@ def test_the_part_that_htmx_gets_is_part_of_the_page(administrator: Client) -> N
     assert part.strip() in page
     assert "technician" in part
     assert "planner" not in part
+
+
+@pytest.mark.postgresql
+@pytest.mark.django_db(transaction=True)
+def test_two_administrators_who_deactivate_one_another_leave_the_plant_with_one(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    cast = make_cast()
+    second = make_person("second", plant=cast.plant, roles=(Role.ADMINISTRATOR,))
+    both, set_active = threading.Barrier(2), membership._set_active
+
+    def beside_the_other(*arguments: Any, **more: Any) -> None:
+        with contextlib.suppress(threading.BrokenBarrierError):
+            both.wait(1)
+        set_active(*arguments, **more)
+
+    monkeypatch.setattr(membership, "_set_active", beside_the_other)
+    together = AtTheSameTime()
+    for by, person in ((cast.administrator, second), (second, cast.administrator)):
+        together.do(partial(membership.deactivate, by=Actor(by), reason="?", person=person), by.username)
+    together.end()
+    [refused] = together.failures
+    assert isinstance(refused, ValidationError)
+    assert "left without an administrator" in refused.messages[0]
+    assert User.objects.filter(memberships__role=Role.ADMINISTRATOR, is_active=True).count() == 1
+
+
+@pytest.mark.postgresql
+@pytest.mark.django_db(transaction=True)
+def test_roles_and_deactivation_of_one_person_come_one_after_the_other(monkeypatch: pytest.MonkeyPatch) -> None:
+    """He becomes the only administrator of another plant while he is deactivated in his own."""
+    cast = make_cast()
+    second = make_person("second", plant=cast.plant, roles=(Role.ADMINISTRATOR,))
+    give_roles(cast.administrator, cast.other_plant, Role.ADMINISTRATOR)
+    both, keep = threading.Barrier(2), membership._keep_an_administrator
+
+    def beside_the_other(plant: Plant) -> None:
+        keep(plant)
+        with contextlib.suppress(threading.BrokenBarrierError):
+            both.wait(1)
+
+    monkeypatch.setattr(membership, "_keep_an_administrator", beside_the_other)
+    together, by = AtTheSameTime(), Actor(cast.administrator)
+    together.do(partial(membership.deactivate, by=by, reason="?", person=second), "leaves")
+    together.do(
+        partial(
+            membership.set_roles, by=by, reason="?", person=second, plant=cast.other_plant, roles=[Role.ADMINISTRATOR]
+        ),
+        "comes",
+    )
+    together.end()
+    assert together.failures == []
+    assert both.broken, "neither saw what the other had not finished"
+
+
+@pytest.mark.postgresql
+@pytest.mark.django_db(transaction=True)
+def test_a_site_begins_once(monkeypatch: pytest.MonkeyPatch) -> None:
+    both, check = threading.Barrier(2), membership._check_password
+
+    def beside_the_other(*arguments: Any) -> None:
+        with contextlib.suppress(threading.BrokenBarrierError):
+            both.wait(1)
+        check(*arguments)
+
+    monkeypatch.setattr(membership, "_check_password", beside_the_other)
+    together = AtTheSameTime()
+    for name in ("one", "two"):
+        together.do(
+            partial(
+                membership.begin,
+                remote_address="127.0.0.1",
+                plant={"code": name, "name": name.title(), "time_zone": "UTC"},
+                person={"username": name, "printed_name": name.title()},
+                password=PASSWORD,
+            ),
+            name,
+        )
+    together.end()
+    assert [str(error) for error in together.failures] == [
+        "['There are people already: an administrator makes new ones.']"
+    ]
+    assert User.objects.count() == Plant.objects.count() == 1

@@ -6,6 +6,7 @@ from collections.abc import Callable
 from typing import Any
 
 import pytest
+from axes.models import AccessAttempt
 from django.test import Client
 
 from register import entering, membership
@@ -93,6 +94,17 @@ def test_a_wrong_password_stands_in_the_trail_without_the_password(cast: Cast) -
     failed = entries(Kind.SIGN_IN_FAILED)[0]
     assert (failed.person, failed.thing_label) == (None, "Planner")
     assert "guessed" not in repr(vars(failed))
+
+
+def test_a_name_longer_than_any_is_refused_before_it_is_counted(cast: Cast, settings: Any) -> None:
+    settings.AXES_ENABLED = True
+    answer = sign_in(Client(), "n" * 300, "guessed")
+    assert answer.status_code == 200
+    assert answer.context["form"].errors["username"] == ["No sign-in name is longer than 150 signs."]
+    assert 'value="' + "n" * 300 in answer.content.decode()
+    assert not AccessAttempt.objects.exists()
+    sign_in(Client(), "n" * 150, "guessed")
+    assert AccessAttempt.objects.count() == 1
 
 
 def test_a_name_that_belongs_to_nobody_is_not_kept(cast: Cast) -> None:
