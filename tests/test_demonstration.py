@@ -168,7 +168,9 @@ def test_every_tag_is_in_the_state_it_was_made_for(loaded: Loaded) -> None:
 
 def test_the_states_are_the_same_on_whatever_day_it_is_loaded(loaded: Loaded) -> None:
     # Months differ in length: moved by whole days, a due date comes out a little earlier or later.
-    for row in Standing.objects.filter(phase=Standing.Phase.SCHEDULED).select_related("plant"):
+    scheduled = Standing.objects.filter(phase=Standing.Phase.SCHEDULED).select_related("plant")
+    assert len(scheduled) > 100
+    for row in scheduled:
         today, last, deferred = row.plant.today(), row.last_accepted_on, row.deferred_until
         asked = Requirement.objects.filter(tag=row.tag_id).order_by("effective_from").last()
         assert last is not None

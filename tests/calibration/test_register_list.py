@@ -134,7 +134,9 @@ def test_the_counts_of_the_due_list_do_not_move_with_its_filters(
 def test_each_count_leads_to_the_tags_it_counted(fleet: list[Tag], cast: people.Cast, client_as: SignIn) -> None:
     client = client_as(cast.planner)
     html = client.get(reverse("due-list")).content.decode()
-    for address, count in re.findall(r'<a class="state \w+" href="([^"]+)"[^>]*>(\d+) (?!in all)', html):
+    counts = re.findall(r'<a class="state \w+" href="([^"]+)"[^>]*>(\d+) (?!in all)', html)
+    assert len(counts) == 7, "one for each state"
+    for address, count in counts:
         assert len(shown(client, reverse("due-list") + address.replace("&amp;", "&"))) == int(count)
 
 

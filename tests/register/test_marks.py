@@ -81,7 +81,9 @@ def test_range_wholly_outside_the_head_has_no_solid_bar() -> None:
 def test_range_far_outside_stays_in_the_picture() -> None:
     root = parsed(range_strip(-50, 50, None, 9.0, 20.0, ""))
     reach = (HIGH_END - LOW_END) * OVERHANG
-    for path in classed(root, "hatch"):
+    hatched = classed(root, "hatch")
+    assert len(hatched) == 3, "below the head, above it, and above the rating"
+    for path in hatched:
         assert LOW_END - reach - 1 <= starts(path)[0] <= HIGH_END + reach + 1
 
 
