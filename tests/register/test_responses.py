@@ -34,12 +34,9 @@ def test_only_the_site_itself_may_give_scripts_styles_and_frames(cast: Cast, cli
 def test_no_template_holds_a_script_or_a_style_of_its_own() -> None:
     """The policy would stop them: src and href only, no style, no on… attribute."""
     inline = re.compile(r"<script(?![^>]*\bsrc=)[^>]*>|<style\b|\sstyle\s*=|\son[a-z]+\s*=\s*[\"']|javascript:", re.I)
-    found = [
-        f"{path.name}: {hit.group(0)}"
-        for path in Path(site.BASE_DIR / "templates").rglob("*.html")
-        for hit in inline.finditer(path.read_text())
-    ]
-    assert found == []
+    templates = list(Path(site.BASE_DIR / "templates").rglob("*.html"))
+    assert len(templates) > 50
+    assert [f"{path.name}: {hit[0]}" for path in templates for hit in inline.finditer(path.read_text())] == []
 
 
 @pytest.mark.parametrize("page", ["/sign-in/", "/password/"])
