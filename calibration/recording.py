@@ -38,6 +38,7 @@ __all__ = [
     "RunContent",
     "SignatureContent",
     "UseContent",
+    "lock_chain",
     "write_record",
     "write_records",
     "write_signature",
@@ -101,7 +102,7 @@ def write_records(contents: Sequence[RecordContent], *, act: Act) -> list[Record
         list(Tag.objects.select_for_update().filter(pk__in=tag_ids).order_by("pk").values_list("pk", flat=True))
         plant = Plant.objects.get(pk=plants.pop())
         earlier = _locked_tests([content.test_id for content in contents if content.test_id is not None])
-        chain = _locked_chain(plant)
+        chain = lock_chain(plant)
         written: list[Record] = []
         for start in range(0, len(contents), _AT_ONCE):
             batch = judged[start : start + _AT_ONCE]
@@ -116,7 +117,7 @@ def write_records(contents: Sequence[RecordContent], *, act: Act) -> list[Record
 
 def write_signature(record: Record, signature: SignatureContent) -> Signature:
     """Chain one more signature to a record (a review, a sending back); call it inside the transaction of the act."""
-    chain = _locked_chain(record.plant)
+    chain = lock_chain(record.plant)
     row = _signature(record, signature, chain, record.plant)
     row.save(force_insert=True)
     ChainHead.objects.filter(pk=record.plant_id).update(position=chain.position, hash=chain.hash)
@@ -328,7 +329,8 @@ def _locked_tests(test_ids: Sequence[int]) -> dict[int, Test]:
     return {test.pk: test for test in rows.select_related("current_record")}
 
 
-def _locked_chain(plant: Plant) -> ChainHead:
+def lock_chain(plant: Plant) -> ChainHead:
+    """Lock the chain of a plant inside the transaction of an act, after the tags and tests that it touches."""
     ChainHead.objects.get_or_create(plant=plant)
     return ChainHead.objects.select_for_update().get(plant=plant)
 

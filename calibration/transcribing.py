@@ -8,7 +8,7 @@ from django.core.exceptions import ValidationError
 from django.db import transaction
 
 from calibration.imports.past_tests import Proposal, propose
-from calibration.recording import write_records
+from calibration.recording import lock_chain, write_records
 from register.auditing import Act, Actor
 from register.bulk import many_objects_alive
 from register.importing import ChangedMeanwhileError, lock_tags
@@ -41,9 +41,13 @@ def import_tests(*, by: Actor, reason: str, plant: Plant, table: Table, matching
 
 @transaction.atomic
 def _import(by: Actor, reason: str, plant: Plant, table: Table, matching: Matching, seen: str) -> Proposal:
-    lock_tags(plant, table.column(matching["tag"]) if "tag" in matching else ())
+    numbers, serials = (table.column(matching[name]) if name in matching else () for name in ("tag", "serial"))
+    locked = lock_tags(plant, numbers, serials)
+    # A file need not name a tag, and a test on the bench has none: the chain keeps two imports apart.
+    lock_chain(plant)
     proposal = propose(plant=plant, table=table, matching=matching, today=plant.today())
-    if proposal.complaints or proposal.digest() != seen:
+    touched = {one.content.tag_id for one in proposal.planned} - {None}
+    if proposal.complaints or proposal.digest() != seen or not touched <= locked:
         raise ChangedMeanwhileError
     act = Act(by, reason)
     made_by = by.person.pk if by.person else None

@@ -83,14 +83,21 @@ def _import(by: Actor, reason: str, plant: Plant, table: Table, matching: Matchi
     return proposal
 
 
-def lock_tags(plant: Plant, numbers: Iterable[str]) -> None:
-    """Lock the tags with these numbers in the order of their ids, inside the transaction of an act."""
-    ids: list[int] = []
+def lock_tags(plant: Plant, numbers: Iterable[str], serials: Iterable[str] = ()) -> set[int]:
+    """Lock tags in the order of their ids, inside the transaction of an act; returns their ids.
+
+    Those with these numbers, and those where transmitters with these serial numbers are or were fitted.
+    """
+    ids: set[int] = set()
     for part in _parts(sorted({key(number) for number in numbers})):
         named = Tag.objects.filter(plant=plant).alias(_key=SearchKey("number")).filter(_key__in=part)
-        ids += named.values_list("pk", flat=True)
+        ids.update(named.values_list("pk", flat=True))
+    for part in _parts(sorted({key(serial) for serial in serials if serial})):
+        devices = Transmitter.objects.filter(plant=plant).alias(_key=SearchKey("serial")).filter(_key__in=part)
+        ids.update(Fitting.objects.filter(transmitter__in=devices).values_list("tag_id", flat=True))
     for some in _parts(sorted(ids)):
         list(Tag.objects.select_for_update(of=("self",)).filter(pk__in=some).order_by("pk").values_list("pk"))
+    return ids
 
 
 def _store_tags(act: Act, rows: Sequence[Row], plant: Plant) -> None:

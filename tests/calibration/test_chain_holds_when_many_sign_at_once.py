@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import os
 import sqlite3
 import subprocess
@@ -9,21 +10,23 @@ import sys
 import threading
 import time
 import uuid
-from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
 import pytest
 from django.db import connections, transaction
 
-from calibration import opening, recording, reviewing
-from calibration.models import ChainHead, Record, Sheet
+from calibration import opening, recording, reviewing, transcribing
+from calibration.models import ChainHead, Record, Sheet, Test
 from calibration.queries.verifying import Checked, verify
 from calibration.recording import write_record
 from register.auditing import Act, Actor
+from register.importing import ChangedMeanwhileError
 from tests import cast as people
+from tests.at_once import AtTheSameTime
 from tests.calibration.described import described
 from tests.calibration.signing_at_once import work
+from tests.calibration.telling import readings, transcribed
 
 WORKERS, EACH = 4, 5
 TOP = Path(__file__).parents[2]
@@ -92,31 +95,6 @@ def test_threads_on_postgresql() -> None:
     assert list(verify(cast.plant, Checked())) == []
 
 
-class AtTheSameTime:
-    """Runs acts in threads of their own, and keeps what they raise."""
-
-    def __init__(self) -> None:
-        self.failures: list[BaseException] = []
-        self.threads: list[threading.Thread] = []
-
-    def do(self, act: Callable[[], Any], name: str) -> None:
-        def run() -> None:
-            try:
-                act()
-            except BaseException as error:
-                self.failures.append(error)
-            finally:
-                connections.close_all()
-
-        self.threads.append(threading.Thread(target=run, name=name))
-        self.threads[-1].start()
-
-    def end(self) -> None:
-        for thread in self.threads:
-            thread.join(30)
-            assert not thread.is_alive()
-
-
 @pytest.mark.postgresql
 @pytest.mark.django_db(transaction=True)
 def test_a_review_and_a_correction_of_one_bench_test_do_not_lock_each_other(monkeypatch: pytest.MonkeyPatch) -> None:
@@ -135,10 +113,10 @@ def test_a_review_and_a_correction_of_one_bench_test_do_not_lock_each_other(monk
 
     record = recorded()
     test_is_taken, chain_is_taken = threading.Event(), threading.Event()
-    locked_chain, write_signature = recording._locked_chain, recording.write_signature
+    lock_chain, write_signature = recording.lock_chain, recording.write_signature
 
     def take_chain(plant: Any) -> ChainHead:
-        chain = locked_chain(plant)
+        chain = lock_chain(plant)
         if threading.current_thread().name == "correction":
             chain_is_taken.set()
         return chain
@@ -148,7 +126,7 @@ def test_a_review_and_a_correction_of_one_bench_test_do_not_lock_each_other(monk
         chain_is_taken.wait(1)
         return write_signature(*arguments)
 
-    monkeypatch.setattr(recording, "_locked_chain", take_chain)
+    monkeypatch.setattr(recording, "lock_chain", take_chain)
     monkeypatch.setattr(reviewing, "write_signature", sign_late)
     together = AtTheSameTime()
     by = Actor(person=cast.reviewer)
@@ -187,3 +165,30 @@ def test_a_review_and_the_opening_of_a_correction_do_not_lock_each_other(monkeyp
     assert Sheet.objects.get(pk=number).corrects == record.test
     record.test.refresh_from_db()
     assert record.test.state == "reviewed"
+
+
+@pytest.mark.postgresql
+@pytest.mark.django_db(transaction=True)
+def test_past_tests_of_a_spare_are_brought_in_once_however_often_at_once(monkeypatch: pytest.MonkeyPatch) -> None:
+    """A test on the bench touches no tag that could be locked."""
+    cast = people.make_cast()
+    people.make_transmitter(cast.plant, serial="QG-100")
+    terms = {"LRV": "0", "URV": "10", "Range unit": "bar", "Tolerance (%)": "0.5"}
+    lines = [{"Serial number": "QG-100"} | terms | line for line in readings()]
+    for line in lines:
+        del line["Tag"]
+    together, both = AtTheSameTime(), threading.Barrier(2)
+    propose = transcribing.propose
+
+    def slowly(**values: Any) -> Any:
+        proposal = propose(**values)
+        with contextlib.suppress(threading.BrokenBarrierError):
+            both.wait(2)
+        return proposal
+
+    monkeypatch.setattr(transcribing, "propose", slowly)
+    for name in ("one", "other"):
+        together.do(lambda: transcribed(cast.plant, cast.engineer, *lines), name)
+    together.end()
+    assert [type(error) for error in together.failures] == [ChangedMeanwhileError]
+    assert Test.objects.count() == 1
