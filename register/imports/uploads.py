@@ -10,6 +10,7 @@ import datetime
 import json
 import uuid
 from dataclasses import asdict, dataclass, field
+from pathlib import Path
 from typing import Any, Final
 
 from django.core.files.base import ContentFile
@@ -25,6 +26,10 @@ FOLDER: Final = "imports"
 KEPT_FOR: Final = datetime.timedelta(days=1)
 
 
+class GoneError(FileNotFoundError):
+    """The file was brought in, thrown away or swept meanwhile."""
+
+
 @dataclass(slots=True)
 class Kept:
     """A file between the steps of an import."""
@@ -38,20 +43,18 @@ class Kept:
     check: dict[str, Any] = field(default_factory=dict)
 
     def table(self, plant: Plant) -> Table:
-        """Read the file again; raises TableError where it cannot be read."""
-        with default_storage.open(path_of(self.user_id, self.token, "file")) as held:
-            return read_table(held.read(), self.name, decimal_comma=plant.decimal_comma)
+        """Read the file again; raises TableError where it cannot be read, GoneError where it is gone."""
+        return read_table(self._data(), self.name, decimal_comma=plant.decimal_comma)
 
     def store(self) -> None:
-        """Keep what was found."""
-        path = path_of(self.user_id, self.token, "json")
-        default_storage.delete(path)
-        default_storage.save(path, ContentFile(json.dumps(asdict(self)).encode()))
+        """Keep what was found; raises GoneError where the file is gone, so that nothing is kept without it."""
+        if not default_storage.exists(path_of(self.user_id, self.token, "file")):
+            raise GoneError(self.token)
+        _put(path_of(self.user_id, self.token, "json"), json.dumps(asdict(self)).encode())
 
     def hand_on(self, kind: str) -> Kept:
         """The same file for another kind of import, instead of this one."""
-        with default_storage.open(path_of(self.user_id, self.token, "file")) as held:
-            data = held.read()
+        data = self._data()
         other = Kept(str(uuid.uuid4()), self.user_id, kind, self.plant_id, self.name)
         default_storage.save(path_of(other.user_id, other.token, "file"), ContentFile(data))
         other.store()
@@ -62,6 +65,13 @@ class Kept:
         """Forget the file."""
         for what in ("file", "json"):
             default_storage.delete(path_of(self.user_id, self.token, what))
+
+    def _data(self) -> bytes:
+        try:
+            with default_storage.open(path_of(self.user_id, self.token, "file")) as held:
+                return bytes(held.read())
+        except FileNotFoundError as error:
+            raise GoneError(self.token) from error
 
 
 def keep(person: User, kind: str, plant: Plant, name: str, data: bytes) -> Kept:
@@ -75,6 +85,8 @@ def keep(person: User, kind: str, plant: Plant, name: str, data: bytes) -> Kept:
 
 def kept_by(person: User, kind: str, token: uuid.UUID) -> Kept | None:
     """A file that this person brought for this kind of import, or nothing."""
+    if not default_storage.exists(path_of(person.pk, str(token), "file")):
+        return None
     try:
         with default_storage.open(path_of(person.pk, str(token), "json")) as held:
             kept = Kept(**json.loads(held.read()))
@@ -84,15 +96,32 @@ def kept_by(person: User, kind: str, token: uuid.UUID) -> Kept | None:
 
 
 def sweep() -> None:
-    """Throw away the files that lie here for more than a day."""
+    """Throw away what lies here untouched for more than a day: a file together with what was found in it."""
     oldest = timezone.now() - KEPT_FOR
     if not default_storage.exists(FOLDER):
         return
     for folder in default_storage.listdir(FOLDER)[0]:
+        kept: dict[str, list[str]] = {}
         for name in default_storage.listdir(f"{FOLDER}/{folder}")[1]:
-            path = f"{FOLDER}/{folder}/{name}"
-            if default_storage.get_modified_time(path) < oldest:
-                default_storage.delete(path)
+            kept.setdefault(name.partition(".")[0], []).append(f"{FOLDER}/{folder}/{name}")
+        for paths in kept.values():
+            if all(_is_older(path, oldest) for path in paths):
+                for path in paths:
+                    default_storage.delete(path)
+
+
+def _is_older(path: str, than: datetime.datetime) -> bool:
+    """Whether a file was last touched before; one that another sweep has thrown away is as old as can be."""
+    try:
+        return default_storage.get_modified_time(path) < than
+    except FileNotFoundError:
+        return True
+
+
+def _put(path: str, data: bytes) -> None:
+    """Write a file in the place of the one before it: whoever reads meanwhile finds one of both, and whole."""
+    new = default_storage.save(f"{path}.{uuid.uuid4()}.new", ContentFile(data))
+    Path(default_storage.path(new)).replace(default_storage.path(path))
 
 
 class BoundedUpload(FileUploadHandler):

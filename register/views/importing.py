@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 import uuid
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import asdict, dataclass
-from typing import Any, Final
+from functools import wraps
+from typing import Any, Final, TypeVar
 
 from django.contrib import messages
 from django.core.exceptions import ValidationError
@@ -25,10 +26,12 @@ from register.imports.kinds import KINDS, Kind
 from register.imports.tables import Table
 from register.models import Plant
 
+R = TypeVar("R", bound=HttpResponseBase)
 PERMISSION: Final = "import"
 SHOWN: Final = 100
 #: So many columns of another import in the same file are no chance: it is offered next.
 ENOUGH: Final = 3
+GONE: Final = "This file is no longer here: it was brought in, or lay for more than a day."
 
 
 @dataclass(frozen=True, slots=True)
@@ -40,6 +43,19 @@ class Part:
     what: str
     earlier: str
     later: str
+
+
+def _may_be_gone(view: Callable[..., R]) -> Callable[..., R]:
+    """A step of an import, whose file may have been brought in or thrown away from another window meanwhile."""
+
+    @wraps(view)
+    def step(*args: Any, **kwargs: Any) -> R:
+        try:
+            return view(*args, **kwargs)
+        except uploads.GoneError as error:
+            raise Http404(GONE) from error
+
+    return step
 
 
 def upload(kind: Kind, request: HttpRequest) -> HttpResponse:
@@ -55,6 +71,7 @@ def upload(kind: Kind, request: HttpRequest) -> HttpResponse:
     return render(request, "register/import.html", context)
 
 
+@_may_be_gone
 def match(kind: Kind, request: HttpRequest, token: uuid.UUID) -> HttpResponse:
     """Show how the columns are matched, to be corrected; then the file is checked."""
     kept, plant = _kept(kind, request, token)
@@ -88,6 +105,7 @@ def check(kind: Kind, request: HttpRequest, token: uuid.UUID) -> HttpResponse:
     return _show_check(kind, request, kept, plant, BringInForm())
 
 
+@_may_be_gone
 def bring_in(kind: Kind, request: HttpRequest, token: uuid.UUID) -> HttpResponse:
     """Bring in all of the file, or nothing."""
     kept, plant = _kept(kind, request, token)
@@ -143,7 +161,7 @@ def _kept(kind: Kind, request: HttpRequest, token: uuid.UUID) -> tuple[uploads.K
     kept = uploads.kept_by(access.person(request), kind.name, token)
     plant = Plant.objects.filter(pk=kept.plant_id).first() if kept else None
     if kept is None or plant is None:
-        raise Http404("This file is no longer here: it was brought in, or lay for more than a day.")
+        raise Http404(GONE)
     access.in_plant(request, plant.pk, PERMISSION)
     return kept, plant
 
@@ -211,6 +229,9 @@ def _afterwards(kind: Kind, request: HttpRequest, kept: uploads.Kept, plant: Pla
     if following is None or len(left) < ENOUGH:
         kept.discard()
         return redirect(access.address_in(plant, kind.done))
-    next_one = kept.hand_on(following.name)
+    try:
+        next_one = kept.hand_on(following.name)
+    except uploads.GoneError:
+        return redirect(access.address_in(plant, kind.done))
     messages.info(request, f"The file also holds {following.brings}: match and check them here, or leave this page.")
     return redirect(f"import-{following.name}-match", next_one.token)

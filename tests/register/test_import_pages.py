@@ -5,9 +5,12 @@ from __future__ import annotations
 import csv
 import datetime
 import io
+import os
 import re
 import uuid
 from collections.abc import Callable, Iterator
+from pathlib import Path
+from typing import Any
 
 import pytest
 import time_machine
@@ -20,7 +23,7 @@ from django.utils import timezone
 from register.auditing import Actor
 from register.editing import edit_tag
 from register.imports import uploads
-from register.imports.tables import LARGEST_FILE
+from register.imports.tables import LARGEST_FILE, Table
 from register.models import Plant, Tag, User
 from tests.cast import Cast, make_person
 from tests.register.bringing import brought_in, make_catalogue, row, rows, tag, text_of
@@ -218,3 +221,113 @@ def test_files_left_lying_are_thrown_away_after_a_day(cast: Cast, plant: Plant, 
         uploads.sweep()
         assert kept(cast.engineer) == []
     assert client.get(first).status_code == 404
+
+
+def test_a_file_that_is_gone_is_not_found_at_any_step(cast: Cast, plant: Plant, client: Client) -> None:
+    """What was found in it may still lie here."""
+    check = checked(client, text_of(row()))
+    [held] = [name for name in kept(cast.engineer) if name.endswith(".file")]
+    default_storage.delete(f"{uploads.FOLDER}/{cast.engineer.pk}/{held}")
+    for path in (check, check.replace("check/", ""), check.replace("check/", "bad-rows.csv")):
+        assert client.get(path).status_code == 404
+    assert bring_in(client, check).status_code == 404
+    assert not Tag.objects.exists()
+
+
+@pytest.mark.parametrize("step", ["", "check/"])
+def test_a_file_that_goes_while_a_step_is_at_it_is_not_found(
+    cast: Cast, plant: Plant, client: Client, step: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    check = checked(client, text_of(row()))
+    found = uploads.kept_by
+
+    def then_it_goes(*arguments: Any) -> uploads.Kept | None:
+        held = found(*arguments)
+        assert held is not None
+        held.discard()
+        return held
+
+    monkeypatch.setattr(uploads, "kept_by", then_it_goes)
+    answer = client.get(check.replace("check/", "")) if step == "" else bring_in(client, check)
+    assert answer.status_code == 404
+    assert kept(cast.engineer) == []
+
+
+def test_who_brings_in_what_another_window_has_brought_in_leaves_nothing_lying(
+    cast: Cast, plant: Plant, client: Client, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    check = checked(client, text_of(row()))
+    read = uploads.Kept.table
+
+    def then_the_other_window_is_first(held: uploads.Kept, plant: Plant) -> Table:
+        table = read(held, plant)
+        monkeypatch.setattr(uploads.Kept, "table", read)
+        assert bring_in(client, check).status_code == 302
+        return table
+
+    monkeypatch.setattr(uploads.Kept, "table", then_the_other_window_is_first)
+    assert bring_in(client, check).status_code == 404
+    assert Tag.objects.count() == 1
+    assert kept(cast.engineer) == []
+
+
+def test_a_file_that_is_still_worked_on_stays_whole(cast: Cast, plant: Plant, client: Client) -> None:
+    now = timezone.now()
+    with time_machine.travel(now, tick=False):
+        check = checked(client, text_of(row()))
+    match = check.replace("check/", "")
+    touch(cast.engineer, now)
+    page = client.get(match).content.decode()
+    chosen = dict(re.findall(r'<select name="(column-\d+)".*?<option value="([^"]*)" selected>', page, re.DOTALL))
+    with time_machine.travel(now + datetime.timedelta(hours=20), tick=False):
+        client.post(match, chosen)
+        touch(cast.engineer, timezone.now(), only=".json")
+    with time_machine.travel(now + datetime.timedelta(hours=30), tick=False):
+        uploads.sweep()
+        assert len(kept(cast.engineer)) == 2
+    with time_machine.travel(now + datetime.timedelta(hours=45), tick=False):
+        uploads.sweep()
+        assert kept(cast.engineer) == []
+
+
+def touch(user: User, at: datetime.datetime, *, only: str = "") -> None:
+    """Files on a disk take the time of the machine, not that of the test."""
+    for name in kept(user):
+        if name.endswith(only):
+            os.utime(default_storage.path(f"{uploads.FOLDER}/{user.pk}/{name}"), (at.timestamp(),) * 2)
+
+
+def test_two_sweeps_at_once_do_not_stumble(
+    cast: Cast, plant: Plant, client: Client, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    checked(client, text_of(row()))
+    look = default_storage.get_modified_time
+
+    def after_the_other_sweep(path: str) -> datetime.datetime:
+        default_storage.delete(path)
+        return look(path)
+
+    monkeypatch.setattr(default_storage, "get_modified_time", after_the_other_sweep)
+    uploads.sweep()
+    assert kept(cast.engineer) == []
+
+
+def test_what_was_found_is_written_in_one_go(
+    cast: Cast, plant: Plant, client: Client, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Whoever asks while it is written finds what stood there before."""
+    check = checked(client, text_of(row()))
+    token = uuid.UUID(check.split("/")[3])
+    replace, seen = Path.replace, []
+
+    def looked_at_before(new: Path, old: str) -> Path:
+        seen.append(uploads.kept_by(cast.engineer, "register", token))
+        return replace(new, old)
+
+    monkeypatch.setattr(Path, "replace", looked_at_before)
+    held = uploads.kept_by(cast.engineer, "register", token)
+    assert held is not None
+    held.matching = {}
+    held.store()
+    assert seen[0] is not None and seen[0].matching
+    assert len(kept(cast.engineer)) == 2
