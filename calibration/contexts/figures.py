@@ -43,13 +43,13 @@ def _each(run: RunEvaluation) -> Iterator[Figure]:
     yield Figure(
         "Zero error",
         _said(run.zero_error),
-        _mean(zero) if zero else "the list has no reading at 0 %",
+        _mean(zero) if zero else _none_at(run, 0.0),
         "mean error at 0 %",
     )
     if zero and full:
         span = f"{_mean(full)} at 100 %, less {_said(run.zero_error)} at 0 %"
     else:
-        span = "needs readings at 0 % and at 100 %"
+        span = "; ".join(_none_at(run, point) for point, held in ((0.0, zero), (100.0, full)) if not held)
     yield Figure("Span error", _said(run.span_error), span, "mean error at 100 % less mean error at 0 %")
     yield from _shifts(run)
     yield _hysteresis(run)
@@ -108,17 +108,30 @@ def _nonlinearity(run: RunEvaluation) -> Iterator[Figure]:
     yield Figure(
         "Non-linearity, zero-based",
         _size(run.nonlinearity_zero_based),
-        "from the best line through its beginning",
-        "line through the error at the lowest point that makes the greatest distance least",
+        _line(run.zero_based_line),
+        "line through the mean error at the lowest point that makes the greatest distance least",
     )
-    intercept, slope = run.independent_line
-    line = "" if math.isnan(intercept) else f"from the line {signed(intercept, 4)} {_term(slope)}·x"
     yield Figure(
         "Non-linearity, independent",
         _size(run.nonlinearity_independent),
-        line,
+        _line(run.independent_line),
         "line that makes the greatest distance least (not least squares)",
     )
+
+
+def _line(line: tuple[float, float]) -> str:
+    intercept, slope = line
+    if math.isnan(intercept):
+        return ""
+    line = f"{signed(intercept, 4)} {_term(slope)}·x"
+    return f"from the line {line}, where x is the expected output, 0 at 4 mA and 1 at 20 mA"
+
+
+def _none_at(run: RunEvaluation, point: float) -> str:
+    """Why there is no mean error at a point."""
+    if any(level.point == point for level in run.levels):
+        return f"no reading at {point:g} % carries a measurement: it is missing, or at the edge of the signal"
+    return f"the list has no reading at {point:g} %"
 
 
 def _term(slope: float) -> str:

@@ -45,7 +45,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from calibration.metrology.evaluation import Level, RunEvaluation, ShiftFit
-from calibration.metrology.linefit import greatest_bow, greatest_from_first, minimax_line
+from calibration.metrology.linefit import greatest_bow, greatest_from_first, minimax_line, slope_from_first
 from calibration.metrology.pointlist import DOWN, UP, PointList, directions_of, points_from_applied
 from calibration.metrology.signal import (
     SPAN_MA,
@@ -365,6 +365,7 @@ def evaluate_run(
         nonlinearity_zero_based=figure["nonlinearity_zero_based"],
         nonlinearity_independent=figure["nonlinearity_independent"],
         independent_line=_independent_line(curves, figure["nonlinearity_independent"]),
+        zero_based_line=_zero_based_line(curves, figure["nonlinearity_zero_based"]),
         fit=ShiftFit(
             zero_shift=figure["zero_shift"],
             span_shift=figure["span_shift"],
@@ -407,3 +408,12 @@ def _independent_line(curves: _Curves, deviation: float) -> tuple[float, float]:
     there = np.isfinite(curves.mean[:, 0])
     line = minimax_line(curves.x[there, 0], curves.mean[there, 0])
     return (line.intercept, line.slope)
+
+
+def _zero_based_line(curves: _Curves, deviation: float) -> tuple[float, float]:
+    if deviation != deviation:
+        return (float("nan"), float("nan"))
+    there = np.isfinite(curves.mean[:, 0])
+    x, mean = curves.x[there, 0], curves.mean[there, 0]
+    slope = slope_from_first(x, mean)
+    return (float(mean[0] - slope * x[0]), slope)

@@ -104,6 +104,8 @@ class RunEvaluation:
         [% of output span].
     independent_line : tuple of float
         Intercept and slope, as errors [% of output span], of the line for independent non-linearity.
+    zero_based_line : tuple of float
+        The same of the line for zero-based non-linearity, through the mean error at the lowest point.
     fit : ShiftFit
         Fitted zero and span shift.
     """
@@ -132,6 +134,7 @@ class RunEvaluation:
     nonlinearity_zero_based: float
     nonlinearity_independent: float
     independent_line: tuple[float, float]
+    zero_based_line: tuple[float, float]
     fit: ShiftFit
 
     @property

@@ -335,3 +335,29 @@ def greatest_from_first(x: Floats, y: Floats) -> Floats:
         least = np.abs(v[i] * u[i + 1 :] - v[i + 1 :] * u[i]) / (u[i] + u[i + 1 :])
         np.fmax(greatest, np.fmax.reduce(least, axis=0), out=greatest)
     return greatest
+
+
+def slope_from_first(x: ArrayLike, y: ArrayLike) -> float:
+    """Slope of the line through the first point that makes the greatest deviation of the others least.
+
+    Parameters
+    ----------
+    x, y : array, shape (n,)
+        One curve, x ascending, without gaps.
+
+    Returns
+    -------
+    float
+        NaN with fewer than two other points.
+
+    Notes
+    -----
+    The greatest deviation stands at two points, above the line at one and below it at the other; see
+    `greatest_from_first`.
+    """
+    u, v = (np.asarray(values, dtype=np.float64)[1:] - np.asarray(values, dtype=np.float64)[0] for values in (x, y))
+    pairs = [
+        (abs(v[i] * u[j] - v[j] * u[i]) / (u[i] + u[j]), (v[i] + v[j]) / (u[i] + u[j]))
+        for i, j in combinations(range(len(u)), 2)
+    ]
+    return float(max(pairs)[1]) if pairs else float("nan")

@@ -106,6 +106,9 @@ def test_zero_based_non_linearity_is_the_minimax_deviation_through_zero(errors: 
         bounds=[(None, None), (0, None)],
     )
     assert run.nonlinearity_zero_based == pytest.approx(best.fun, abs=1e-8)
+    a, b = run.zero_based_line
+    assert a == pytest.approx(y[0], abs=1e-12)
+    assert np.abs(rise - b * x).max() == pytest.approx(run.nonlinearity_zero_based, abs=1e-9)
 
 
 @given(ERRORS)

@@ -8,6 +8,7 @@ import io
 import re
 import uuid
 from collections.abc import Callable
+from dataclasses import replace
 
 import pytest
 from django.db import connection, transaction
@@ -23,7 +24,7 @@ from register.auditing import Act, Actor
 from register.models import AuditEntry
 from tests import cast as people
 from tests.calibration.at_work import Device, answer_checklist, opened, run_texts, signed, to_as_found
-from tests.calibration.described import described
+from tests.calibration.described import described, readings
 
 ClientAs = Callable[[people.User], Client]
 FOUND = (0.2, 0.3, 0.6, 0.3, 0.2, 0.1, 0.2, 0.1, 0.1)
@@ -140,6 +141,25 @@ def test_a_test_that_does_not_prove_the_range_of_today_says_so(tablet: Device, a
     people.make_range(tablet.sheet.tag, "0", "16", effective_from=record.test.tested_on)
     scheduling.refresh([tablet.sheet.tag.pk])
     assert "the due date does not count from it" in text_of(auditor, "test", record.test_id)
+
+
+def test_a_reading_that_was_clipped_is_not_called_a_point_that_was_not_asked_for(
+    tag: people.Tag, auditor: Client
+) -> None:
+    on = datetime.date(2016, 5, 1)
+    clipped = (replace(readings()[0], measured="3.7"), *readings()[1:8], replace(readings()[8], measured="3.7"))
+    content = described(tag, on=on, runs=(RunContent(kind="as-found", tested_on=on, readings=clipped),))
+    record = write_record(content, act=Act(by=Actor(person=None), reason="earlier history"))
+    text = text_of(auditor, "test", record.test_id)
+    assert "no reading at 0 % carries a measurement" in text
+    assert "the list has no reading at 0 %" not in text
+
+
+def test_the_lines_of_non_linearity_can_be_drawn_by_hand(tablet: Device, auditor: Client) -> None:
+    record = signed(tablet, (0.0, 0.0, 0.4, 0.0, 0.0, 0.0, 0.4, 0.0, 0.0))
+    text = text_of(auditor, "test", record.test_id)
+    # Through the error at zero: 0.4 − s/2 = s at full scale, so s = 0.4/1.5 and the distance is the same 0.2667.
+    assert "from the line 0.0000 + 0.2667·x, where x is the expected output" in text
 
 
 def test_a_transcribed_test_says_so_and_offers_no_review(

@@ -11,7 +11,7 @@ from calibration.metrology.pointlist import STANDARD, UP_ONLY, PointList
 from calibration.metrology.signal import Signal, Transfer
 from calibration.metrology.tolerance import Tolerance
 from calibration.metrology.verdicts import Verdict
-from tests.published import read_json
+from tests.published import read_csv, read_json
 
 # Half of the last printed digit; a value that was rounded up exactly at the half lies on it.
 PRINTED = 5.001e-4
@@ -47,6 +47,7 @@ def test_the_up_readings_alone_have_the_figures_of_the_definitions() -> None:
     assert run.nonlinearity_terminal == pytest.approx(figures["terminal_nonlinearity"])
     assert run.nonlinearity_independent == pytest.approx(figures["independent_nonlinearity"])
     assert run.nonlinearity_zero_based == pytest.approx(figures["zero_based_nonlinearity"])
+    assert run.zero_based_line == pytest.approx((run.zero_error, (figures["zero_based_slope"] - 1.0) * 100.0), abs=1e-9)
     line = figures["independent_line"]
     assert run.independent_line[0] == pytest.approx(line["a"])
     assert run.independent_line[1] == pytest.approx((line["b"] - 1.0) * 100.0)
@@ -77,15 +78,51 @@ def test_an_interface_transmitter_with_its_range_below_zero_is_tested_at_the_pri
 
 
 def test_a_wet_leg_transmitter_is_tested_at_the_printed_pressures() -> None:
-    """Source: Lessons In Industrial Instrumentation, level chapter: five levels, −4.77 to −1.92 psi, printed
-    to 0.01.
+    """Source: Lessons In Industrial Instrumentation, level chapter: gasoline of 41.0 lb/ft³ from 0 to 10 ft, a leg of
+    11 ft of water (62.4 lb/ft³); five pressures, printed to 0.01 psi.
+
+    Range and five points are the printed ones, the inputs applied are worked out from the printed densities: between
+    them lies nothing but the rounding of the print, 0.01 psi on each side.
     """
     cases = [c for c in read_json("liii_scaling_and_level.json")["cases"] if c["name"].startswith("wet leg")]
-    inputs, tolerance = [c["computed"] for c in cases], cases[0]["tol"]
-    signal = Signal(inputs[0], inputs[-1], unit="psi")
-    run = evaluate_run(inputs, [4.0, 8.0, 12.0, 16.0, 20.0], signal, points=UP_ONLY)
-    assert np.abs(run.error).max() < 1e-9
-    assert list(UP_ONLY.inputs(signal)) == pytest.approx([c["expected"] for c in cases], abs=tolerance)
+    printed = [c["expected"] for c in cases]
+    signal = Signal(printed[0], printed[-1], unit="psi")
+    applied = [(41.0 * level - 62.4 * 11.0) / 144.0 for level in (0.0, 2.5, 5.0, 7.5, 10.0)]
+    run = evaluate_run(applied, [4.0, 8.0, 12.0, 16.0, 20.0], signal, points=UP_ONLY)
+    assert list(UP_ONLY.inputs(signal)) == pytest.approx(printed, abs=0.01)
+    assert run.inaccuracy <= 100.0 * 0.01 / signal.span
+    assert run.input_error == pytest.approx(np.zeros(5), abs=0.01)
+
+
+def test_a_check_at_one_point_has_the_printed_error() -> None:
+    """Source: Lessons In Industrial Instrumentation, calibration chapter: −79 °C indicated where −78.112 °C is; error
+    −0.888 °C.
+    """
+    (case,) = (c for c in read_json("liii_scaling_and_level.json")["cases"] if c["name"].startswith("single-point"))
+    signal = Signal(-100.0, 50.0, unit="°C")
+    run = evaluate_run([-78.112], [float(signal.ideal_current(-79.0))], signal)
+    assert run.input_error[0] == pytest.approx(case["expected"], abs=case["tol"])
+    assert run.error[0] == pytest.approx(case["expected"] / 150.0 * 100.0, abs=case["tol"])
+
+
+def test_fitted_shifts_and_their_standard_errors_are_the_printed_ones() -> None:
+    """Source: NIST/SEMATECH e-Handbook of Statistical Methods, 2.3.6.7.3: 40 readings of ten references, each read four
+    times; intercept, slope, their standard errors and the scatter as printed.
+
+    They are laid on a range of 0 to 12 units, so that one unit is 100/12 % of span.
+    """
+    printed = read_json("nist_ehandbook_calibration_line.json")["calibrationline"]["expected"]
+    rows = read_csv("nist_calibrationline_mpc3673.csv")
+    applied, read = (np.array([float(row[name]) for row in rows]) for name in ("reference", "measured"))
+    signal = Signal(0.0, 12.0)
+    run = evaluate_run(applied, np.asarray(signal.ideal_current(read)), signal)
+    per_unit = 100.0 / 12.0
+    assert run.fit.readings == 40 and run.fit.dof == printed["dof"]
+    assert run.fit.zero_shift == pytest.approx(printed["a"] * per_unit, rel=1e-6)
+    assert run.fit.span_shift == pytest.approx((printed["b"] - 1.0) * 100.0, rel=1e-5)
+    assert run.fit.zero_se == pytest.approx(printed["se_a"] * per_unit, rel=1e-6)
+    assert run.fit.span_se == pytest.approx(printed["se_b"] * 100.0, rel=1e-5)
+    assert run.fit.residual_sd == pytest.approx(printed["s"] * per_unit, abs=5.001e-6 * per_unit)
 
 
 def test_five_points_of_a_flow_transmitter_read_as_printed() -> None:
