@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import datetime
 import heapq
+import re
 import uuid
 from collections.abc import Iterator
 from dataclasses import dataclass
@@ -34,6 +35,8 @@ PAGES: Final = {
     "calibration.test": "test",
     "calibration.sheet": "sheet",
 }
+#: A value that is a moment, as the trail keeps it.
+MOMENT: Final = re.compile(r"^\d{4}-\d\d-\d\d \d\d:\d\d:\d\d(\.\d{6})?\+00:00$")
 HEAD: Final = (
     "act",
     "at (UTC)",
@@ -51,10 +54,12 @@ HEAD: Final = (
 
 @dataclass(frozen=True, slots=True)
 class Line:
-    """An entry as the page shows it: the time at the plant, words instead of column names."""
+    """An entry as the page shows it: times at the plant, words instead of column names."""
 
     entry: AuditEntry
     at: str
+    before: str
+    after: str
     kind_of_thing: str
     field: str
     url: str
@@ -139,10 +144,17 @@ def _line(entry: AuditEntry, plant: Plant) -> Line:
         except NoReverseMatch:
             url = ""
     kind = type_in_words(entry.thing_type)
+    zone = ZoneInfo(plant.time_zone)
     return Line(
         entry=entry,
-        at=entry.at.astimezone(ZoneInfo(plant.time_zone)).strftime("%Y-%m-%d %H:%M:%S"),
+        at=_at_plant(entry.at, zone),
+        before=MOMENT.sub(lambda found: _at_plant(datetime.datetime.fromisoformat(found[0]), zone), entry.before),
+        after=MOMENT.sub(lambda found: _at_plant(datetime.datetime.fromisoformat(found[0]), zone), entry.after),
         kind_of_thing="" if entry.thing_label.startswith(f"{kind} ") else kind,
         field=field_in_words(entry.thing_type, entry.field) if entry.field else "",
         url=url,
     )
+
+
+def _at_plant(moment: datetime.datetime, zone: ZoneInfo) -> str:
+    return moment.astimezone(zone).strftime("%Y-%m-%d %H:%M:%S")

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import datetime
 import io
 from collections.abc import Callable
 from zoneinfo import ZoneInfo
@@ -85,6 +86,17 @@ def test_a_period_runs_from_midnight_to_midnight_at_the_plant(cast: Cast, client
     assert [
         line.entry.after for line in auditor.get(f"/audit/?since={today}&until={today}&field=service").context["lines"]
     ] == ["y"]
+
+
+def test_moments_before_and_after_are_told_by_the_clock_of_the_plant(cast: Cast, client_as: SignIn) -> None:
+    tag = make_tag(make_area(cast.plant), "PT-1")
+    moment = datetime.datetime(2026, 7, 1, 12, 0, 5, 123456, tzinfo=datetime.UTC)
+    change(cast, tag, "seen_at", str(moment), f"from {moment}")
+    text = client_as(cast.auditor).get("/audit/").content.decode()
+    local = moment.astimezone(ZoneInfo(cast.plant.time_zone)).strftime("%Y-%m-%d %H:%M:%S")
+    assert f'<td class="clip before">{local}</td>' in text
+    # Words of people are shown as they are.
+    assert f'<td class="clip after">from {moment}</td>' in text
 
 
 def test_an_unreadable_date_is_said_and_the_rest_of_the_filter_holds(cast: Cast, client_as: SignIn) -> None:
