@@ -36,7 +36,10 @@ def add_line(*, by: Actor, plant: Plant, reason: str, **values: Any) -> Guidance
 
 @transaction.atomic
 def edit_line(*, by: Actor, line: GuidanceLine, reason: str, **values: Any) -> GuidanceLine:
+    """Change a line, as `add_line`; one that was withdrawn is changed no more."""
     held = GuidanceLine.objects.select_for_update().get(pk=line.pk)
+    if held.withdrawn_at is not None:
+        raise ValidationError("This line was withdrawn already: its reason stands in the audit trail.")
     before = snapshot(held, FIELDS)
     _stored(held, values)
     act = Act(by=by, reason=reason)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from django.core.exceptions import ValidationError
 from django.db import transaction
 from django.utils import timezone
 
@@ -29,7 +30,7 @@ def create_point_list(
 def edit_point_list(
     *, by: Actor, point_list: PointList, name: str, points: str, for_square_root: bool, reason: str
 ) -> PointList:
-    held = PointList.objects.select_for_update().get(pk=point_list.pk)
+    held = _offered(point_list)
     before = snapshot(held, FIELDS)
     held.name, held.points, held.for_square_root = name, _tidy(points), for_square_root
     store(held)
@@ -39,12 +40,26 @@ def edit_point_list(
 
 @transaction.atomic
 def withdraw_point_list(*, by: Actor, point_list: PointList, reason: str) -> PointList:
-    """Take a list out of the choices; requirements that name it keep it."""
-    held = PointList.objects.select_for_update().get(pk=point_list.pk)
+    """Take a list out of the choices; requirements that name it keep it.
+
+    Raises
+    ------
+    ValidationError
+        It was withdrawn already; such a list is not edited either.
+    """
+    held = _offered(point_list)
     before = snapshot(held, FIELDS)
     held.withdrawn_at = timezone.now()
     held.save()
     _trail(by, held, before, reason)
+    return held
+
+
+def _offered(point_list: PointList) -> PointList:
+    """The list with its row locked; refuses one that was withdrawn."""
+    held = PointList.objects.select_for_update().get(pk=point_list.pk)
+    if held.withdrawn_at is not None:
+        raise ValidationError(f"“{held.name}” was withdrawn already: its reason stands in the audit trail.")
     return held
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from django.core.exceptions import ValidationError
 from django.db import transaction
 from django.utils import timezone
 
@@ -65,7 +66,10 @@ def add_certificate(*, by: Actor, standard: Standard, reason: str, **values: Any
 
 @transaction.atomic
 def withdraw_certificate(*, by: Actor, certificate: Certificate, reason: str) -> Certificate:
-    held = Certificate.objects.select_for_update().select_related("standard").get(pk=certificate.pk)
+    """Say that a certificate no longer counts; raises ValidationError where that was said already."""
+    held = Certificate.objects.select_for_update(of=("self",)).select_related("standard").get(pk=certificate.pk)
+    if held.withdrawn_at is not None:
+        raise ValidationError(f"This certificate was withdrawn already: {held.withdrawn_reason}")
     before = snapshot(held, CERTIFICATE_FIELDS)
     held.withdrawn_at = timezone.now()
     held.withdrawn_reason = reason

@@ -9,10 +9,13 @@ from typing import Any, Final
 
 from django.db import models, transaction
 from django.http import StreamingHttpResponse
+from django.utils.http import content_disposition_header
 
 from register.auditing import Act, Actor
 from register.models import AuditEntry, Plant
 
+#: Control signs, what parts folders, and what Windows keeps for itself.
+NO_FILE_NAME: Final = re.compile(r'[\x00-\x1f\x7f/\\:*?"<>|]')
 NUMBER: Final = re.compile(r"[+-]?(\d+([.,]\d*)?|[.,]\d+)([eE][+-]?\d+)?")
 #: What spreadsheets take for the beginning of a formula, also behind blanks.
 ACTIVE: Final = ("=", "+", "-", "@", "\t", "\r", "\n")
@@ -42,8 +45,13 @@ def unguarded(text: str) -> str:
 def csv_response(name: str, head: Sequence[str], rows: Iterable[Sequence[Any]]) -> StreamingHttpResponse:
     """A CSV file (RFC 4180, UTF-8 with byte order mark, which spreadsheets need) sent row by row."""
     response = StreamingHttpResponse(_lines(head, rows), content_type="text/csv; charset=utf-8")
-    response["Content-Disposition"] = f'attachment; filename="{name}"'
+    response["Content-Disposition"] = as_file(name)
     return response
+
+
+def as_file(name: str) -> str:
+    """The header by which a browser keeps an answer under a name, whatever a tag or a serial number puts into it."""
+    return str(content_disposition_header(True, NO_FILE_NAME.sub("-", name)))
 
 
 class _Line:

@@ -9,7 +9,7 @@ from typing import Any, Final
 
 from django.http import HttpResponse
 
-from register.exporting import cell
+from register.exporting import as_file, cell
 from register.imports.cells import Choice, Figure, day, yes_or_no
 from register.imports.columns import Column
 from register.imports.kinds import Kind
@@ -162,5 +162,5 @@ def _typed(column: Column, text: str, decimal_comma: bool) -> str:
 
 def _download(name: str, content_type: str, content: bytes) -> HttpResponse:
     response = HttpResponse(content, content_type=content_type)
-    response["Content-Disposition"] = f'attachment; filename="{name}"'
+    response["Content-Disposition"] = as_file(name)
     return response

@@ -13,7 +13,7 @@ from calibration.models import Certificate, GuidanceLine, PointList, Standard
 from calibration.provision import provide_defaults
 from register.auditing import Actor
 from register.models import AuditEntry, User
-from tests.cast import Cast
+from tests.cast import Cast, make_standard
 
 STANDARD = {
     "name": "PS-01", "kind": "pressure", "maker": "", "designation": "", "serial": "771", "unit": "kPa",
@@ -128,3 +128,42 @@ def test_guidance_lines_are_edited_by_the_engineer_and_read_by_the_auditor(cast:
     assert AuditEntry.objects.filter(field="text", after="Permit board signed.", reason="house words").exists()
     clash = client_as(cast.engineer).post("/guidance/new/", values)
     assert "short name of another line" in clash.content.decode()
+
+
+@pytest.mark.parametrize("name", ["certificate", "point list", "line"])
+def test_what_was_withdrawn_is_neither_withdrawn_again_nor_edited(cast: Cast, client_as: ClientAs, name: str) -> None:
+    provide_defaults(by=Actor(person=None), plant=cast.plant)
+    made: Certificate | PointList | GuidanceLine = {
+        "certificate": lambda: make_standard(cast.plant).certificates.get(),
+        "point list": lambda: PointList.objects.filter(plant=cast.plant)[0],
+        "line": lambda: GuidanceLine.objects.filter(plant=cast.plant)[0],
+    }[name]()
+    start = {"certificate": "/certificates", "point list": "/point-lists", "line": "/guidance"}[name]
+    client = client_as(cast.engineer)
+    assert client.post(f"{start}/{made.pk}/withdraw/", {"reason": "first"}).status_code == 302
+    made.refresh_from_db()
+    at = made.withdrawn_at
+    again = client.post(f"{start}/{made.pk}/withdraw/", {"reason": "second"})
+    assert "was withdrawn already" in again.content.decode()
+    if name != "certificate":
+        typed = {
+            "name": "Other",
+            "points": "0 100",
+            "part": "caution",
+            "order": "1",
+            "key": "other",
+            "text": "Other words",
+            "applies": "always",
+            "condensing": "as elsewhere",
+            "answer": "tick",
+            "reason": "third",
+        }
+        edited = client.post(f"{start}/{made.pk}/edit/", typed)
+        assert "was withdrawn already" in edited.content.decode(), edited.context["form"].errors
+        assert 'value="third"' in edited.content.decode() or ">\nthird</textarea>" in edited.content.decode()
+    made.refresh_from_db()
+    assert made.withdrawn_at == at
+    assert getattr(made, "withdrawn_reason", "first") == "first"
+    assert set(AuditEntry.objects.filter(thing_id=str(made.pk), kind="changed").values_list("reason", flat=True)) == {
+        "first"
+    }

@@ -13,6 +13,7 @@ from django.test import Client
 
 from register.auditing import Actor
 from register.editing import edit_tag
+from register.exporting import csv_response
 from register.imports.columns import guessed
 from register.imports.proposing import propose
 from register.imports.sheet import COLUMNS
@@ -152,3 +153,16 @@ def test_the_empty_workbook_explains_each_column_on_a_second_sheet(cast: Cast, c
     assert explained == {column.label: column.explain for column in COLUMNS}
     assert [cell.value for cell in book["Register"][1]] == [column.label for column in COLUMNS]
     assert str(book["Register"]["A2"].value).startswith("# ")
+
+
+@pytest.mark.parametrize(
+    ("name", "header"),
+    [
+        ("drift-PT-1.csv", 'attachment; filename="drift-PT-1.csv"'),
+        ('drift-PT "old"\r\nX: y.csv', 'attachment; filename="drift-PT -old---X- y.csv"'),
+        ("drift-../PT\\1.csv", 'attachment; filename="drift-..-PT-1.csv"'),
+        ("drift-PÜ-1.csv", "attachment; filename*=utf-8''drift-P%C3%9C-1.csv"),
+    ],
+)
+def test_a_file_has_a_name_that_any_browser_can_keep(name: str, header: str) -> None:
+    assert csv_response(name, ["a"], [])["Content-Disposition"] == header
