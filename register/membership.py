@@ -67,7 +67,7 @@ def edit_person(*, by: Actor, reason: str, person: User, values: Mapping[str, st
 
 
 @transaction.atomic
-def set_roles(*, by: Actor, reason: str, person: User, plant: Plant, roles: Collection[str]) -> None:
+def set_roles(*, by: Actor, reason: str, person: User, plant: Plant, roles: Collection[str]) -> User:
     """Give a person exactly these roles in a plant, none of them to take him off the plant.
 
     Raises
@@ -80,6 +80,7 @@ def set_roles(*, by: Actor, reason: str, person: User, plant: Plant, roles: Coll
     _give(act, person, plant, roles)
     _keep_an_administrator(plant)
     act.write()
+    return person
 
 
 @transaction.atomic

@@ -90,11 +90,3 @@ class DeferralForm(RegisterForm):
         widget=forms.Textarea(attrs={"rows": 3}),
         help_text="Comparison with another measurement, a check at zero, a lower load …",
     )
-
-
-class ApprovalForm(RegisterForm):
-    reason = ReasonField(label="Why it can be approved")
-
-
-class WithdrawForm(RegisterForm):
-    reason = ReasonField(label="Why it is withdrawn")

@@ -71,12 +71,6 @@ _WANTED = {
 }
 
 
-class ReasonForm(RegisterForm):
-    """Only a reason."""
-
-    reason = ReasonField()
-
-
 class ExceptionForm(RegisterForm):
     """Why a lapsed certificate may be relied on, and who answers for it."""
 

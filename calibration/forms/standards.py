@@ -74,7 +74,3 @@ class CertificateForm(RegisterForm):
         if day > self.standard.plant.today():
             raise forms.ValidationError(f"{day:%Y-%m-%d} is still to come.")
         return day
-
-
-class WithdrawForm(RegisterForm):
-    reason = ReasonField(label="Why is it withdrawn?")

@@ -8,11 +8,10 @@ from django.shortcuts import redirect, render
 
 from calibration import guiding as acts
 from calibration.forms.plant_lists import GuidanceForm
-from calibration.forms.standards import WithdrawForm
 from calibration.models import GuidanceLine
 from register import access
 from register.auditing import Actor
-from register.forms.fields import typed
+from register.forms.fields import ReasonForm, typed
 
 LINES = GuidanceLine.objects.select_related("plant")
 COLUMNS = ("part", "order", "key", "text", "applies", "condensing", "answer", "required")
@@ -55,7 +54,7 @@ def guidance_edit(request: HttpRequest, pk: int) -> HttpResponse:
 
 def guidance_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     held = access.get(request, LINES, "edit guidance", pk=pk)
-    form = WithdrawForm(typed(request))
+    form = ReasonForm(typed(request), asks="Why it is withdrawn")
     if form.submit(lambda: acts.withdraw_line(by=Actor.of(request), line=held, reason=form.why)):
         messages.success(request, "The line no longer stands on new sheets.")
         return redirect(access.address_in(held.plant, "guidance"))

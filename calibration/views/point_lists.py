@@ -8,11 +8,10 @@ from django.shortcuts import redirect, render
 
 from calibration import pointlists as acts
 from calibration.forms.plant_lists import PointListForm
-from calibration.forms.standards import WithdrawForm
 from calibration.models import PointList
 from register import access
 from register.auditing import Actor
-from register.forms.fields import typed
+from register.forms.fields import ReasonForm, typed
 
 POINT_LISTS = PointList.objects.select_related("plant")
 
@@ -58,7 +57,7 @@ def point_list_edit(request: HttpRequest, pk: int) -> HttpResponse:
 
 def point_list_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     held = access.get(request, POINT_LISTS, "set requirement", pk=pk)
-    form = WithdrawForm(typed(request))
+    form = ReasonForm(typed(request), asks="Why it is withdrawn")
     if form.submit(lambda: acts.withdraw_point_list(by=Actor.of(request), point_list=held, reason=form.why)):
         messages.success(request, f"“{held.name}” is no longer offered.")
         return redirect(access.address_in(held.plant, "point-lists"))

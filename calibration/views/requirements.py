@@ -9,12 +9,12 @@ from django.http import HttpRequest, HttpResponse
 from django.shortcuts import get_object_or_404, redirect, render
 
 from calibration import scheduling
-from calibration.forms.requirement import ApprovalForm, DeferralForm, RequirementForm, WithdrawForm
+from calibration.forms.requirement import DeferralForm, RequirementForm
 from calibration.models import Deferral, Requirement, Standing, ToleranceForm
 from calibration.opening import current_requirement
 from register import access
 from register.auditing import Actor
-from register.forms.fields import typed
+from register.forms.fields import ReasonForm, typed
 from register.models import Tag
 
 _KEPT = (
@@ -57,8 +57,7 @@ def tag_requirement(request: HttpRequest, pk: int) -> HttpResponse:
 def requirement_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     held = get_object_or_404(Requirement.objects.select_related("tag__plant", "point_list", "person"), pk=pk)
     access.in_plant(request, held.tag.plant_id, "set requirement")
-    form = WithdrawForm(typed(request))
-    form.fields["reason"].label = "Why it was a mistake"
+    form = ReasonForm(typed(request), asks="Why it was a mistake")
     done = form.submit(lambda: scheduling.withdraw_requirement(by=Actor.of(request), reason=form.why, requirement=held))
     if done is not None:
         messages.success(request, f"The requirement from {held.effective_from} is withdrawn.")
@@ -81,7 +80,7 @@ def tag_defer(request: HttpRequest, pk: int) -> HttpResponse:
 
 def deferral_approve(request: HttpRequest, pk: int) -> HttpResponse:
     held = _deferral(request, pk, "approve deferral")
-    form = ApprovalForm(typed(request))
+    form = ReasonForm(typed(request), asks="Why it can be approved")
     done = form.submit(lambda: scheduling.approve_deferral(by=Actor.of(request), reason=form.why, deferral=held))
     if done is not None:
         messages.success(request, f"{held.tag} is deferred until {held.until}.")
@@ -92,7 +91,7 @@ def deferral_approve(request: HttpRequest, pk: int) -> HttpResponse:
 
 def deferral_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     held = _deferral(request, pk, "withdraw deferral")
-    form = WithdrawForm(typed(request))
+    form = ReasonForm(typed(request), asks="Why it is withdrawn")
     done = form.submit(lambda: scheduling.withdraw_deferral(by=Actor.of(request), reason=form.why, deferral=held))
     if done is not None:
         messages.success(request, f"The deferral of {held.tag} until {held.until} is withdrawn.")

@@ -13,7 +13,7 @@ from django.utils import timezone
 from django.views.decorators.http import require_POST
 
 from calibration import sheets
-from calibration.forms.sheets import ExceptionForm, ReasonForm
+from calibration.forms.sheets import ExceptionForm
 from calibration.models import Standard
 from calibration.passwords import named
 from calibration.queries.choosing import candidates
@@ -24,20 +24,15 @@ from calibration.storing_entries import add_entries, uuid_of
 from calibration.views.sheet import SHEETS, keep_form, shown
 from register import access
 from register.auditing import Actor
+from register.forms.fields import ReasonForm, typed
 
 
 def sheet_could_not_test(request: HttpRequest, pk: object) -> HttpResponse:
     """Why it could not be tested."""
     held = access.get(request, SHEETS, "test", pk=pk)
-    form = ReasonForm(request.POST or None)
-    form.fields["reason"].label = "Why it could not be tested"
-    if request.method == "POST" and form.is_valid():
-        try:
-            sheets.could_not_test(by=Actor.of(request), reason=form.cleaned_data["reason"], sheet_id=held.pk)
-        except ValidationError as error:
-            form.refuse(error)
-        else:
-            return redirect("sheet", held.pk)
+    form = ReasonForm(typed(request), asks="Why it could not be tested")
+    if form.submit(lambda: sheets.could_not_test(by=Actor.of(request), reason=form.why, sheet_id=held.pk)):
+        return redirect("sheet", held.pk)
     context = {"sheet": held, "form": form, "draft": Draft(held)}
     return render(request, "calibration/sheet_could_not_test.html", context)
 
@@ -45,15 +40,10 @@ def sheet_could_not_test(request: HttpRequest, pk: object) -> HttpResponse:
 def sheet_abandon(request: HttpRequest, pk: object) -> HttpResponse:
     """Why the sheet is abandoned."""
     held = access.get(request, SHEETS, "test", pk=pk)
-    form = ReasonForm(request.POST or None)
-    if request.method == "POST" and form.is_valid():
-        try:
-            sheets.abandon(by=Actor.of(request), reason=form.cleaned_data["reason"], sheet_id=held.pk)
-        except ValidationError as error:
-            form.refuse(error)
-        else:
-            messages.success(request, "The sheet is abandoned; what was entered stays readable.")
-            return redirect("sheet", held.pk)
+    form = ReasonForm(typed(request))
+    if form.submit(lambda: sheets.abandon(by=Actor.of(request), reason=form.why, sheet_id=held.pk)):
+        messages.success(request, "The sheet is abandoned; what was entered stays readable.")
+        return redirect("sheet", held.pk)
     return render(request, "calibration/sheet_abandon.html", {"sheet": held, "form": form, "draft": Draft(held)})
 
 

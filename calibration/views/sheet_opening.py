@@ -9,10 +9,11 @@ from django.http import HttpRequest, HttpResponse
 from django.shortcuts import redirect, render
 
 from calibration import opening
-from calibration.forms.sheets import BenchForm, ReasonForm
+from calibration.forms.sheets import BenchForm
 from calibration.models import Test
 from register import access
 from register.auditing import Actor
+from register.forms.fields import ReasonForm, typed
 
 TESTS = Test.objects.select_related("plant", "tag", "transmitter__maker", "current_record")
 
@@ -60,21 +61,19 @@ def sheet_bench(request: HttpRequest, pk: int) -> HttpResponse:
         "transfer": "linear",
         "mpe_form": "percent of span",
     }
-    form = BenchForm(request.POST or None, plant=transmitter.plant, initial=initial)
-    if request.method == "POST" and form.is_valid():
-        try:
-            sheet = opening.open_bench_sheet(
-                by=Actor.of(request),
-                reason="",
-                transmitter=transmitter,
-                sheet_id=_number(request.POST.get("sheet", "")),
-                point_list=form.cleaned_data["point_list"],
-                values=form.values("point_list"),
-            )
-        except ValidationError as error:
-            form.refuse(error)
-        else:
-            return redirect("sheet", sheet.pk)
+    form = BenchForm(typed(request), plant=transmitter.plant, initial=initial)
+    sheet = form.submit(
+        lambda: opening.open_bench_sheet(
+            by=Actor.of(request),
+            reason="",
+            transmitter=transmitter,
+            sheet_id=_number(request.POST.get("sheet", "")),
+            point_list=form.cleaned_data["point_list"],
+            values=form.values("point_list"),
+        )
+    )
+    if sheet is not None:
+        return redirect("sheet", sheet.pk)
     return render(
         request,
         "calibration/sheet_bench.html",
@@ -85,19 +84,14 @@ def sheet_bench(request: HttpRequest, pk: int) -> HttpResponse:
 def sheet_correct(request: HttpRequest, pk: int) -> HttpResponse:
     """Why a signed test is to be corrected."""
     test = access.get(request, TESTS, "test", pk=pk)
-    form = ReasonForm(request.POST or None)
-    if request.method == "POST" and form.is_valid():
-        try:
-            sheet = opening.open_correction(
-                by=Actor.of(request),
-                reason=form.cleaned_data["reason"],
-                test=test,
-                sheet_id=_number(request.POST.get("sheet", "")),
-            )
-        except ValidationError as error:
-            form.refuse(error)
-        else:
-            return redirect("sheet", sheet.pk)
+    form = ReasonForm(typed(request))
+    sheet = form.submit(
+        lambda: opening.open_correction(
+            by=Actor.of(request), reason=form.why, test=test, sheet_id=_number(request.POST.get("sheet", ""))
+        )
+    )
+    if sheet is not None:
+        return redirect("sheet", sheet.pk)
     return render(
         request,
         "calibration/sheet_correct_open.html",

@@ -9,12 +9,12 @@ from django.urls import reverse
 
 from calibration import standards as acts
 from calibration.contexts.standard import reliance
-from calibration.forms.standards import CertificateForm, StandardForm, WithdrawForm
+from calibration.forms.standards import CertificateForm, StandardForm
 from calibration.models import Certificate, Standard
 from calibration.queries.uses import recent_uses
 from register import access
 from register.auditing import Actor
-from register.forms.fields import typed
+from register.forms.fields import ReasonForm, typed
 
 STANDARDS = Standard.objects.select_related("plant")
 
@@ -90,7 +90,7 @@ def certificate_new(request: HttpRequest, pk: int) -> HttpResponse:
 def certificate_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     certificate = get_object_or_404(Certificate.objects.select_related("standard__plant"), pk=pk)
     access.in_plant(request, certificate.standard.plant_id, "edit standards")
-    form = WithdrawForm(typed(request))
+    form = ReasonForm(typed(request), asks="Why it is withdrawn")
     if form.submit(lambda: acts.withdraw_certificate(by=Actor.of(request), certificate=certificate, reason=form.why)):
         messages.success(request, f"Certificate {certificate.number} no longer counts.")
         return redirect("standard", certificate.standard_id)

@@ -196,6 +196,16 @@ class RegisterForm(forms.Form):
         return {name: value for name, value in self.cleaned_data.items() if name not in {"reason", *left_out}}
 
 
+class ReasonForm(RegisterForm):
+    """Only the reason of an act that needs nothing else; `asks` is its label."""
+
+    reason = ReasonField()
+
+    def __init__(self, *args: Any, asks: str = "Reason", **kwargs: Any) -> None:
+        super().__init__(*args, **kwargs)
+        self.fields["reason"].label = asks
+
+
 class ChangeForm(RegisterForm):
     """Base of forms that change a thing: a reason, and a look at what others changed since the page was opened."""
 

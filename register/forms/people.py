@@ -5,11 +5,11 @@ from __future__ import annotations
 from typing import Any
 
 from django import forms
-from django.contrib.auth.base_user import AbstractBaseUser
 from django.contrib.auth.forms import AuthenticationForm
 from django.core.exceptions import ValidationError
 from django.core.validators import MaxLengthValidator
 
+from register.beginning import legible_secret
 from register.forms.fields import ReasonField, RegisterForm
 from register.models import Role, User
 from register.models.plant import known_time_zone
@@ -51,9 +51,9 @@ class SignInForm(AuthenticationForm):
             MaxLengthValidator(LONGEST_NAME, f"No sign-in name is longer than {LONGEST_NAME} signs.")
         )
 
-    def confirm_login_allowed(self, user: AbstractBaseUser) -> None:
+    def confirm_login_allowed(self, user: User) -> None:
         super().confirm_login_allowed(user)
-        if isinstance(user, User) and user.is_demonstration and not is_from_this_machine(self.request):
+        if user.is_demonstration and not (self.request and is_from_this_machine(self.request)):
             raise ValidationError(self.error_messages["demonstration"], code="demonstration")
 
 
@@ -87,6 +87,9 @@ class NewPersonForm(PersonForm):
     )
 
     field_order = ("username", "printed_name", "email", "roles", "password", "reason")
+
+    def clean_password(self) -> str:
+        return self.cleaned_data["password"] or legible_secret()
 
 
 class JoiningForm(RegisterForm):
@@ -128,11 +131,8 @@ class GivenPasswordForm(RegisterForm):
     )
     reason = ReasonField()
 
-
-class ReasonForm(RegisterForm):
-    """Only the reason of an act that needs nothing else."""
-
-    reason = ReasonField()
+    def clean_password(self) -> str:
+        return self.cleaned_data["password"] or legible_secret()
 
 
 class FirstAdministratorForm(RegisterForm):

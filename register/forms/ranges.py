@@ -37,12 +37,6 @@ class RangeForm(RegisterForm):
         return self.cleaned_data["low_cut_percent"] or 0.0
 
 
-class WithdrawForm(RegisterForm):
-    """Marks a row as a mistake; it stays to be seen."""
-
-    reason = ReasonField(label="Why it was a mistake")
-
-
 class AcceptFlagForm(RegisterForm):
     until = DateField(label="Accepted up to", help_text="The last day on which the acceptance holds.")
     reason = ReasonField(label="Why it can be accepted")

@@ -8,8 +8,8 @@ from django.shortcuts import redirect, render
 
 from register import access, flagging
 from register.auditing import Actor
-from register.forms.fields import typed
-from register.forms.ranges import AcceptFlagForm, WithdrawForm
+from register.forms.fields import ReasonForm, typed
+from register.forms.ranges import AcceptFlagForm
 
 
 def flag_accept(request: HttpRequest, pk: int) -> HttpResponse:
@@ -26,8 +26,7 @@ def flag_accept(request: HttpRequest, pk: int) -> HttpResponse:
 
 def flag_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     flag = access.get_flag(request, pk, "accept flag")
-    form = WithdrawForm(typed(request))
-    form.fields["reason"].label = "Why it is accepted no longer"
+    form = ReasonForm(typed(request), asks="Why it is accepted no longer")
     done = form.submit(lambda: flagging.withdraw_acceptance(by=Actor.of(request), reason=form.why, flag=flag))
     if done is not None:
         messages.success(request, f"The acceptance at {flag.tag} is withdrawn.")

@@ -8,8 +8,7 @@ from django.shortcuts import get_object_or_404, redirect, render
 
 from register import access, editing, intervening
 from register.auditing import Actor
-from register.forms.fields import typed
-from register.forms.ranges import WithdrawForm
+from register.forms.fields import ReasonForm, typed
 from register.forms.transmitters import HeadForm, InterventionForm
 from register.models import Intervention, Transmitter
 
@@ -53,7 +52,7 @@ def intervention_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     rows = Intervention.objects.select_related("transmitter__maker", "transmitter__plant", "tag", "head_before")
     intervention = get_object_or_404(rows, pk=pk)
     access.in_plant(request, intervention.transmitter.plant_id, "edit register")
-    form = WithdrawForm(typed(request))
+    form = ReasonForm(typed(request), asks="Why it was a mistake")
     done = form.submit(
         lambda: intervening.withdraw_intervention(by=Actor.of(request), reason=form.why, intervention=intervention)
     )

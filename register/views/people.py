@@ -6,23 +6,20 @@ from dataclasses import dataclass
 from typing import Any
 
 from django.contrib import messages
-from django.core.exceptions import PermissionDenied, ValidationError
+from django.core.exceptions import PermissionDenied
 from django.http import HttpRequest, HttpResponse
 from django.shortcuts import redirect, render, resolve_url
-from django.views.decorators.cache import never_cache
 from django.views.decorators.debug import sensitive_post_parameters
 from django.views.decorators.http import require_GET, require_http_methods, require_POST
 
 from register import access, entering, membership
 from register.auditing import Actor
-from register.beginning import legible_secret
-from register.forms.fields import RegisterForm
+from register.forms.fields import ReasonForm, RegisterForm, typed
 from register.forms.people import (
     GivenPasswordForm,
     JoiningForm,
     NewPersonForm,
     PersonForm,
-    ReasonForm,
     RolesForm,
 )
 from register.fragments import answer
@@ -73,23 +70,20 @@ def people(request: HttpRequest) -> HttpResponse:
 def new(request: HttpRequest) -> HttpResponse:
     """A new person with roles in the shown plant."""
     plant = access.chosen_plant(request, PERMISSION)
-    form = NewPersonForm(request.POST or None)
-    if request.method == "POST" and form.is_valid():
-        password = form.cleaned_data["password"] or legible_secret()
-        try:
-            person = membership.create_person(
-                by=Actor.of(request),
-                reason=form.cleaned_data["reason"],
-                plant=plant,
-                values=form.values("roles", "password"),
-                roles=form.cleaned_data["roles"],
-                password=password,
-            )
-        except ValidationError as error:
-            form.refuse(error)
-        else:
-            request.session[JUST_GIVEN] = [person.pk, password]
-            return redirect("person", person.pk)
+    form = NewPersonForm(typed(request))
+    person = form.submit(
+        lambda: membership.create_person(
+            by=Actor.of(request),
+            reason=form.why,
+            plant=plant,
+            values=form.values("roles", "password"),
+            roles=form.cleaned_data["roles"],
+            password=form.cleaned_data["password"],
+        )
+    )
+    if person is not None:
+        request.session[JUST_GIVEN] = [person.pk, form.cleaned_data["password"]]
+        return redirect("person", person.pk)
     return _form(request, form, f"Add a person to {plant}", "Add the person", "people", plant=plant)
 
 
@@ -97,26 +91,22 @@ def new(request: HttpRequest) -> HttpResponse:
 def join(request: HttpRequest) -> HttpResponse:
     """Roles in the shown plant for somebody of another plant."""
     plant = access.chosen_plant(request, PERMISSION)
-    form = JoiningForm(request.POST or None)
-    if request.method == "POST" and form.is_valid():
-        person = form.cleaned_data["username"]
-        try:
-            membership.set_roles(
-                by=Actor.of(request),
-                reason=form.cleaned_data["reason"],
-                person=person,
-                plant=plant,
-                roles=form.cleaned_data["roles"],
-            )
-        except ValidationError as error:
-            form.refuse(error)
-        else:
-            messages.success(request, f"{person} now has roles in {plant}.")
-            return redirect("person", person.pk)
+    form = JoiningForm(typed(request))
+    person = form.submit(
+        lambda: membership.set_roles(
+            by=Actor.of(request),
+            reason=form.why,
+            person=form.cleaned_data["username"],
+            plant=plant,
+            roles=form.cleaned_data["roles"],
+        )
+    )
+    if person is not None:
+        messages.success(request, f"{person} now has roles in {plant}.")
+        return redirect("person", person.pk)
     return _form(request, form, f"Add somebody of another plant to {plant}", "Give the roles", "people", plant=plant)
 
 
-@never_cache
 @require_GET
 def person(request: HttpRequest, pk: int) -> HttpResponse:
     """One person: names, roles in each plant, whether he may sign in."""
@@ -139,16 +129,11 @@ def edit(request: HttpRequest, pk: int) -> HttpResponse:
     """Change names and address."""
     shown = _governed(request, pk)
     initial = {name: getattr(shown, name) for name in membership.FIELDS}
-    form = PersonForm(request.POST or None, initial=initial)
-    if request.method == "POST" and form.is_valid():
-        try:
-            membership.edit_person(
-                by=Actor.of(request), reason=form.cleaned_data["reason"], person=shown, values=form.values()
-            )
-        except ValidationError as error:
-            form.refuse(error)
-        else:
-            return redirect("person", pk)
+    form = PersonForm(typed(request), initial=initial)
+    if form.submit(
+        lambda: membership.edit_person(by=Actor.of(request), reason=form.why, person=shown, values=form.values())
+    ):
+        return redirect("person", pk)
     return _form(request, form, f"Edit {shown}", "Save", "person", pk)
 
 
@@ -158,21 +143,14 @@ def roles(request: HttpRequest, pk: int, code: str) -> HttpResponse:
     shown = access.get_person(request, pk)
     plant = access.get_plant(request, code, PERMISSION)
     held = list(shown.memberships.filter(plant=plant).values_list("role", flat=True))
-    form = RolesForm(request.POST or None, initial={"roles": held})
-    if request.method == "POST" and form.is_valid():
-        try:
-            membership.set_roles(
-                by=Actor.of(request),
-                reason=form.cleaned_data["reason"],
-                person=shown,
-                plant=plant,
-                roles=form.cleaned_data["roles"],
-            )
-        except ValidationError as error:
-            form.refuse(error)
-        else:
-            messages.success(request, f"The roles of {shown} in {plant} are changed.")
-            return redirect(access.address_in(plant, "people"))
+    form = RolesForm(typed(request), initial={"roles": held})
+    if form.submit(
+        lambda: membership.set_roles(
+            by=Actor.of(request), reason=form.why, person=shown, plant=plant, roles=form.cleaned_data["roles"]
+        )
+    ):
+        messages.success(request, f"The roles of {shown} in {plant} are changed.")
+        return redirect(access.address_in(plant, "people"))
     return _form(request, form, f"Roles of {shown} in {plant}", "Change the roles", "person", pk, plant=plant)
 
 
@@ -183,19 +161,15 @@ def password(request: HttpRequest, pk: int) -> HttpResponse:
     shown = _governed(request, pk)
     if shown.pk == access.person(request).pk:
         return redirect("password")
-    form = GivenPasswordForm(request.POST or None)
-    if request.method == "POST" and form.is_valid():
-        given = form.cleaned_data["password"] or legible_secret()
-        try:
-            membership.set_password(
-                by=Actor.of(request), reason=form.cleaned_data["reason"], person=shown, password=given
-            )
-        except ValidationError as error:
-            form.refuse(error)
-        else:
-            entering.unlock(by=Actor.of(request), person=shown)
-            request.session[JUST_GIVEN] = [shown.pk, given]
-            return redirect("person", pk)
+    form = GivenPasswordForm(typed(request))
+    if form.submit(
+        lambda: membership.set_password(
+            by=Actor.of(request), reason=form.why, person=shown, password=form.cleaned_data["password"]
+        )
+    ):
+        entering.unlock(by=Actor.of(request), person=shown)
+        request.session[JUST_GIVEN] = [shown.pk, form.cleaned_data["password"]]
+        return redirect("person", pk)
     return _form(request, form, f"New password for {shown}", "Give the password", "person", pk)
 
 
@@ -203,15 +177,10 @@ def password(request: HttpRequest, pk: int) -> HttpResponse:
 def deactivate(request: HttpRequest, pk: int) -> HttpResponse:
     """Let a person sign in no more."""
     shown = _governed(request, pk)
-    form = ReasonForm(request.POST or None)
-    if request.method == "POST" and form.is_valid():
-        try:
-            membership.deactivate(by=Actor.of(request), reason=form.cleaned_data["reason"], person=shown)
-        except ValidationError as error:
-            form.refuse(error)
-        else:
-            messages.success(request, f"{shown} can sign in no more.")
-            return redirect("person", pk)
+    form = ReasonForm(typed(request))
+    if form.submit(lambda: membership.deactivate(by=Actor.of(request), reason=form.why, person=shown)):
+        messages.success(request, f"{shown} can sign in no more.")
+        return redirect("person", pk)
     return _form(request, form, f"Deactivate {shown}", "Deactivate", "person", pk, danger=True)
 
 
@@ -219,9 +188,8 @@ def deactivate(request: HttpRequest, pk: int) -> HttpResponse:
 def reactivate(request: HttpRequest, pk: int) -> HttpResponse:
     """Let a person sign in again."""
     shown = _governed(request, pk)
-    form = ReasonForm(request.POST or None)
-    if request.method == "POST" and form.is_valid():
-        membership.reactivate(by=Actor.of(request), reason=form.cleaned_data["reason"], person=shown)
+    form = ReasonForm(typed(request))
+    if form.submit(lambda: membership.reactivate(by=Actor.of(request), reason=form.why, person=shown)):
         messages.success(request, f"{shown} can sign in again.")
         return redirect("person", pk)
     return _form(request, form, f"Let {shown} sign in again", "Reactivate", "person", pk)

@@ -11,8 +11,8 @@ from django.shortcuts import get_object_or_404, redirect, render
 
 from register import access, reranging, verdicts
 from register.auditing import Actor
-from register.forms.fields import typed
-from register.forms.ranges import RangeForm, WithdrawForm
+from register.forms.fields import ReasonForm, typed
+from register.forms.ranges import RangeForm
 from register.fragments import answer
 from register.models import Range, Tag
 from register.storing import fill
@@ -40,7 +40,7 @@ def tag_range(request: HttpRequest, pk: int) -> HttpResponse:
 def range_withdraw(request: HttpRequest, pk: int) -> HttpResponse:
     range_ = get_object_or_404(Range.objects.select_related("tag__plant", "person"), pk=pk)
     access.in_plant(request, range_.tag.plant_id, "re-range")
-    form = WithdrawForm(typed(request))
+    form = ReasonForm(typed(request), asks="Why it was a mistake")
     done = form.submit(lambda: reranging.withdraw_range(by=Actor.of(request), reason=form.why, range_=range_))
     if done is not None:
         messages.success(request, f"The range {done} from {done.effective_from} is withdrawn.")
