@@ -7,8 +7,8 @@ from typing import Any
 
 from django.core.management.base import BaseCommand, CommandError
 
+from calibration.management import plants
 from calibration.recomputing import Looked, differences, recompute
-from register.models import Plant
 
 
 class Command(BaseCommand):
@@ -19,20 +19,15 @@ class Command(BaseCommand):
 
     def add_arguments(self, parser: argparse.ArgumentParser) -> None:
         parser.add_argument("--check", action="store_true", help="compare only")
-        parser.add_argument("--plant", help="code of one plant; all without it")
+        plants.add_option(parser)
         parser.add_argument(
             "--figures", action="store_true", help="judge every run anew, not only those of an older method"
         )
         parser.add_argument("--most", type=int, default=50, help="differences printed (default 50)")
 
     def handle(self, *args: Any, **options: Any) -> None:
-        plants = Plant.objects.order_by("code")
-        if options["plant"]:
-            plants = plants.filter(code=options["plant"])
-            if not plants:
-                raise CommandError(f"There is no plant “{options['plant']}”.")
         found = 0
-        for plant in plants:
+        for plant in plants.chosen(options["plant"]):
             looked = Looked()
             if not options["check"]:
                 looked = recompute(plant, figures=options["figures"])

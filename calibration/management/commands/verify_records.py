@@ -7,8 +7,8 @@ from typing import Any
 
 from django.core.management.base import BaseCommand, CommandError
 
+from calibration.management import plants
 from calibration.queries.verifying import Checked, verify
-from register.models import Plant
 
 
 class Command(BaseCommand):
@@ -19,17 +19,12 @@ class Command(BaseCommand):
     )
 
     def add_arguments(self, parser: argparse.ArgumentParser) -> None:
-        parser.add_argument("--plant", help="code of one plant; all without it")
+        plants.add_option(parser)
         parser.add_argument("--most", type=int, default=20, help="findings printed of each kind (default 20)")
 
     def handle(self, *args: Any, **options: Any) -> None:
-        plants = Plant.objects.order_by("code")
-        if options["plant"]:
-            plants = plants.filter(code=options["plant"])
-            if not plants:
-                raise CommandError(f"There is no plant “{options['plant']}”.")
         breaks = differences = 0
-        for plant in plants:
+        for plant in plants.chosen(options["plant"]):
             checked = Checked()
             for finding in verify(plant, checked):
                 if finding.is_break:
