@@ -9,6 +9,7 @@ from dataclasses import dataclass, field
 
 from django.db import transaction
 from django.utils import timezone
+from django.utils.text import capfirst
 
 from calibration.arriving import readable
 from calibration.models import Entry, Run, Sheet
@@ -71,7 +72,7 @@ def add_entries(*, by: Actor, sheet_id: uuid.UUID, entries: Sequence[NewEntry]) 
         if (old := known.get(new.id)) is not None:
             _told_again(stored, sheet, old, new)
             continue
-        why = _refusal(draft, new, used)
+        why = capfirst(_refusal(draft, new, used))
         if why and draft.text(new.field) == new.text.strip() and new.field in draft.fields:
             # It came another way before the stage was closed: nothing is lost, nothing needs to be told.
             stored.saved.append(new.id)

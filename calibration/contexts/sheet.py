@@ -127,7 +127,11 @@ class Viewer:
     person: User
     errors: Mapping[str, Sequence[str]] = field(default_factory=dict)
     typed: Mapping[str, str] = field(default_factory=dict)
-    met: set[str] = field(default_factory=set)
+    met: dict[str, FieldView] = field(default_factory=dict)
+
+    def meets(self, view: FieldView) -> FieldView:
+        self.met[view.name] = view
+        return view
 
 
 def steps(draft: Draft) -> list[Step]:
@@ -171,9 +175,8 @@ def field_view(draft: Draft, name: str, viewer: Viewer, error: str = "") -> Fiel
     kept = draft.fields.get(name)
     told = error or "; ".join(viewer.errors.get(name, ())) or draft.problems.get(name, "")
     ident = "f-" + name.replace(".", "-")
-    viewer.met.add(name)
     if kept is None:
-        return FieldView(name, ident, viewer.typed.get(name, ""), "", told)
+        return viewer.meets(FieldView(name, ident, viewer.typed.get(name, ""), "", told))
     entry = kept.entry
     note = (
         ""
@@ -181,7 +184,8 @@ def field_view(draft: Draft, name: str, viewer: Viewer, error: str = "") -> Fiel
         else (f"{entry.person}, {clock(entry.received_at, draft.zone)}")
     )
     text = viewer.typed.get(name, kept.text)
-    return FieldView(name, ident, text, str(entry.id), told, note, _versions(draft, kept, viewer.person))
+    versions = _versions(draft, kept, viewer.person)
+    return viewer.meets(FieldView(name, ident, text, str(entry.id), told, note, versions))
 
 
 def reading_views(draft: Draft, kind: str, viewer: Viewer, *, repeat: str = "") -> list[ReadingView]:

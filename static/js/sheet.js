@@ -386,6 +386,8 @@
     if (oldest && Date.now() - Date.parse(oldest.typed_at) > 2 * RETRY_MS) flush();
   }, RETRY_MS);
 
+  // The answer to a step that was not gone on with stands at the address of the step; loaded again, it is the sheet.
+  if (location.pathname !== sheet.dataset.page) history.replaceState(null, "", sheet.dataset.page);
   announce();
   takeUp();
 })();

@@ -173,7 +173,7 @@ def test_what_the_server_did_not_take_stays_on_the_tablet_until_it_is_read(
     page.context.set_offline(False)
     for _ in range(2):
         refused = page.locator("#refused")
-        expect(refused).to_contain_text("as-found, reading 3, measured", timeout=15000)
+        expect(refused).to_contain_text("reading 3, measured", timeout=15000)
         expect(refused).to_contain_text("12.345")
         expect(page.locator("#saving")).to_contain_text("All saved")
         page.reload()
@@ -208,6 +208,9 @@ def test_a_step_with_something_not_taken_shows_it_in_its_field(
         page.get_by_role("button", name="It is back in service").click()
     expect(page.locator("[name=remarks]")).to_have_value("x" * 2001)
     expect(page.get_by_role("alert").filter(has_text="Not gone on")).to_be_visible()
+    page.reload()
+    assert page.url == f"{live_server.url}/sheets/{device.sheet.pk}/"
+    expect(page.locator("#refused .typed")).to_have_text("x" * 2001)
     assert Sheet.objects.get().stage == "return"
     page.fill("[name=remarks]", "short")
     with page.expect_navigation():

@@ -14,7 +14,7 @@ def test_no_as_left_reading_is_taken_before_as_found_is_closed(tablet: Device) -
     to_as_found(tablet)
     stored = tablet.send(tablet.entry("as-left.1.measured", "4.00"))
     assert stored.refused[0][1] == (
-        "as-left, reading 1, measured: the as-left run opens after the as-found run is closed and the adjustment is "
+        "As-left, reading 1, measured: the as-left run opens after the as-found run is closed and the adjustment is "
         "recorded."
     )
     assert not Entry.objects.filter(field__startswith="as-left").exists()

@@ -525,3 +525,23 @@ def test_every_button_and_choice_of_the_surroundings_says_of_what(client: Client
     assert len(names) == len(set(names)) == 6
     assert "Change the sign of ambient temperature" in names
     assert "Unit of ambient temperature" in names
+
+
+def test_the_top_of_a_long_page_says_how_many_fields_are_to_mend_and_leads_to_the_first(
+    client: Client, tablet: Device
+) -> None:
+    to_as_found(tablet)
+    texts = run_texts("as-found") | {"as-found.5.measured": "two", "as-found.7.measured": "three"}
+    text = send(client, tablet.sheet, "close-as-found", texts).content.decode()
+    assert 'Not gone on yet: <a href="#f-as-found-5-measured">2 fields</a> to mend below.' in text
+    assert 'id="f-as-found-5-measured"' in text
+    assert "Not gone on" not in page(client, tablet.sheet)
+
+
+def test_a_reading_can_be_repeated_also_after_a_run_was_not_closed(client: Client, tablet: Device) -> None:
+    to_as_found(tablet)
+    texts = {name: text for name, text in run_texts("as-found").items() if ".9." not in name}
+    text = send(client, tablet.sheet, "close-as-found", texts).content.decode()
+    links = re.findall(r'href="([^"#]*)#r-as-found-3-1">Repeat this reading', text)
+    assert len(links) == 1
+    assert 'name="as-found.3-1.measured"' in client.get(links[0]).content.decode()
