@@ -74,7 +74,7 @@ _WANTED = {
 class ExceptionForm(RegisterForm):
     """Why a lapsed certificate may be relied on, and who answers for it."""
 
-    username = forms.CharField(label="User name of the person who allows it", max_length=150)
+    username = forms.CharField(label="Sign-in name of the person who allows it", max_length=150)
     password = PasswordField(label="His password")
     reason = ReasonField(label="Why it may be relied on")
 
