@@ -30,10 +30,14 @@ _WORDS = {
 
 @dataclass(frozen=True, slots=True)
 class Result:
-    """What is said of one reading, ready to print; `in_input` only where the tolerance is stated in the input."""
+    """What is said of one reading, ready to print.
+
+    `in_input` only where the tolerance is stated in the input; `input_error` is the same without its unit.
+    """
 
     error: str
     in_input: str
+    input_error: str
     expected: str
     limit: str
     limit_unit: str
@@ -69,6 +73,7 @@ def result_of(judged: ReadingJudgement, index: int, *, up: bool | None = None) -
     return Result(
         error=said.output_error,
         in_input=stated,
+        input_error=said.error if known else "",
         expected=fixed(float(judged.limits.ideal_ma[index]), max(DECIMALS_MA, places_of(said.output_error))),
         limit=said.limit,
         limit_unit=said.unit,

@@ -275,6 +275,7 @@ def _run_view(read: ReadRun, basis: Basis, zone: ZoneInfo) -> RunView:
             "measured": _decimals([row.measured for row in rows]),
             "digital": _decimals([row.digital for row in rows]),
             "error": _decimals([row.result.error for row in rows if row.result]),
+            "input_error": _decimals([row.result.input_error for row in rows if row.result]),
         },
         by_input=tolerance.quantity is Quantity.INPUT,
         with_digital=any(row.digital for row in rows),

@@ -12,7 +12,7 @@ from calibration.metrology.pointlist import UP, percent_text
 from calibration.metrology.signal import SignalState, classify, saturated
 from calibration.metrology.tolerance import Quantity
 from calibration.metrology.verdicts import ReadingJudgement, Verdict
-from calibration.metrology.writing import beside, plain
+from calibration.metrology.writing import beside, fixed, places_for, plain
 
 
 @dataclass(frozen=True)
@@ -44,15 +44,19 @@ def shown(reading: ReadingJudgement, index: int) -> Shown:
     """How error and limit of a reading are written, so that a reader comes to the same verdict."""
     error, judged = float(reading.error[index]), float(reading.judged_error[index])
     lower, upper = -float(reading.limits.lower[index]), float(reading.limits.upper[index])
-    output_error, near = beside(error, upper if error > 0.0 else lower)
+    near, far = (upper, lower) if error > 0.0 else (lower, upper)
     if reading.tolerance.quantity is Quantity.INPUT:
         judged_error, limit = beside(judged, float(reading.judged_limit[index]))
-        return Shown(judged_error, output_error, f"±{limit}", f"±{limit}", reading.unit)
-    if abs(lower - upper) <= 1e-9 * max(abs(lower), abs(upper), 1.0):
-        return Shown(output_error, output_error, f"±{near}", f"±{near}", reading.unit)
-    sides = [near if (error > 0.0) == above else plain(side, 4) for side, above in ((lower, False), (upper, True))]
-    side = f"+{near}" if error > 0.0 else f"−{near}"
-    return Shown(output_error, output_error, f"−{sides[0]} to +{sides[1]}", side, reading.unit)
+        return Shown(judged_error, beside(error, near)[0], f"±{limit}", f"±{limit}", reading.unit)
+    places = places_for(near)
+    if fixed(lower, places) == fixed(upper, places):
+        output_error, limit = beside(error, near)
+        return Shown(output_error, output_error, f"±{limit}", f"±{limit}", reading.unit)
+    output_error, limit = beside(error, near, more=0)
+    other = plain(far, 3)
+    if error > 0.0:
+        return Shown(output_error, output_error, f"−{other} to +{limit}", f"+{limit}", reading.unit)
+    return Shown(output_error, output_error, f"−{limit} to +{other}", f"−{limit}", reading.unit)
 
 
 def _error_and_limit(reading: ReadingJudgement, index: int) -> tuple[str, str]:

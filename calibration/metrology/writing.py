@@ -34,13 +34,15 @@ def places_for(limit: float) -> int:
     return max(0, 2 - math.floor(math.log10(limit))) if math.isfinite(limit) and limit > 0.0 else 3
 
 
-def beside(error: float, limit: float) -> tuple[str, str]:
+def beside(error: float, limit: float, more: int = 1) -> tuple[str, str]:
     """An error and its limit as a reader compares them.
 
     Parameters
     ----------
     error, limit : float
         Both in one unit; the limit is not negative.
+    more : int
+        Places that the limit has more than the error: one for a limit that somebody stated.
 
     Returns
     -------
@@ -55,7 +57,7 @@ def beside(error: float, limit: float) -> tuple[str, str]:
     start = places_for(limit)
     outside = abs(error) > limit * (1.0 + _SHARE)
     for places in range(start, start + 9):
-        shown = _rounded(limit, max(places, start + 1))
+        shown = _rounded(limit, max(places, start + more))
         if (abs(_rounded(error, places)) > shown) == outside:
             break
     return fixed(error, places, signed=True), _without_zeros(f"{shown:f}")

@@ -152,9 +152,10 @@ def test_limits_that_differ_above_and_below_are_both_shown() -> None:
     )
     above, below = (result_now(basis, "as-found", 1.0, 4 + 16 * (0.1**0.5 + off)) for off in (0.01, -0.01))
     # √0.11 − √0.1 = 1.543 %, √0.1 − √0.09 = 1.623 %; 0.1 % added.
-    assert above.limit == below.limit == "−1.723 to +1.643"
-    why = judge(dataclasses.replace(basis, points=""), "as-found", [Point(1.0, 4 + 16 * 0.33, 1)]).judgement.why
-    assert why.endswith("+1.38 % of span within +1.643 % of span.")
+    assert above.limit == below.limit == "−1.72 to +1.64"
+    taken = [Point(1.0, 4 + 16 * 0.33, 1), Point(5.0, 4 + 16 * 0.5**0.5, 1), Point(10.0, 20.0, 1)]
+    why = judge(dataclasses.replace(basis, points=""), "as-found", taken).judgement.why
+    assert why.endswith("+1.38 % of span within +1.64 % of span.")
 
 
 def test_an_output_held_at_4_ma_is_not_called_the_edge_of_the_signal() -> None:
