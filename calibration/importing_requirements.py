@@ -45,7 +45,7 @@ def import_requirements(
 def _import(by: Actor, reason: str, plant: Plant, table: Table, matching: Matching, seen: str) -> Proposal:
     lock_tags(plant, table.column(matching["tag"]))
     today = plant.today()
-    proposal = propose(plant=plant, table=table, matching=matching, today=today)
+    proposal = propose(plant=plant, table=table, matching=matching, today=today, by=by.person)
     if proposal.complaints or proposal.digest() != seen:
         raise ChangedMeanwhileError
     act = Act(by, reason)

@@ -147,6 +147,11 @@ def may(user: User, permission: str, plant_id: int) -> bool:
     return bool(PERMISSIONS[permission] & roles(user).get(plant_id, set()))
 
 
+def acts_for(user: User | None, permission: str, plant_id: int) -> bool:
+    """Whether an act may go on that needs a further permission; what the site itself does needs none."""
+    return user is None or may(user, permission, plant_id)
+
+
 def may_anywhere(user: User, permission: str) -> bool:
     """Whether a person has a permission in at least one plant."""
     return any(PERMISSIONS[permission] & held for held in roles(user).values())

@@ -64,7 +64,7 @@ def import_register(*, by: Actor, reason: str, plant: Plant, table: Table, match
 @transaction.atomic
 def _import(by: Actor, reason: str, plant: Plant, table: Table, matching: Matching, seen: str) -> Proposal:
     lock_tags(plant, table.column(matching["tag"]) if "tag" in matching else ())
-    proposal = propose(plant=plant, table=table, matching=matching, today=plant.today())
+    proposal = propose(plant=plant, table=table, matching=matching, today=plant.today(), by=by.person)
     if proposal.complaints or proposal.digest() != seen:
         raise ChangedMeanwhileError
     act = Act(by, reason)

@@ -38,6 +38,7 @@ SPEAK_SQL = {
     "register.backing_up": "copies tables as they are",
     "register.restoring": "fills tables as they were",
     "register.bulk": "many plain rows at once for an act",
+    "register.membership": "an empty table has no row that a second beginning could wait for",
     "calibration.queries.listing": "compiling the statements of lists took several times longer than answering them",
 }
 #: Modules that write without leaving audit entries, and why nothing is missing in the trail.

@@ -26,7 +26,7 @@ from register.imports.cells import unknown
 from register.imports.columns import Cells, Complaint, Matching, read_cells
 from register.imports.known import folded
 from register.imports.tables import Table
-from register.models import Fitting, Plant, Tag, Transmitter
+from register.models import Fitting, Plant, Tag, Transmitter, User
 from register.searching import key
 
 ANSWERS: Final = ("performed_by", "remarks", "could_not_test")
@@ -99,8 +99,13 @@ class _Draft:
 
 
 @many_objects_alive()
-def propose(*, plant: Plant, table: Table, matching: Matching, today: datetime.date) -> Proposal:
-    """Read past tests against the register and the tests that are recorded; reads only."""
+def propose(
+    *, plant: Plant, table: Table, matching: Matching, today: datetime.date, by: User | None = None
+) -> Proposal:
+    """Read past tests against the register and the tests that are recorded; reads only.
+
+    Whoever may import may transcribe tests: `by` is taken as by the other imports, and decides nothing.
+    """
     from register.engineering.units import prepare
 
     prepare()

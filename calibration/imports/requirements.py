@@ -16,6 +16,7 @@ from calibration.imports.names import Tags
 from calibration.imports.requirement_columns import COLUMNS, LABELS, OF_REQUIREMENT
 from calibration.models import PointList, Requirement, ToleranceForm
 from calibration.scheduling import check_requirement
+from register import access
 from register.bulk import many_objects_alive
 from register.changes import object_to_backdating
 from register.imports.cells import unknown
@@ -23,7 +24,7 @@ from register.imports.columns import Cells, Complaint, Matching, read_cells
 from register.imports.drafts import Change
 from register.imports.known import folded
 from register.imports.tables import Table
-from register.models import Plant, Tag
+from register.models import Plant, Tag, User
 from register.searching import key
 
 BEFORE: Final = (
@@ -80,17 +81,27 @@ class _Draft:
     wanted: list[Wanted] = field(default_factory=list)
     unchanged: int = 0
     seen: dict[int, int] = field(default_factory=dict)
+    may_set: bool = True
 
 
 @many_objects_alive()
-def propose(*, plant: Plant, table: Table, matching: Matching, today: datetime.date) -> Proposal:
-    """Read requirements against those that are there; reads only, with a fixed number of queries a thousand rows."""
+def propose(
+    *, plant: Plant, table: Table, matching: Matching, today: datetime.date, by: User | None = None
+) -> Proposal:
+    """Read requirements against those that are there; reads only, with a fixed number of queries a thousand rows.
+
+    Parameters
+    ----------
+    by : User, optional
+        Who brings them: rows that change a requirement are refused where he may not set one by hand.
+    """
     from register.engineering.units import prepare
 
     prepare()
     cells = read_cells(table, matching, COLUMNS)
     tags = Tags.named(plant, filter(None, cells.values["tag"]))
     draft = _Draft(cells, plant, today, tags, list(PointList.objects.filter(plant=plant)), _there(tags.rows.values()))
+    draft.may_set = access.acts_for(by, "set requirement", plant.pk)
     for row in range(len(table.rows)):
         if row not in table.faults:
             _propose(draft, row)
@@ -220,6 +231,15 @@ def _compare(
             "requirement_from",
             f"{tag} has this requirement since {in_force.effective_from}: another day alone changes nothing. Leave the "
             "day empty.",
+        )
+        return
+    if there and not draft.may_set:
+        first = next(name for name in OF_REQUIREMENT if cells.values[name][row] is not None)
+        cells.complain(
+            row,
+            first,
+            f"{tag} has a requirement already: none of your roles here lets you set another. Leave it out, or let an "
+            "instrument engineer bring it in.",
         )
         return
     if day is None and not there and tag.current_fitting is not None:

@@ -63,6 +63,8 @@ class Draft:
     cells: Cells
     known: Known
     today: datetime.date
+    may_rerange: bool = True
+    may_fit: bool = True
     rows: list[Row] = field(default_factory=list)
     new_areas: dict[str, Area] = field(default_factory=dict)
     blank_tag: Tag = field(init=False)

@@ -11,7 +11,7 @@ from register.auditing import Actor
 from register.imports.columns import Column, Complaint, Matching
 from register.imports.drafts import Change
 from register.imports.tables import Table
-from register.models import Plant
+from register.models import Plant, User
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,9 +30,11 @@ class Told:
 
 
 class Proposes(Protocol):
-    """Reads a file against what is there."""
+    """Reads a file against what is there; what `by` may not do by hand he may not do by a file either."""
 
-    def __call__(self, *, plant: Plant, table: Table, matching: Matching, today: datetime.date) -> Any: ...
+    def __call__(
+        self, *, plant: Plant, table: Table, matching: Matching, today: datetime.date, by: User | None = None
+    ) -> Any: ...
 
 
 class Imports(Protocol):

@@ -68,6 +68,14 @@ def propose_fitting(draft: Draft, row: Row, day: datetime.date | None) -> None:
         there = f" in place of {current.transmitter}" if current else ""
         draft.complain(row, "fitted_on", f"{device} would be fitted at {tag}{there}: say on which day.")
         return
+    if current is not None and not draft.may_fit:
+        draft.complain(
+            row,
+            "serial",
+            f"{current.transmitter} is fitted at {tag}: none of your roles here lets you swap it. Leave the "
+            "transmitter out, or let an instrument engineer bring it in.",
+        )
+        return
     _check_day(draft, row, day, current)
     if device.whereabouts == Whereabouts.SCRAPPED:
         draft.complain(row, "serial", f"{device} is scrapped: it cannot be fitted again.")

@@ -14,6 +14,10 @@ from register.imports.sheet import OF_RANGE
 from register.models import Range, ReferenceKind, Transmitter
 from register.reranging import BEFORE
 
+NOT_BY_YOU = (
+    "{} has the range {} already: none of your roles here lets you re-range. Leave the range out, or let an instrument "
+    "engineer bring it in."
+)
 DIFFERENTIAL_ONLY = "A square root is taken of a differential pressure only; this range is {}."
 
 
@@ -40,6 +44,10 @@ def propose_range(draft: Draft, row: Row, given: dict[str, Any]) -> None:
             f"{tag} has this range since {current.effective_from}: another day alone changes nothing. "
             "Leave the day empty.",
         )
+        return
+    if there and not draft.may_rerange:
+        first = next(name for name in OF_RANGE if name in given)
+        draft.complain(row, first, NOT_BY_YOU.format(tag, current or there[-1]))
         return
     day = day or _first_day(row, there)
     if day is None:

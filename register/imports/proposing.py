@@ -9,6 +9,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any, Final
 
+from register import access
 from register.bulk import many_objects_alive
 from register.imports.columns import Complaint, Matching, read_cells
 from register.imports.drafts import Change, Draft, Row
@@ -18,7 +19,7 @@ from register.imports.proposed_ranges import propose_range
 from register.imports.proposed_tags import propose_tag
 from register.imports.sheet import BY_KEY, COLUMNS, DEVICE, OF_RANGE, OF_TAG
 from register.imports.tables import Table
-from register.models import Area, Plant
+from register.models import Area, Plant, User
 from register.searching import key
 
 _TAG: Final = ("area", "area_name", *OF_TAG)
@@ -85,14 +86,24 @@ class Proposal:
 
 
 @many_objects_alive()
-def propose(*, plant: Plant, table: Table, matching: Matching, today: datetime.date) -> Proposal:
-    """Read a file against the register; reads only, with a number of queries that grows by two thousand rows each."""
+def propose(
+    *, plant: Plant, table: Table, matching: Matching, today: datetime.date, by: User | None = None
+) -> Proposal:
+    """Read a file against the register; reads only, with a number of queries that grows by two thousand rows each.
+
+    Parameters
+    ----------
+    by : User, optional
+        Who brings it: rows that change a range or swap a transmitter are refused where he may not do so by hand.
+    """
     from register.engineering.units import prepare
 
     prepare()
     cells = read_cells(table, matching, COLUMNS)
     numbers, serials = cells.values["tag"], cells.values["serial"]
     draft = Draft(cells, known(plant, filter(None, numbers), filter(None, serials)), today)
+    draft.may_rerange = access.acts_for(by, "re-range", plant.pk)
+    draft.may_fit = access.acts_for(by, "fit", plant.pk)
     tags_seen: dict[str, int] = {}
     devices_seen: dict[tuple[int, str], int] = {}
     for place, number in enumerate(numbers):

@@ -83,7 +83,7 @@ def match(kind: Kind, request: HttpRequest, token: uuid.UUID) -> HttpResponse:
             form.add_error(None, lacking)
         else:
             kept.matching = form.matching
-            _check(kind, kept, plant, table)
+            _check(kind, request, kept, plant, table)
             return redirect(f"import-{kind.name}-check", kept.token)
     context = {
         "kind": kind,
@@ -125,7 +125,7 @@ def bring_in(kind: Kind, request: HttpRequest, token: uuid.UUID) -> HttpResponse
             seen=kept.check["digest"],
         )
     except ChangedMeanwhileError as error:
-        _check(kind, kept, plant, table)
+        _check(kind, request, kept, plant, table)
         form.refuse(error)
         return _show_check(kind, request, kept, plant, form, status=409)
     except ValidationError as error:
@@ -166,9 +166,11 @@ def _kept(kind: Kind, request: HttpRequest, token: uuid.UUID) -> tuple[uploads.K
     return kept, plant
 
 
-def _check(kind: Kind, kept: uploads.Kept, plant: Plant, table: Table) -> None:
+def _check(kind: Kind, request: HttpRequest, kept: uploads.Kept, plant: Plant, table: Table) -> None:
     """Work out what the file would do now, and keep it with the file."""
-    proposal = kind.propose(plant=plant, table=table, matching=kept.matching, today=plant.today())
+    proposal = kind.propose(
+        plant=plant, table=table, matching=kept.matching, today=plant.today(), by=access.person(request)
+    )
     kept.check = {**asdict(kind.tell(proposal)), "counted_in": table.counted_in}
     kept.store()
 

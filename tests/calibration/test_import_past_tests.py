@@ -413,7 +413,7 @@ def test_past_tests_are_brought_in_on_pages(cast: Cast, plant: Plant, client_as:
     check = client.post(match, columns)["Location"]
     page = client.get(check).content.decode()
     assert "1 new" in page and "as-found fail" in page and "0 to 10 bar gauge, linear; ±0.5 % of span" in page
-    assert client.post(check.replace("check/", "bring-in/"), {"reason": "binders"})["Location"] == "/tests/"
+    assert client.post(check.replace("check/", "bring-in/"), {"reason": "binders"})["Location"] == "/tests/?plant=north"
     test = the_test()
     shown = client.get(f"/tests/{test.pk}/").content.decode()
     assert "transcribed, unsigned" in shown

@@ -166,6 +166,22 @@ def test_a_check_that_has_gone_stale_is_refused(cast: Cast, plant: Plant, engine
     assert Requirement.objects.count() == 1
 
 
+def test_who_may_not_set_a_requirement_by_hand_changes_none_by_a_file(cast: Cast, plant: Plant) -> None:
+    required(plant, cast.administrator, SOUND)
+    read = table(
+        SOUND | {"Interval (months)": "6", "Requirement from": "2026-01-01", "Reason for the requirement": "drifts"}
+    )
+    asked = {"plant": plant, "table": read, "matching": guessed(read.head, requirement_columns.COLUMNS)}
+    [(_, _, words)] = said(requirements.propose(**asked, today=plant.today(), by=cast.administrator))
+    assert words.startswith("PT-2041 has a requirement already: none of your roles here lets you set another.")
+    seen = requirements.propose(**asked, today=plant.today(), by=cast.engineer)
+    assert said(seen) == []
+    with pytest.raises(ChangedMeanwhileError):
+        import_requirements(by=Actor(cast.administrator), reason="x", **asked, seen=seen.digest())
+    import_requirements(by=Actor(cast.engineer), reason="x", **asked, seen=seen.digest())
+    assert Requirement.objects.count() == 2
+
+
 def test_a_register_that_also_holds_requirements_leads_on_to_their_import(
     cast: Cast, client_as: Callable[[User], Client]
 ) -> None:

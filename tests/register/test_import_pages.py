@@ -24,7 +24,7 @@ from register.auditing import Actor
 from register.editing import edit_tag
 from register.imports import uploads
 from register.imports.tables import LARGEST_FILE, Table
-from register.models import Plant, Tag, User
+from register.models import Plant, Range, Tag, User
 from tests.cast import Cast, make_person
 from tests.register.bringing import brought_in, make_catalogue, row, rows, tag, text_of
 
@@ -140,6 +140,16 @@ def test_a_stale_check_is_refused_shown_anew_and_the_reason_kept(cast: Cast, pla
     assert tag(plant, "PT-2041").service == "Other words"
     assert bring_in(client, check, "spring cleaning")["Location"] == "/register/?plant=north"
     assert tag(plant, "PT-2041").service == "New words"
+
+
+def test_who_may_not_re_range_sees_that_in_the_check(cast: Cast, plant: Plant, client_as: SignIn) -> None:
+    brought_in(plant, cast.engineer, row())
+    client = client_as(cast.administrator)
+    check = checked(client, text_of(row(URV="8", Range_from="2025-05-06", Reason_for_the_range="smaller pump")))
+    page = client.get(check).content.decode()
+    assert "none of your roles here lets you re-range" in page
+    assert bring_in(client, check).status_code == 409
+    assert Range.objects.count() == 1
 
 
 def test_a_reason_is_asked_for(plant: Plant, client: Client) -> None:

@@ -9,7 +9,7 @@ import pytest
 from django.db import connection
 from django.test.utils import CaptureQueriesContext
 
-from register import importing, reranging
+from register import access, importing, reranging
 from register.auditing import Actor
 from register.editing import edit_tag
 from register.importing import ChangedMeanwhileError, import_register
@@ -420,6 +420,7 @@ def test_a_tag_that_is_there_gets_its_first_range_and_transmitter(plant: Plant, 
 
 def test_the_number_of_queries_grows_with_no_row(plant: Plant, engineer: User) -> None:
     counts = []
+    access.roles(engineer)  # read once a request
     for lines in (rows(2), [line | {"Tag": f"X{n}", "Serial number": f"X{n}"} for n, line in enumerate(rows(15))]):
         with CaptureQueriesContext(connection) as captured:
             bring_in(plant, engineer, table(*lines))
@@ -449,3 +450,58 @@ def test_a_number_that_no_arithmetic_can_bear_is_a_bad_cell(plant: Plant, column
     [(_, where, words)] = told(proposed(plant, row() | {column: "1e305"}))
     assert f"“{column}”" in where
     assert "too large to be a measured value" in words
+
+
+@pytest.mark.parametrize(
+    ("changed", "column", "words"),
+    [
+        (
+            {"URV": "8", "Range from": "2025-05-06", "Reason for the range": "smaller pump"},
+            "LRV",
+            "PT-2041 has the range 0 to 12.50 bar gauge, linear already: none of your roles here lets you re-range.",
+        ),
+        (
+            {"Serial number": "QG-200", "Fitted on": "2025-05-06"},
+            "Serial number",
+            "Quillhaven Gauge Works QG-100 is fitted at PT-2041: none of your roles here lets you swap it.",
+        ),
+    ],
+)
+def test_what_a_person_may_not_change_by_hand_he_may_not_change_by_a_file(
+    cast: Cast, plant: Plant, changed: dict[str, str], column: str, words: str
+) -> None:
+    """The check says so, and the act refuses it too."""
+    brought_in(plant, cast.engineer, row())
+    read = table(row() | changed)
+    asked = {"plant": plant, "table": read, "matching": guessed(read.head, COLUMNS)}
+    [(line, named, said)] = told(propose(**asked, today=plant.today(), by=cast.administrator))
+    assert (line, named.partition(" ")[2]) == (2, f"“{column}”")
+    assert said.startswith(words)
+    seen = propose(**asked, today=plant.today(), by=cast.engineer)
+    assert list(seen.complaints) == []
+    with pytest.raises(ChangedMeanwhileError):
+        import_register(by=Actor(cast.administrator), reason="?", **asked, seen=seen.digest())
+    assert (Range.objects.count(), Fitting.objects.count()) == (1, 1)
+    import_register(by=Actor(cast.engineer), reason="?", **asked, seen=seen.digest())
+    assert Range.objects.count() + Fitting.objects.count() == 3
+
+
+def test_first_ranges_and_what_stands_there_already_need_no_further_role(cast: Cast, plant: Plant) -> None:
+    brought_in(plant, cast.administrator, row())
+    bare = make_tag(plant.areas.get(), "PT-9")
+    lines = (
+        row(Service="Other words"),
+        {"Tag": "PT-9", "LRV": "0", "URV": "8", "Range unit": "bar(g)"} | {"Range from": "2025-05-06"},
+    )
+    read = table(*lines)
+    proposal = propose(
+        plant=plant,
+        table=read,
+        matching=guessed(read.head, COLUMNS),
+        today=plant.today(),
+        by=cast.administrator,
+    )
+    assert told(proposal) == []
+    bring_in(plant, cast.administrator, read)
+    bare.refresh_from_db()
+    assert str(bare.current_range).startswith("0 to 8 bar")
