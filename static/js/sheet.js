@@ -178,8 +178,8 @@
     text.textContent = one.text || "(emptied)";
     const button = document.createElement("button");
     button.type = "button";
-    button.textContent = "Read: take it away";
-    button.setAttribute("aria-label", `Read: take away what was typed at ${one.what}`);
+    button.textContent = "Take it away";
+    button.setAttribute("aria-label", `Take away what was typed at ${one.what}`);
     button.addEventListener("click", () => {
       refusedOnes.write(refusedOnes.read().filter((other) => other.id !== one.id));
       showRefused();
