@@ -123,8 +123,8 @@ def _line(line: tuple[float, float]) -> str:
     intercept, slope = line
     if math.isnan(intercept):
         return ""
-    line = f"{signed(intercept, 4)} {_term(slope)}·x"
-    return f"from the line {line}, where x is the expected output, 0 at 4 mA and 1 at 20 mA"
+    equation = f"{signed(intercept, 4)} {_term(slope)}·x"
+    return f"from the line {equation}, where x is the expected output, 0 at 4 mA and 1 at 20 mA"
 
 
 def _none_at(run: RunEvaluation, point: float) -> str:

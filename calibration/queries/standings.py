@@ -8,11 +8,11 @@ from __future__ import annotations
 
 import datetime
 import re
-from collections import defaultdict, namedtuple
+from collections import defaultdict
 from collections.abc import Collection, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from functools import lru_cache
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, NamedTuple
 from zoneinfo import ZoneInfo
 
 from calibration.models import Deferral, Requirement, Standing, Test
@@ -29,12 +29,23 @@ RESTARTS = (Intervention.Kind.REPAIR, Intervention.Kind.NEW_HEAD)
 Phase = Standing.Phase
 _SETTING = ("lrv_si", "urv_si", "reference", "transfer", "low_cut_percent", "below_cut")
 _OF_A_RANGE = ("effective_from", *_SETTING)
-_MadeAs = namedtuple("_MadeAs", (*_SETTING, "head_id"))
 _PIECES = re.compile(r"[^\W\d_]+|\d+")
 _EDGES = re.compile(r"^\W+|\W+$")
 _DIGITS = re.compile(r"\d+")
 #: Words are kept up to here.
 WORD_LENGTH = 60
+
+
+class _MadeAs(NamedTuple):
+    """Range and head that a test was made in; fields as in `_SETTING`."""
+
+    lrv_si: float
+    urv_si: float
+    reference: str
+    transfer: str
+    low_cut_percent: float
+    below_cut: str
+    head_id: int
 
 
 @dataclass(slots=True)
@@ -108,7 +119,7 @@ def _find_proofs(history: History) -> None:
 
 
 def _proven(
-    history: History, candidates: Mapping[int, Sequence[Mapping[str, Any]]], made_as: Mapping[int, Any]
+    history: History, candidates: Mapping[int, Sequence[Mapping[str, Any]]], made_as: Mapping[int, _MadeAs]
 ) -> set[int]:
     """Note the first candidate of each tag that was made as the transmitter is now; the tags that have none."""
     left = set()
@@ -122,9 +133,9 @@ def _proven(
     return left
 
 
-def _made_as(test_ids: Iterable[int]) -> dict[int, Any]:
+def _made_as(test_ids: Iterable[int]) -> dict[int, _MadeAs]:
     """Range and head that tests were made in, by test; a test without a record has none."""
-    columns = [f"current_record__{name}" for name in (*_SETTING, "head_id")]
+    columns = [f"current_record__{name}" for name in _MadeAs._fields]
     rows = Test.objects.filter(**among("pk", sorted(test_ids)), current_record__isnull=False).order_by()
     return {test_id: _MadeAs(*made) for test_id, *made in rows.values_list("pk", *columns)}
 
@@ -268,7 +279,7 @@ def _counts(test: Mapping[str, Any], since: datetime.date) -> bool:
     return bool(test["accepted"] and test["state"] != Test.State.SENT_BACK and test["tested_on"] >= since)
 
 
-def _is_as_now(made: Any, tag: Tag, history: History) -> bool:
+def _is_as_now(made: _MadeAs | None, tag: Tag, history: History) -> bool:
     """Whether a test was made in the range that the tag has now, and not with a head that was taken out.
 
     A head that was written down wrongly and put right in the register was never taken out.

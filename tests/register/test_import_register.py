@@ -88,6 +88,20 @@ def test_what_is_brought_in_is_checked_against_the_limits_at_once(plant: Plant, 
     assert tag(plant, "PT-2042").standing.flag_rank == 0
 
 
+@pytest.mark.parametrize(("measures", "flagged"), [("flow", True), ("differential pressure", False)])
+def test_where_nobody_said_where_the_root_of_a_flow_is_taken_it_cannot_be_checked(
+    plant: Plant, engineer: User, measures: str, flagged: bool
+) -> None:
+    line = row(Measures=measures, Type="Q-differential", Head="D1", URV="250", Range_unit="mbar")
+    brought_in(plant, engineer, line)
+    new = tag(plant, "PT-2041")
+    assert new.root_extraction == ""
+    flags = Flag.objects.filter(tag=new, check_key="square_root_place", closed_at=None)
+    assert [flag.severity for flag in flags] == [Flag.Severity.CANNOT_CHECK] * flagged
+    brought_in(plant, engineer, {"Tag": "PT-2041", "Square root taken": "control system"})
+    assert not flags.all().exists()
+
+
 def test_the_same_file_a_second_time_changes_nothing(plant: Plant, engineer: User) -> None:
     lines = [*rows(4), {"Maker": "Quillhaven Gauge Works", "Type": "Q-gauge", "Head": "G40", "Serial number": "SP-1"}]
     brought_in(plant, engineer, *lines)
