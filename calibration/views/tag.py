@@ -17,8 +17,8 @@ from calibration.models import Standing
 from calibration.opening import current_requirement
 from calibration.queries import drifting
 from calibration.queries.drifting import History
-from register import access, exporting
-from register.auditing import Actor
+from calibration.views.drift_file import drift_file
+from register import access
 from register.fragments import answer, wants_part
 from register.models import Tag
 
@@ -56,15 +56,7 @@ def tag_drift_export(request: HttpRequest, pk: int) -> HttpResponseBase:
     held = access.get_tag(request, pk)
     history = drifting.of_tag(held)
     view = _drift(held, history, request.POST.get("channel", ""))
-    channel = view.drift.channel.label if view.drift else "drift"
-    exporting.note_export(
-        by=Actor.of(request), thing=held, plant=held.plant, remark=f"drift of {held} as CSV ({channel})"
-    )
-    return exporting.csv_response(
-        f"drift-{held.number}-{held.plant.today()}.csv",
-        drift_page.file_head(view.drift),
-        drift_page.file_lines(view.drift, history),
-    )
+    return drift_file(request, held, name=held.number, history=history, view=view)
 
 
 def _drift(held: Tag, history: History, channel: str) -> DriftView:

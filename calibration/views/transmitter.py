@@ -16,8 +16,8 @@ from calibration.contexts.drift import DriftView
 from calibration.models import Standing
 from calibration.queries import drifting
 from calibration.queries.drifting import History
-from register import access, exporting
-from register.auditing import Actor
+from calibration.views.drift_file import drift_file
+from register import access
 from register.fragments import answer, wants_part
 from register.models import Transmitter
 
@@ -49,15 +49,7 @@ def transmitter_drift_export(request: HttpRequest, pk: int) -> HttpResponseBase:
     held = access.get_transmitter(request, pk)
     history = drifting.of_transmitter(held)
     view = _drift(held, history, request.POST.get("channel", ""))
-    channel = view.drift.channel.label if view.drift else "drift"
-    exporting.note_export(
-        by=Actor.of(request), thing=held, plant=held.plant, remark=f"drift of {held} as CSV ({channel})"
-    )
-    return exporting.csv_response(
-        f"drift-{held.serial}-{held.plant.today()}.csv",
-        drift_page.file_head(view.drift),
-        drift_page.file_lines(view.drift, history),
-    )
+    return drift_file(request, held, name=held.serial, history=history, view=view)
 
 
 def _drift(held: Transmitter, history: History, channel: str) -> DriftView:
