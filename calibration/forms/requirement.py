@@ -61,7 +61,9 @@ class RequirementForm(RegisterForm):
     grace_days = WholeNumberField(
         label="Grace (days)", required=False, least=0, most=2000, help_text="Empty: a quarter of the interval."
     )
-    lead_days = WholeNumberField(label="Window opens before due (days)", least=0, most=366)
+    lead_days = WholeNumberField(
+        label="Window opens before due (days)", least=0, most=366, help_text="At most half of the interval is taken."
+    )
     point_list = forms.ModelChoiceField(
         PointList.objects.none(),
         label="Point list",

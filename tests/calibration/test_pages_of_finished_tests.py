@@ -205,7 +205,7 @@ def test_the_readings_come_as_a_file_and_the_trail_knows(tablet: Device, auditor
     body = b"".join(response.streaming_content).decode("utf-8-sig")  # type: ignore[attr-defined]
     rows = list(csv.DictReader(io.StringIO(body)))
     assert len(rows) == 9
-    assert (rows[2]["measured"], rows[2]["error (% of span)"], rows[2]["verdict"]) == ("12.0960", "0.6000", "fail")
+    assert (rows[2]["measured"], rows[2]["error (% of span)"], rows[2]["verdict"]) == ("12.0960", "0.600000", "fail")
     assert AuditEntry.objects.filter(kind="exported", thing_type="calibration.test").exists()
 
 
