@@ -6,12 +6,12 @@ import datetime
 from collections.abc import Collection
 from dataclasses import dataclass
 from functools import cache
-from typing import Any
+from typing import Any, NamedTuple
 from zoneinfo import ZoneInfo
 
 from django.apps import apps
 from django.core.exceptions import FieldDoesNotExist
-from django.db.models import Count, Exists, Model, OuterRef, Prefetch, Q, QuerySet, Subquery
+from django.db.models import Count, Exists, Model, OuterRef, Q, QuerySet, Subquery
 from django.db.models.functions import Coalesce
 
 from register.models import (
@@ -27,7 +27,7 @@ from register.models import (
     TransmitterType,
     User,
 )
-from register.searching import beginning, exactly
+from register.searching import LAST, SearchKey, beginning, exactly, key
 
 
 def people_of(plant: Plant, text: str = "") -> QuerySet[User]:
@@ -118,7 +118,7 @@ def transmitters_with_serial(plant: Plant, text: str) -> list[Transmitter]:
 def spares(plant: Plant, most: int = 200) -> QuerySet[Transmitter]:
     """Transmitters in stores, by serial number; offered while a serial number is typed."""
     rows = Transmitter.objects.filter(plant=plant, whereabouts=Transmitter.Whereabouts.STORES)
-    return rows.select_related("maker", "type", "head").order_by("serial", "pk")[:most]
+    return rows.select_related("maker", "type", "head").order_by(SearchKey("serial"), "pk")[:most]
 
 
 @dataclass(frozen=True, slots=True)
@@ -132,20 +132,34 @@ class TransmitterFilter:
     head_id: int | None = None
 
     def rows(self) -> QuerySet[Transmitter]:
-        """The transmitters, each with the fitting that is open."""
-        rows = Transmitter.objects.filter(plant=self.plant)
+        """The transmitters; `search_key` puts them into the order in which they are indexed."""
+        rows = Transmitter.objects.filter(plant=self.plant).annotate(search_key=SearchKey("serial"))
         if self.text:
-            rows = beginning(rows, "serial", self.text)
+            start = key(self.text)
+            rows = rows.filter(search_key__gte=start, search_key__lt=start + LAST)
         if self.whereabouts:
             rows = rows.filter(whereabouts=self.whereabouts)
         if self.type_id is not None:
             rows = rows.filter(type=self.type_id)
         if self.head_id is not None:
             rows = rows.filter(head=self.head_id)
-        opened = Fitting.objects.filter(removed_on__isnull=True).select_related("tag")
-        return rows.select_related("maker", "type__maker", "head").prefetch_related(
-            Prefetch("fittings", opened, to_attr="open_fittings")
-        )
+        return rows
+
+
+class Fitted(NamedTuple):
+    """Where a transmitter is fitted, and since when."""
+
+    tag_id: int
+    number: str
+    since: datetime.date
+
+
+def fitted(transmitters: Collection[Transmitter]) -> dict[int, Fitted]:
+    """Where transmitters are fitted now, by their ids."""
+    rows = Fitting.objects.filter(transmitter__in=[one.pk for one in transmitters], removed_on__isnull=True)
+    return {
+        pk: Fitted(*where) for pk, *where in rows.values_list("transmitter_id", "tag_id", "tag__number", "fitted_on")
+    }
 
 
 def types_with_counts(plant: Plant, maker_id: int | None = None) -> QuerySet[TransmitterType]:
@@ -201,8 +215,8 @@ def find(plants: Collection[int], text: str, most: int = 50) -> Found:
         return found
     return Found(
         False,
-        list(beginning(tags, "number", text).order_by("number", "pk")[:most]),
-        list(beginning(devices, "serial", text).order_by("serial", "pk")[:most]),
+        list(beginning(tags, "number", text).order_by(SearchKey("number"), "pk")[:most]),
+        list(beginning(devices, "serial", text).order_by(SearchKey("serial"), "pk")[:most]),
     )
 
 

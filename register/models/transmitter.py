@@ -42,11 +42,11 @@ class Transmitter(models.Model):
             models.CheckConstraint(condition=~models.Q(serial=""), name="transmitter_serial_given"),
         ]
         indexes = [
-            models.Index(fields=["plant", "serial"], name="transmitter_by_serial"),
-            models.Index("plant", SearchKey("serial"), name="transmitter_by_serial_key"),
-            models.Index(fields=["plant", "whereabouts", "serial"], name="transmitter_by_whereabouts"),
-            models.Index(fields=["plant", "type", "serial"], name="transmitter_by_type"),
-            models.Index(fields=["plant", "head", "serial"], name="transmitter_by_head"),
+            # Each filter of the list has the order of the list behind it, which a typed beginning is a stretch of.
+            models.Index("plant", SearchKey("serial"), name="transmitter_by_serial"),
+            models.Index("plant", "whereabouts", SearchKey("serial"), name="transmitter_by_whereabouts"),
+            models.Index("plant", "type", SearchKey("serial"), name="transmitter_by_type"),
+            models.Index("plant", "head", SearchKey("serial"), name="transmitter_by_head"),
         ]
 
     def __str__(self) -> str:

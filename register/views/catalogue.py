@@ -29,6 +29,7 @@ from register.paging import page_of
 from register.queries import (
     TransmitterFilter,
     changes_since,
+    fitted,
     heads_of,
     latest_change,
     makers_with_counts,
@@ -97,12 +98,13 @@ def type_edit(request: HttpRequest, pk: int) -> HttpResponse:
 def head(request: HttpRequest, pk: int) -> HttpResponse:
     plant = access.chosen_plant(request)
     shown = get_object_or_404(MeasuringHead.objects.select_related("type__maker"), pk=pk)
-    asked = TransmitterFilter(plant, head_id=shown.pk)
+    transmitters = list(TransmitterFilter(plant, head_id=shown.pk).rows().order_by("search_key", "pk")[: SHOWN + 1])
+    places = fitted(transmitters[:SHOWN])
     context = {
         "plant": plant,
         "head": shown,
-        "transmitters": asked.rows().order_by("serial", "pk")[: SHOWN + 1],
-        "shown": SHOWN,
+        "transmitters": [(one, places.get(one.pk)) for one in transmitters[:SHOWN]],
+        "more": len(transmitters) > SHOWN,
         "may_edit": access.allowed(request, plant.pk, "edit catalogue"),
     }
     return render(request, "register/head.html", context)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+import re
 from collections.abc import Callable
 
 import pytest
@@ -12,6 +13,7 @@ from django.test.utils import CaptureQueriesContext
 
 from register import flagging
 from register.models import Flag, Intervention, Plant, Transmitter
+from register.queries import TransmitterFilter
 from tests import cast as people
 
 SignIn = Callable[[people.User], Client]
@@ -159,3 +161,46 @@ def test_the_number_of_queries_does_not_grow_with_the_rows(cast: people.Cast, cl
             assert client.get(address).status_code == 200
         counts.append(len(queries))
     assert counts[0] == counts[1]
+
+
+@pytest.mark.parametrize(("text", "after"), [("", ""), ("s-0", ""), ("", "S-00")])
+@pytest.mark.parametrize("narrowed", ["", "whereabouts", "type_id", "head_id"])
+def test_every_filter_of_transmitters_is_followed_in_the_order_of_the_list(
+    cast: people.Cast, narrowed: str, text: str, after: str
+) -> None:
+    """No row is sorted: the page is a stretch of an index."""
+    device = people.make_transmitter(cast.plant)
+    values = {name: getattr(device, name) for name in (narrowed,) if name}
+    rows = TransmitterFilter(cast.plant, text=text, **values).rows().order_by("search_key", "pk")
+    if after:
+        rows = rows.filter(search_key__gte=after)
+    if connection.vendor == "postgresql":
+        with connection.cursor() as cursor:
+            cursor.execute(
+                "SET LOCAL enable_seqscan = off; SET LOCAL enable_bitmapscan = off; SET LOCAL enable_sort = off"
+            )
+    plan = rows[:51].explain()
+    index = {"": "serial", "type_id": "type", "head_id": "head"}.get(narrowed, narrowed)
+    assert f"transmitter_by_{index}" in plan
+    assert "TEMP B-TREE" not in plan
+    assert "->  Sort" not in plan
+
+
+def test_transmitters_stand_in_the_order_of_their_serial_numbers_whatever_their_capitals(
+    cast: people.Cast, client: Client
+) -> None:
+    serials = ["b-2", "A-1", "a-3", "B<4>", "a-10"]
+    for serial in serials:
+        people.make_transmitter(cast.plant, serial=serial)
+    page = client.get("/transmitters/").content.decode()
+    found = re.findall(r'<td class="key"><a class="mono" href="/transmitters/\d+/">([^<]+)</a>', page)
+    assert found == ["A-1", "a-10", "a-3", "b-2", "B&lt;4&gt;"]
+
+
+def test_a_transmitter_in_the_list_says_where_it_is(cast: people.Cast, client: Client, tag: people.Tag) -> None:
+    people.make_transmitter(cast.plant, serial="away", whereabouts="repair")
+    people.make_transmitter(cast.plant, serial="gone", whereabouts="scrapped")
+    page = client.get("/transmitters/").content.decode()
+    assert f'<a class="mono" href="/tags/{tag.pk}/">PT-2041</a></td><td class="nowrap">{people.LONG_AGO}</td>' in page
+    assert '<span class="state near">away for repair</span></td><td>–</td>' in page
+    assert '<span class="state quiet">scrapped</span></td><td>–</td>' in page
