@@ -236,10 +236,21 @@ def could_not_test(*, by: Actor, reason: str, sheet_id: uuid.UUID) -> Sheet:
 
 @transaction.atomic
 def abandon(*, by: Actor, reason: str, sheet_id: uuid.UUID) -> Sheet:
-    """End a sheet that becomes no record; what was entered stays readable."""
+    """End a sheet that becomes no record; what was entered stays readable.
+
+    Raises
+    ------
+    ValidationError
+        No reason is given, or the transmitter was adjusted: without a record that would be read as drift.
+    """
     draft = _live(sheet_id)
     if not reason.strip():
         raise ValidationError({"reason": "Say why the sheet is abandoned."})
+    if draft.sheet.corrects_id is None and draft.text("adjust.choice") == ADJUSTED:
+        raise ValidationError(
+            "The transmitter was adjusted, which a record must tell: go on to the as-left readings, or say why it "
+            "could not be tested."
+        )
     draft.sheet.ended_at = timezone.now()
     return _moved(by, draft.sheet, Stage.ABANDONED, "ended_at", reason=reason)
 

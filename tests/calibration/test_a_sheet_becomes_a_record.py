@@ -13,7 +13,16 @@ from calibration.opening import open_sheet
 from register.auditing import Actor
 from register.models import AuditEntry
 from tests import cast as people
-from tests.calibration.at_work import Device, answer_checklist, opened, run_texts, signed, to_as_found, to_signature
+from tests.calibration.at_work import (
+    Device,
+    answer_checklist,
+    opened,
+    run_texts,
+    signed,
+    to_adjustment,
+    to_as_found,
+    to_signature,
+)
 
 
 def test_a_signed_sheet_gives_a_test_with_both_runs(tablet: Device) -> None:
@@ -140,3 +149,12 @@ def test_an_abandoned_sheet_takes_no_more_entries(tablet: Device) -> None:
     sheets.abandon(by=tablet.by, reason="Opened for the wrong tag.", sheet_id=tablet.sheet.pk)
     stored = tablet.send(tablet.entry("confirm-tag", "PT-100"))
     assert "abandoned" in stored.refused[0][1]
+
+
+def test_a_sheet_that_tells_of_an_adjustment_is_not_abandoned(tablet: Device) -> None:
+    to_adjustment(tablet)
+    tablet.type({"adjust.choice": "adjusted", "adjust.log": "Zero trimmed."})
+    with pytest.raises(ValidationError, match="The transmitter was adjusted"):
+        sheets.abandon(by=tablet.by, reason="Called away.", sheet_id=tablet.sheet.pk)
+    tablet.type({"adjust.choice": "not adjusted"})
+    assert sheets.abandon(by=tablet.by, reason="Called away.", sheet_id=tablet.sheet.pk).stage == "abandoned"
