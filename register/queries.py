@@ -157,9 +157,8 @@ class Fitted(NamedTuple):
 def fitted(transmitters: Collection[Transmitter]) -> dict[int, Fitted]:
     """Where transmitters are fitted now, by their ids."""
     rows = Fitting.objects.filter(transmitter__in=[one.pk for one in transmitters], removed_on__isnull=True)
-    return {
-        pk: Fitted(*where) for pk, *where in rows.values_list("transmitter_id", "tag_id", "tag__number", "fitted_on")
-    }
+    columns = rows.values_list("transmitter_id", "tag_id", "tag__number", "fitted_on")
+    return {pk: Fitted(tag_id, number, since) for pk, tag_id, number, since in columns}
 
 
 def types_with_counts(plant: Plant, maker_id: int | None = None) -> QuerySet[TransmitterType]:

@@ -35,6 +35,7 @@ from register.queries import (
     makers_with_counts,
     types_with_counts,
 )
+from register.searching import SearchKey
 
 #: Rows of the transmitters shown on the page of a head; the list of transmitters has them all.
 SHOWN = 50
@@ -98,7 +99,8 @@ def type_edit(request: HttpRequest, pk: int) -> HttpResponse:
 def head(request: HttpRequest, pk: int) -> HttpResponse:
     plant = access.chosen_plant(request)
     shown = get_object_or_404(MeasuringHead.objects.select_related("type__maker"), pk=pk)
-    transmitters = list(TransmitterFilter(plant, head_id=shown.pk).rows().order_by("search_key", "pk")[: SHOWN + 1])
+    rows = TransmitterFilter(plant, head_id=shown.pk).rows()
+    transmitters = list(rows.order_by(SearchKey("serial"), "pk")[: SHOWN + 1])
     places = fitted(transmitters[:SHOWN])
     context = {
         "plant": plant,

@@ -23,7 +23,7 @@ from register.paging import page_of
 from register.queries import TransmitterFilter, changes_since, fitted, latest_change
 
 #: How loudly it is said where a transmitter is.
-TONES: Final = {Transmitter.Whereabouts.SCRAPPED: "quiet", Transmitter.Whereabouts.REPAIR: "near"}
+TONES: Final[Mapping[str, str]] = {Transmitter.Whereabouts.SCRAPPED: "quiet", Transmitter.Whereabouts.REPAIR: "near"}
 
 
 @dataclass(frozen=True, slots=True)
