@@ -1,22 +1,24 @@
 (() => {
   "use strict";
   const sheet = document.getElementById("sheet");
-  if (!sheet || sheet.dataset.live !== "yes") return;
+  if (!sheet) return;
 
   // One queue per sheet and person, kept on the device until the server has said that it holds each entry.
   // What the server did not take is kept beside it until somebody has read it.
   const KEY = `foundleft.sheet.${sheet.dataset.sheet}.${sheet.dataset.person}`;
   const waitingOnes = shelf(KEY);
   const refusedOnes = shelf(`${KEY}.refused`);
+  const KEEPS_NOTHING = "This tablet keeps nothing: stay on this page until all is saved.";
   const RETRY_MS = 5000;
   // Browsers send no more than 64 KiB for a page that is being hidden.
   const PART_BYTES = 48000;
+  const live = sheet.dataset.live === "yes";
   const state = document.getElementById("saving");
   const refusedBox = document.getElementById("refused");
   const device = `${deviceId()}.${Math.random().toString(36).slice(2, 10)}`;
   let sequence = 0;
   let failing = "";
-  let calm = state.textContent;
+  let calm = live ? state.textContent : "";
   let signedOut = false;
   let timer = 0;
   let flushing = false;
@@ -24,6 +26,13 @@
   const typing = new Set();
   const handed = new Map();
   const waiting = new Map();
+
+  // A sheet that has ended takes nothing more: what this device had not handed over by then is refused, and so shown.
+  if (!live) {
+    showRefused();
+    flush();
+    return;
+  }
 
   // A list on the device; where the device is full or keeps nothing, it lives in this page alone.
   function shelf(key) {
@@ -92,9 +101,8 @@
     if (state.textContent !== words) state.textContent = words;
   }
 
-  const KEEPS_NOTHING = "This tablet keeps nothing: stay on this page until all is saved.";
-
   function show(at) {
+    if (!live) return;
     const kept = queue().length;
     const keeps = waitingOnes.keeps && refusedOnes.keeps;
     if (failing && (kept || signedOut)) {
@@ -152,7 +160,7 @@
     }
     failing = "";
     signedOut = false;
-    const fresh = refused.filter((one) => one.entry);
+    const fresh = refused.filter((one) => one.entry && one.entry.field !== "present");
     if (fresh.length) {
       for (const { entry } of fresh) if (handed.get(entry.field) === entry.text) handed.delete(entry.field);
       const lines = fresh.map((one) => ({ id: one.id, what: one.what, why: one.why, text: one.entry.text }));
@@ -195,6 +203,7 @@
     else if (status) failing = "The server did not take it.";
     else failing = "No connection.";
     show();
+    if (!live) return;
     clearTimeout(timer);
     timer = setTimeout(flush, RETRY_MS);
   }

@@ -9,7 +9,7 @@ import pytest
 from playwright.sync_api import Browser, BrowserContext, Page, expect
 from pytest_django.live_server_helper import LiveServer
 
-from calibration import sheets
+from calibration import sheets, signing
 from calibration.models import Entry, Sheet, Test
 from calibration.provision import provide_defaults
 from calibration.queries.drafts import Draft
@@ -180,6 +180,32 @@ def test_what_the_server_did_not_take_stays_on_the_tablet_until_it_is_read(
     page.get_by_role("button", name="take away what was typed at as-found, reading 3").click()
     expect(page.locator("#refused")).to_be_hidden()
     page.reload()
+    expect(page.locator("#refused")).to_be_hidden()
+
+
+@pytest.mark.parametrize("end", ["signed", "abandoned"])
+def test_what_was_not_handed_over_before_a_sheet_ended_is_still_shown(
+    tablet: Tablet, live_server: LiveServer, crew: people.Cast, end: str
+) -> None:
+    device = opened(people.make_ready_tag(people.make_area(crew.plant, "20"), "PT-100"), crew.technician)
+    to_signature(device)
+    sheets.step_back(by=device.by, sheet_id=device.sheet.pk)
+    page = shown(tablet("technician"), live_server, device.sheet)
+    expect(page.locator("#saving")).not_to_contain_text("Saving")
+    page.route("**/entries/", lambda route: route.abort())
+    leave(page, "remarks", "The gasket weeps.")
+    expect(page.locator("#saving")).to_contain_text("1 kept on this device")
+    if end == "signed":
+        sheets.return_to_service(by=device.by, sheet_id=device.sheet.pk)
+        signing.sign(by=device.by, sheet_id=device.sheet.pk)
+    else:
+        sheets.abandon(by=device.by, reason="Begun by mistake.", sheet_id=device.sheet.pk)
+    page.unroute("**/entries/")
+    for _ in range(2):
+        shown(page, live_server, device.sheet)
+        expect(page.locator("#refused .typed")).to_have_text("The gasket weeps.")
+    page.get_by_role("button", name="Take away what was typed at remarks").click()
+    shown(page, live_server, device.sheet)
     expect(page.locator("#refused")).to_be_hidden()
 
 
