@@ -153,7 +153,7 @@ def test_a_backup_is_never_overwritten_and_is_its_owners_alone(filled: Cast, tmp
 def test_the_manifest_names_engine_schema_rows_and_hashes(filled: Cast, tmp_path: Path) -> None:
     manifest = archive.verified(back_up(tmp_path))
     assert manifest.engine == connection.vendor
-    assert ("register", "0001_first") in manifest.migrations
+    assert ("register", "0001_plants_tags_and_transmitters") in manifest.migrations
     assert manifest.rows["register_tag"] == 1
     assert "files/2026/certificate ü.pdf" in manifest.members
 

@@ -13,8 +13,8 @@ class Migration(migrations.Migration):
     initial = True
 
     dependencies = [
-        ('calibration', '0001_first'),
-        ('register', '0001_first'),
+        ('calibration', '0001_certificates'),
+        ('register', '0001_plants_tags_and_transmitters'),
         migrations.swappable_dependency(settings.AUTH_USER_MODEL),
     ]
 
