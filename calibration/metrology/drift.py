@@ -172,6 +172,8 @@ def rates_from_differences(differences: ArrayLike, years: ArrayLike, covariance:
     size = np.sqrt(np.maximum(scatter, values.max(-1)))
     size = np.where(size > 0.0, size, 1.0)
     z, values, scatter = z / size[..., None], values / (size**2)[..., None], scatter / size**2
+    # Ten orders of size below the errors of the tests there is no walk to be found, and its square would vanish.
+    scatter = np.where(scatter > 1e-20, scatter, 0.0)
     walk = np.where(values.max(-1) == 0.0, scatter, _greatest_likelihood(z, a, values, scatter, 0.0))
     off = ~np.eye(n, dtype=bool)
     linked = (r[..., off] != 0.0).any(-1)

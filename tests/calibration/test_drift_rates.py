@@ -6,7 +6,7 @@ from datetime import date, timedelta
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import example, given, settings
 from hypothesis import strategies as st
 from scipy import special
 from statsmodels.api import GLS, OLS
@@ -75,6 +75,7 @@ def test_the_rate_agrees_with_generalised_least_squares(
 
 @settings(max_examples=60)
 @given(SERIES, st.floats(0.01, 1.0), st.booleans())
+@example([(0.0, 1.0)] * 3 + [(2e-159, 1.0)], 1.0, False)
 def test_no_other_walk_has_a_greater_restricted_likelihood(
     series: list[tuple[float, float]], u: float, adjusted: bool
 ) -> None:

@@ -85,7 +85,7 @@ def test_independent_non_linearity_is_the_minimax_deviation(errors: list[float])
     best = linprog(
         [0, 0, 1], np.vstack([above, below]), np.concatenate([-y, y]), bounds=[(None, None)] * 2 + [(0, None)]
     )
-    assert run.nonlinearity_independent == pytest.approx(best.fun, abs=1e-8)
+    assert run.nonlinearity_independent == pytest.approx(best.fun, abs=2e-7)
     a, b = run.independent_line
     assert np.abs(y - a - b * x).max() == pytest.approx(run.nonlinearity_independent, abs=1e-9)
 
@@ -93,7 +93,7 @@ def test_independent_non_linearity_is_the_minimax_deviation(errors: list[float])
 @settings(max_examples=40)
 @given(ERRORS)
 def test_zero_based_non_linearity_is_the_minimax_deviation_through_zero(errors: list[float]) -> None:
-    """Second opinion: linear programming with the line held at the low end point."""
+    """Second opinion: linear programming with the line held at the low end point; it is feasible to 1e-7."""
     run = run_with(errors, Signal(0, 1))
     x = np.array([level.input_percent for level in run.levels])[1:] / 100.0
     y = np.array([level.mean for level in run.levels])
@@ -105,7 +105,7 @@ def test_zero_based_non_linearity_is_the_minimax_deviation_through_zero(errors: 
         np.concatenate([-rise, rise]),
         bounds=[(None, None), (0, None)],
     )
-    assert run.nonlinearity_zero_based == pytest.approx(best.fun, abs=1e-8)
+    assert run.nonlinearity_zero_based == pytest.approx(best.fun, abs=2e-7)
     a, b = run.zero_based_line
     assert a == pytest.approx(y[0], abs=1e-12)
     assert np.abs(rise - b * x).max() == pytest.approx(run.nonlinearity_zero_based, abs=1e-9)
