@@ -32,15 +32,15 @@ PAGE: Final = 50
 CEILING: Final = 1000
 #: Where no filter alone is rare, so many rows of the list are looked at to tell how dense the matches are;
 #: fewer where each row is asked for its words.
-EXAMINED: Final = 4000
-EXAMINED_FOR_WORDS: Final = 1000
+EXAMINED: Final = 2500
+EXAMINED_FOR_WORDS: Final = 600
 #: A page is looked for along the order of the list if it should be full after so many rows; fewer where each is asked
 #: for several words.
 FARTHEST: Final = 20000
 FARTHEST_FOR_WORDS: Final = 4000
-#: Else all matches are gathered; so far filters, and words, are counted to find what to begin with.
+#: Else all matches are gathered; with words, these and the filters are counted so far to find what to begin with.
 GATHERED: Final = 3000
-GATHERED_FOR_WORDS: Final = 12000
+GATHERED_FOR_WORDS: Final = 6000
 _TABLE: Final = Standing._meta.db_table
 
 
@@ -146,9 +146,11 @@ class _Sample:
 def _gathering(plant: Plant, conditions: list[Condition], sample: _Sample) -> tuple[Condition, list[Condition]]:
     """The condition that the fewest tags meet, together with other words that are not common, and all conditions.
 
-    Of conditions that too many meet to be counted, the one that fewest rows of the sample meet.
+    Of conditions that too many meet to be counted, the one that fewest rows of the sample meet; that tells enough of
+    all conditions where there are no words among them.
     """
-    counts = _counts(plant, conditions, far=True)
+    by_words = any(condition.words for condition in conditions)
+    counts = _counts(plant, conditions, far=True) if by_words else [0] * len(conditions)
     rarest = conditions[min(range(len(conditions)), key=lambda place: (counts[place], sample.alone[place]))]
     near = [
         condition
@@ -186,16 +188,23 @@ def _matching(
     """
     by_words = driver.words if driver is not None and gathered else ()
     texts, values = [], []
+    told = [driver] if by_words else []
     if by_words:
         looks = [wording.tags_with(plant, word) for word in by_words]
         values += [value for _, more in looks for value in more]
         also = "".join(f" AND g.tag_id IN ({look})" for look, _ in looks[1:])
+        # Other words are looked up before a row itself is read.
+        for condition in conditions:
+            if condition is not driver and condition.words and not any(word.numbers for word in condition.words):
+                also += "".join(f" AND {term.text.format(tag_id='g.tag_id')}" for term in condition.terms)
+                values += [value for term in condition.terms for value in term.values]
+                told.append(condition)
         texts.append(f"s.tag_id IN (SELECT g.tag_id FROM ({looks[0][0]}) g WHERE g.tag_id > 0{also})")
     else:
         texts.append("s.plant_id = %s")
         values.append(plant.pk)
     for condition in sorted(conditions, key=lambda condition: bool(condition.words)):
-        if condition is driver and by_words:
+        if condition in told:
             continue
         for term in condition.terms:
             plain = condition is driver and not (cursor and term.bound == cursor)
@@ -297,10 +306,11 @@ def _sampled(
     rows = f"SELECT {', '.join(sorted(needed))} {text} ORDER BY {ordering} LIMIT {ceiling}"
     # Words are counted well enough by themselves, and dear to look up twice.
     singly = [condition for condition in others if not condition.words]
-    looks = [_compared(others), *(_compared([condition]) for condition in singly)]
+    looks = [_compared(others), *(_compared([condition]) for condition in singly if len(others) > 1)]
     matches = ", ".join(f"COUNT(CASE WHEN {look} THEN 1 END)" for look, _ in looks)
     values = [value for _, more in looks for value in more] + values
     seen, found, *each = _read(f"SELECT COUNT(*), {matches} FROM ({rows}) s", values)[0]
+    each = each or [found]
     alone = [each[singly.index(condition)] if condition in singly else seen for condition in conditions]
     return _Sample(found, seen, seen < ceiling, alone)
 
