@@ -13,10 +13,11 @@ from zoneinfo import ZoneInfo
 
 from calibration.imports.history import History, fits, read
 from calibration.imports.names import Tags
+from calibration.imports.recorded import Substance, recorded, substance_of
 from calibration.imports.terms import terms_of
 from calibration.imports.test_columns import COLUMNS, Moment
 from calibration.imports.visits import KINDS, Visit, directions, gathered
-from calibration.models import Reading, Requirement, Standard, Test
+from calibration.models import Requirement, Standard, Test
 from calibration.records.basis import Basis
 from calibration.records.content import ReadingContent, RecordContent, RunContent, UseContent
 from calibration.records.judging import JudgedRun, applied_in_range_unit, judge, measured_in_ma
@@ -32,8 +33,6 @@ from register.searching import key
 ANSWERS: Final = ("performed_by", "remarks", "could_not_test")
 MOST_NAMED: Final = 4
 PARTS: Final = (("applied", "applied_standard"), ("measured", "measured_standard"))
-#: Of each run of a test: its kind, and input [SI] and output [mA] of its readings.
-Substance = tuple[tuple[str, tuple[tuple[float, float], ...]], ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -114,7 +113,7 @@ def propose(
     history = read(plant, tags.rows, set(filter(None, cells.values["serial"])))
     draft = _Draft(cells, plant, today, tags, history)
     visits = gathered(cells)
-    there = _recorded(history, {visit.day for visit in visits})
+    there = recorded(history, {visit.day for visit in visits})
     for visit in sorted(visits, key=lambda one: (one.day, one.first)):
         _plan(draft, visit, there)
     bad = {table.lines[row] for row in cells.bad}
@@ -143,7 +142,7 @@ def _plan(draft: _Draft, visit: Visit, there: Mapping[tuple[int, datetime.date],
     if made is None:
         return
     basis, content_runs, points = made
-    substance = _substance(content_runs, basis)
+    substance = substance_of(content_runs, basis)
     recorded = there.get((device.pk, visit.day), ())
     if substance in recorded:
         draft.unchanged += 1
@@ -456,46 +455,3 @@ def _said(basis: Basis) -> str:
 def _assumed(basis: Basis) -> str:
     assumed = basis.notes.get("assumed", ())
     return f"; assumed: {' and '.join(assumed)}" if assumed else ""
-
-
-def _substance(runs: Sequence[RunContent], basis: Basis) -> Substance:
-    return tuple(
-        (
-            run.kind,
-            tuple(
-                (row.applied_si, row.measured_ma)
-                for row, _ in (reading_row(one, order, basis) for order, one in enumerate(run.readings, start=1))
-            ),
-        )
-        for run in runs
-    )
-
-
-def _recorded(history: History, days: set[datetime.date]) -> dict[tuple[int, datetime.date], list[Substance]]:
-    """What is recorded of the transmitters on these days."""
-    found: dict[tuple[int, datetime.date], list[Substance]] = defaultdict(list)
-    devices, wanted = sorted(history.devices), sorted(days)
-    for start in range(0, len(devices), 500):
-        tests = Test.objects.filter(
-            transmitter__in=devices[start : start + 500], tested_on__gte=wanted[0], tested_on__lte=wanted[-1]
-        )
-        named = {
-            record_id: (device_id, day)
-            for record_id, device_id, day in tests.values_list("current_record_id", "transmitter_id", "tested_on")
-            if day in days
-        }
-        for record_id, substance in _readings_of(sorted(named)):
-            found[named[record_id]].append(substance)
-    return found
-
-
-def _readings_of(record_ids: Sequence[int]) -> Iterable[tuple[int, Substance]]:
-    for start in range(0, len(record_ids), 500):
-        runs: dict[int, dict[str, list[tuple[float, float]]]] = {pk: {} for pk in record_ids[start : start + 500]}
-        rows = Reading.objects.filter(run__record__in=list(runs)).order_by("run__record_id", "run_id", "order")
-        for record_id, kind, applied, measured in rows.values_list(
-            "run__record_id", "run__kind", "applied_si", "measured_ma"
-        ):
-            runs[record_id].setdefault(kind, []).append((applied, measured))
-        for record_id, kinds in runs.items():
-            yield record_id, tuple((kind, tuple(kinds[kind])) for kind in KINDS if kind in kinds)
