@@ -32,7 +32,7 @@ PAGE: Final = 50
 CEILING: Final = 1000
 #: Where no filter alone is rare, so many rows of the list are looked at to tell how dense the matches are;
 #: fewer where each row is asked for its words.
-EXAMINED: Final = 2500
+EXAMINED: Final = 2000
 EXAMINED_FOR_WORDS: Final = 600
 #: A page is looked for along the order of the list if it should be full after so many rows; fewer where each is asked
 #: for several words.
@@ -40,7 +40,7 @@ FARTHEST: Final = 20000
 FARTHEST_FOR_WORDS: Final = 4000
 #: Else all matches are gathered; with words, these and the filters are counted so far to find what to begin with.
 GATHERED: Final = 3000
-GATHERED_FOR_WORDS: Final = 6000
+GATHERED_FOR_WORDS: Final = 16000
 _TABLE: Final = Standing._meta.db_table
 
 
